@@ -1,0 +1,1 @@
+"""What the numbers are worth: verdict and review."""

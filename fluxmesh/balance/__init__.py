@@ -1,0 +1,1 @@
+"""Conservation laws as algebra on the table of integrals."""

@@ -1,0 +1,1 @@
+"""The case file: what may be asked, and how it is read."""

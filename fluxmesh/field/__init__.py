@@ -1,0 +1,1 @@
+"""Flow data laid on a surface."""

@@ -1,0 +1,1 @@
+"""Integrals over faces: arrays in, arrays out."""

@@ -1,0 +1,1 @@
+"""What the user sees: terminal tables, result file, pictures."""

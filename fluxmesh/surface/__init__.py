@@ -1,0 +1,1 @@
+"""The control surface: points, faces, groups, and the checks and readers that make one."""

@@ -1,0 +1,1 @@
+"""Readers: one a family of formats, plain arrays out."""
