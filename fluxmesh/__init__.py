@@ -1,5 +1,73 @@
-"""fluxmesh: mass and momentum balances over closed, tagged surfaces."""
+"""fluxmesh: mass and momentum balances over closed, tagged surfaces.
+
+The Python door to the main job, on arrays and without files::
+
+    surface = fluxmesh.control_surface(points, faces, {"feed": ("inlet", mask), ...})
+    flow = fluxmesh.lay_flow(surface, density=998.2, velocity=u, pressure=p, traction=t)
+    outcome = fluxmesh.balance_of(surface, flow, anchor=(0, 0, 0))
+    outcome.balance.reaction, outcome.verdict
+
+Public names load what they need on first use, so that importing the package is quick.
+"""
 
 from __future__ import annotations
 
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from fluxmesh.balance.balance import Balance
+    from fluxmesh.balance.setting import Hardware
+    from fluxmesh.case.read import read_case
+    from fluxmesh.errors import FluxmeshError
+    from fluxmesh.field.flow import Flow, lay_flow
+    from fluxmesh.field.pressure import PressureMeaning
+    from fluxmesh.job.run import Outcome, balance_of, run_case
+    from fluxmesh.surface.build import control_surface
+    from fluxmesh.surface.surface import ControlSurface
+
+__all__ = [
+    "Balance",
+    "ControlSurface",
+    "Flow",
+    "FluxmeshError",
+    "Hardware",
+    "Outcome",
+    "PressureMeaning",
+    "__version__",
+    "balance_of",
+    "control_surface",
+    "lay_flow",
+    "read_case",
+    "run_case",
+]
+
 __version__ = "0.1.0"
+
+_HOMES = {
+    "Balance": "fluxmesh.balance.balance",
+    "ControlSurface": "fluxmesh.surface.surface",
+    "Flow": "fluxmesh.field.flow",
+    "FluxmeshError": "fluxmesh.errors",
+    "Hardware": "fluxmesh.balance.setting",
+    "Outcome": "fluxmesh.job.run",
+    "PressureMeaning": "fluxmesh.field.pressure",
+    "balance_of": "fluxmesh.job.run",
+    "control_surface": "fluxmesh.surface.build",
+    "lay_flow": "fluxmesh.field.flow",
+    "read_case": "fluxmesh.case.read",
+    "run_case": "fluxmesh.job.run",
+}
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOMES:
+        raise AttributeError(f"module 'fluxmesh' has no attribute '{name}'")
+    from importlib import import_module
+
+    value = getattr(import_module(_HOMES[name]), name)
+    globals()[name] = value
+    return value
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

@@ -1,0 +1,153 @@
+"""Whether the numbers close, and why one may say so."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from fluxmesh.balance.balance import Balance
+
+__all__ = ["Verdict", "relative_without_mean_pressure", "verdict_of"]
+
+
+@dataclass(frozen=True)
+class Verdict:
+    """The judgement over a balance.
+
+    Attributes
+    ----------
+    closes : bool or None
+        None when nothing speaks against it, but the momentum balance cannot
+        be compared with anything.
+    measure : float or None
+        The largest relative residual of the laws judged.
+    tolerance : float
+        Largest relative residual that closes.
+    reasons : tuple of str
+        What the judgement rests on, one sentence each.
+    """
+
+    closes: bool | None
+    measure: float | None
+    tolerance: float
+    reasons: tuple[str, ...]
+
+
+def relative_without_mean_pressure(balance: Balance) -> float | None:
+    """Return the momentum residual relative to entries freed of the mean pressure.
+
+    A pressure that is the same everywhere cancels over a closed surface; a high
+    one makes every residual look small. Here the area mean over the surface is
+    taken off each group's pressure entry first.
+
+    Parameters
+    ----------
+    balance : Balance
+        A balance of a closed surface.
+
+    Returns
+    -------
+    float or None
+        None when nothing is left to compare with.
+    """
+    table, ledger = balance.table, balance.momentum
+    area = float(table.total("area"))
+    if area == 0.0:
+        return None
+    mean = float(table.total("pressure_area")) / area
+    pressure = ledger.group_pressure + mean * table.column("area_vector")
+    rows = np.concatenate(
+        [ledger.group_flux, pressure, ledger.group_viscous, ledger.weight[None], ledger.storage[None]]
+    )
+    size = float(np.linalg.norm(rows, axis=1).sum())
+    return float(np.linalg.norm(ledger.residual())) / size if size > 0 else None
+
+
+def _compare(law: str, relative: float, tolerance: float) -> str:
+    word = "within" if relative <= tolerance else "MORE than"
+    return f"{law}: residual {relative:.3g} of the entries, {word} the tolerance {tolerance:g}"
+
+
+def verdict_of(balance: Balance, *, tolerance: float = 0.01, encloses_hardware: bool = True) -> Verdict:
+    """Judge a balance.
+
+    Parameters
+    ----------
+    balance : Balance
+        The balance.
+    tolerance : float, optional
+        Largest relative residual that closes.
+    encloses_hardware : bool, optional
+        For a surface without walls: whether a body may be inside, so that the
+        momentum residual is the load on it and not an error.
+
+    Returns
+    -------
+    Verdict
+        With reasons.
+    """
+    setting = balance.setting
+    if not setting.closed:
+        return Verdict(
+            None, None, tolerance, ("The surface is open: integrals of each group only, nothing is balanced",)
+        )
+    reasons: list[str] = []
+    measures: list[float] = []
+    if balance.mass is not None and balance.mass.relative is not None:
+        lacking = [g.name for g, known in zip(setting.groups, setting.data.flux) if g.role.is_port and not known]
+        if lacking:
+            reasons.append(f"Mass: cannot be judged, no flow is known at {', '.join(lacking)}")
+        else:
+            measures.append(balance.mass.relative)
+            reasons.append(_compare("Mass", balance.mass.relative, tolerance))
+    else:
+        reasons.append("Mass: nothing flows")
+    walls = setting.walls()
+    compared = balance.complete and (bool(walls.any()) or not encloses_hardware)
+    if compared:
+        for law, ledger in (
+            ("Linear momentum", balance.momentum),
+            ("Angular momentum about the anchor", balance.angular),
+        ):
+            relative = ledger.relative()
+            if relative is not None:
+                measures.append(relative)
+                reasons.append(_compare(law, relative, tolerance))
+        reasons += _momentum_doubts(balance, tolerance)
+    elif balance.complete:
+        reasons.append("Momentum: no wall group, so its residual is the load on whatever the surface encloses")
+    else:
+        lacking = [g.name for g, known in zip(setting.groups, setting.data.pressure) if not known]
+        reasons.append(
+            f"Momentum: no pressure is known at {', '.join(lacking)}, "
+            "so the load rests on the balance alone and cannot be compared"
+            if lacking
+            else "Momentum: flow data are missing at a port, so nothing can be compared"
+        )
+    measure = max(measures) if measures else None
+    closes: bool | None = None
+    if measure is not None and measure > tolerance:
+        closes = False
+    elif measure is not None and compared:
+        closes = True
+    return Verdict(closes, measure, tolerance, tuple(reasons))
+
+
+def _momentum_doubts(balance: Balance, tolerance: float) -> list[str]:
+    setting = balance.setting
+    doubts = []
+    walls = setting.walls()
+    if walls.any() and not setting.data.traction[walls].all():
+        names = [g.name for g, wall, known in zip(setting.groups, walls, setting.data.traction) if wall and not known]
+        doubts.append(
+            f"Wall friction is not given on {', '.join(names)}, and counts as zero in the load from the walls"
+        )
+    relative = balance.momentum.relative()
+    stricter = relative_without_mean_pressure(balance)
+    if relative is not None and stricter is not None and relative <= tolerance < stricter:
+        doubts.append(
+            f"Doubt: measured against the forces without the mean pressure, the momentum residual is {stricter:.3g}; "
+            "the level of pressure makes it look smaller"
+        )
+    return doubts

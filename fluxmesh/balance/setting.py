@@ -1,0 +1,83 @@
+"""What a balance needs beside the table of integrals."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fluxmesh.surface.surface import Group, Role
+
+__all__ = ["GroupData", "Hardware", "Setting"]
+
+
+@dataclass(frozen=True, eq=False)
+class GroupData:
+    """Which quantities each group has.
+
+    Attributes
+    ----------
+    flux, pressure, traction : ndarray of bool, shape (n_groups,)
+        Whether mass and momentum flux, pressure, and viscous traction are known.
+    """
+
+    flux: NDArray[np.bool_]
+    pressure: NDArray[np.bool_]
+    traction: NDArray[np.bool_]
+
+
+@dataclass(frozen=True)
+class Hardware:
+    """The device that the walls belong to.
+
+    Attributes
+    ----------
+    mass : float
+        kg.
+    centre : tuple of 3 floats
+        Centre of mass, m.
+    """
+
+    mass: float
+    centre: tuple[float, float, float]
+
+
+@dataclass(frozen=True, eq=False)
+class Setting:
+    """Groups, body forces and reference points of a balance.
+
+    Attributes
+    ----------
+    groups : tuple of Group
+        One a row of the table.
+    data : GroupData
+        What is known where.
+    closed : bool
+        Whether the surface is closed.
+    gravity : tuple of 3 floats
+        m/s².
+    fluid_density : float or None
+        Density that the enclosed volume is weighed with, kg/m^3; None when
+        there is none.
+    anchor : tuple of 3 floats
+        Point that moments and the reaction are about, m.
+    hardware : Hardware or None
+        None when its mass is not given.
+    """
+
+    groups: tuple[Group, ...]
+    data: GroupData
+    closed: bool
+    gravity: tuple[float, float, float] = (0.0, 0.0, 0.0)
+    fluid_density: float | None = None
+    anchor: tuple[float, float, float] = (0.0, 0.0, 0.0)
+    hardware: Hardware | None = field(default=None)
+
+    def walls(self) -> NDArray[np.bool_]:
+        """Return which groups are hardware, shape (n_groups,)."""
+        return np.array([group.role is Role.WALL for group in self.groups])
+
+    def ports(self) -> NDArray[np.bool_]:
+        """Return which groups flow may pass, shape (n_groups,)."""
+        return np.array([group.role.is_port for group in self.groups])

@@ -1,0 +1,101 @@
+"""``[groups.NAME]``: which faces a group has, what it is to the flow, and what is supplied for it."""
+
+from __future__ import annotations
+
+import math
+from typing import Literal
+
+from pydantic import Field
+
+from fluxmesh.case.values import (
+    Angle,
+    Density,
+    Direction,
+    MassRate,
+    Place,
+    Pressure,
+    Speed,
+    Table,
+    Tags,
+    Velocity,
+    VolumeRate,
+)
+from fluxmesh.surface.surface import Role
+
+__all__ = ["SUPPLIED_FLOW", "GroupSection", "Pick"]
+
+SUPPLIED_FLOW = ("flow_rate", "mass_flow", "speed", "velocity")
+"""Keys that say how much flow passes; a group may have one of them."""
+
+
+class Pick(Table):
+    """A rule that picks a planar region of a mesh without tags.
+
+    Attributes
+    ----------
+    normal : tuple of 3 float
+        Unit normal of the region, out of the fluid.
+    near : tuple of 3 float
+        A point in metres; of the planar regions with that normal the nearest
+        is taken.
+    angle : float
+        How far in radians the normal of a face may be off; default 1 degree.
+    """
+
+    normal: Direction = Field(description="the normal of the plane, out of the fluid, such as [0, 0, 1]")
+    near: Place = Field(description="a point in or near the region, such as [0.1, 0, 0.25] in metres")
+    angle: Angle = math.radians(1.0)
+
+
+class GroupSection(Table):
+    """A named set of faces.
+
+    Attributes
+    ----------
+    role : Role
+        What the group is to the flow.
+    tag : tuple of int or str, or None
+        Values of the group array, or names of sets, that make the group; None
+        stands for the group's own name.
+    pick : Pick or None
+        A rule instead.
+    rest : bool
+        Whether the group takes the faces that no other one has.
+    flow_rate, mass_flow, speed : Measured or None
+        Volume flow in m³/s, mass flow in kg/s, mean speed along the normal in
+        m/s. A magnitude for an inlet or outlet; for an open group above zero
+        where the flow leaves.
+    velocity : tuple of 3 float, or None
+        Absolute velocity in m/s instead.
+    profile : {"uniform"}
+        How the supplied flow is spread over the group.
+    pressure : Measured or None
+        Static pressure in Pa.
+    pressure_kind : {"gauge", "absolute"}
+        What `pressure` is.
+    density : Measured or None
+        Density in kg/m³ where it differs from that of the fluid.
+    """
+
+    role: Role = Field(strict=False, description="a role: inlet, outlet, open, wall or symmetry")
+    tag: Tags | None = None
+    pick: Pick | None = None
+    rest: bool = False
+    flow_rate: VolumeRate | None = None
+    mass_flow: MassRate | None = None
+    speed: Speed | None = None
+    velocity: Velocity | None = None
+    profile: Literal["uniform"] = "uniform"
+    pressure: Pressure | None = None
+    pressure_kind: Literal["gauge", "absolute"] = "gauge"
+    density: Density | None = None
+
+    def supplied_flow(self) -> tuple[str, ...]:
+        """Return the keys of the supplied flow that are given.
+
+        Returns
+        -------
+        tuple of str
+            From `SUPPLIED_FLOW`; in a case that was read, at most one.
+        """
+        return tuple(key for key in SUPPLIED_FLOW if getattr(self, key) is not None)

@@ -1,0 +1,152 @@
+"""The small tables of a case: surface, fluid, hardware, anchor, closure, reported."""
+
+from __future__ import annotations
+
+from fluxmesh.case.values import (
+    AbsolutePressure,
+    Acceleration,
+    Density,
+    FilePath,
+    Force,
+    Length,
+    LengthUnit,
+    Mass,
+    Moment,
+    Place,
+    Share,
+    Table,
+    Text,
+    Texts,
+    UnitScale,
+)
+
+__all__ = [
+    "AnchorSection",
+    "ClosureSection",
+    "FluidSection",
+    "GroupNames",
+    "HardwareSection",
+    "ReportedSection",
+    "SurfaceSection",
+]
+
+
+class GroupNames(Table):
+    """Where the names of the groups are in the file; one of the two.
+
+    Attributes
+    ----------
+    array : str or None
+        A face array whose values tell the groups apart.
+    sets : bool
+        Whether named sets or blocks in the file are the groups.
+    """
+
+    array: Text | None = None
+    sets: bool = False
+
+
+class SurfaceSection(Table):
+    """``[surface]``: the mesh.
+
+    Attributes
+    ----------
+    file : Path or None
+        One file with all faces.
+    files : dict of str to Path, or None
+        Instead: one file a group.
+    length_unit : UnitScale
+        Unit of the coordinates in the file.
+    closed : bool
+        False for an open piece: integrals of each group, no volume, no balance.
+    groups : GroupNames or None
+        How the file tells the groups apart; None where it does not.
+    weld : Measured or None
+        Points closer than this, in metres, may be joined to close gaps.
+    """
+
+    file: FilePath | None = None
+    files: dict[str, FilePath] | None = None
+    length_unit: LengthUnit = UnitScale("m", 1.0)
+    closed: bool = True
+    groups: GroupNames | None = None
+    weld: Length | None = None
+
+
+class FluidSection(Table):
+    """``[fluid]``: its properties.
+
+    Attributes
+    ----------
+    density : Measured or None
+        In kg/m³; None where an array or each group has it.
+    ambient_pressure : Measured or None
+        In Pa, absolute.
+    gravity : tuple of 3 float
+        Acceleration of gravity in m/s²; default none.
+    """
+
+    density: Density | None = None
+    ambient_pressure: AbsolutePressure | None = None
+    gravity: Acceleration = (0.0, 0.0, 0.0)
+
+
+class HardwareSection(Table):
+    """``[hardware]``: what the flow loads.
+
+    Attributes
+    ----------
+    mass : Measured or None
+        In kg, without the fluid.
+    centre : tuple of 3 float, or None
+        Centre of gravity in metres.
+    """
+
+    mass: Mass | None = None
+    centre: Place | None = None
+
+
+class AnchorSection(Table):
+    """``[anchor]``: where the hardware is held.
+
+    Attributes
+    ----------
+    at : tuple of 3 float
+        Point in metres about which the reaction moment is taken.
+    """
+
+    at: Place = (0.0, 0.0, 0.0)
+
+
+class ClosureSection(Table):
+    """``[closure]``: when a balance counts as closed.
+
+    Attributes
+    ----------
+    tolerance : float
+        Largest relative residual.
+    encloses_hardware : bool
+        For a surface without walls: whether hardware is inside, so that the
+        balance gives the load on it.
+    """
+
+    tolerance: Share = 0.01
+    encloses_hardware: bool = True
+
+
+class ReportedSection(Table):
+    """``[reported]``: the load that the solver printed.
+
+    Attributes
+    ----------
+    force : tuple of 3 float, or None
+        In N, of the flow on the hardware.
+    moment : tuple of 3 float, or None
+        In N m, about the anchor point.
+    on : tuple of str, or None
+        Groups it was printed for; None stands for all walls.
+    """
+
+    force: Force | None = None
+    moment: Moment | None = None
+    on: Texts | None = None

@@ -1,0 +1,158 @@
+"""The command line."""
+
+from __future__ import annotations
+
+import sys
+import warnings
+from pathlib import Path
+from typing import Annotated, Any
+
+import typer
+
+from fluxmesh.errors import FluxmeshError, FluxmeshWarning, PictureError
+
+__all__ = ["app", "main"]
+
+app = typer.Typer(
+    help="Mass and momentum balance over a closed, tagged surface: loads on hardware, the reaction at the anchor, "
+    "and whether the numbers close.",
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+)
+
+CaseFile = Annotated[Path, typer.Argument(metavar="CASE", help="Case file (TOML).", show_default=False)]
+
+
+def _console(stderr: bool = False) -> Any:
+    from rich.console import Console
+
+    stream = sys.stderr if stderr else sys.stdout
+    # a pipe has no width: use one that holds the tables
+    return Console(file=stream, width=None if stream.isatty() else 120, highlight=False, soft_wrap=False)
+
+
+@app.command(epilog="Example: fluxmesh balance meshes/manifold/manifold_fine.toml --out results/manifold")
+def balance(
+    case: CaseFile,
+    out: Annotated[
+        Path | None, typer.Option(help="Folder for balance.json and pictures.", show_default="results/<case name>")
+    ] = None,
+    pictures: Annotated[bool, typer.Option("--pictures/--no-pictures", help="Draw the force vectors.")] = True,
+) -> None:
+    """Balance a case: tables here, balance.json and pictures in a folder.
+
+    Exit code 0: done; 1: done, and a balance does not close within the tolerance; 2: the input is at fault.
+    """
+    from fluxmesh.job.warm import warmed
+
+    with warmed():
+        from fluxmesh.case.read import read_case
+        from fluxmesh.job.run import run_case
+        from fluxmesh.report.result import require_writable, write_json
+        from fluxmesh.report.terminal import print_balance
+
+        read = read_case(case)
+        folder = out or Path("results") / read.name
+        require_writable(folder)
+        done = run_case(read)
+    data = done.data()
+    write_json(data, folder / "balance.json")
+    console = _console()
+    print_balance(
+        console,
+        done.balance,
+        done.verdict,
+        title=done.title,
+        surface=done.surface,
+        assumptions=done.assumptions,
+    )
+    typer.echo(f"\nWritten: {folder / 'balance.json'}")
+    if pictures:
+        _draw(done, folder)
+    raise typer.Exit(1 if done.verdict.closes is False else 0)
+
+
+def _draw(done: Any, folder: Path) -> None:
+    from fluxmesh.report.pictures import draw_pressure, draw_vectors
+    from fluxmesh.report.sketch import scene_of
+
+    scene = scene_of(done.title, done.surface, done.flow, done.balance, notes=done.assumptions)
+    try:
+        draw_vectors(scene, folder / "vectors.png")
+        typer.echo(f"Written: {folder / 'vectors.png'}")
+        if scene.pressure is not None:
+            draw_pressure(scene, folder / "pressure.png")
+            typer.echo(f"Written: {folder / 'pressure.png'}")
+    except PictureError as error:
+        typer.echo(f"No pictures: {error}", err=True)
+
+
+@app.command(epilog="Example: fluxmesh check meshes/manifold/manifold_fine.toml")
+def check(
+    case: CaseFile,
+    strict: Annotated[bool, typer.Option("--strict", help="Count doubts as errors (exit code 1).")] = False,
+) -> None:
+    """Say all that is wrong or doubtful in a case before anything is handed on.
+
+    Exit code 0: nothing wrong; 1: doubts, with --strict; 2: the input is at fault.
+    """
+    from fluxmesh.case.read import read_case
+    from fluxmesh.job.check import check_case
+    from fluxmesh.report.review import print_review
+
+    review = check_case(read_case(case))
+    print_review(_console(), review)
+    raise typer.Exit(1 if strict and review.doubts else 0)
+
+
+@app.command(epilog="Example: fluxmesh start header.stl --unit mm > header.toml")
+def start(
+    mesh: Annotated[Path, typer.Argument(metavar="MESH", help="Mesh file with the surface.", show_default=False)],
+    unit: Annotated[str, typer.Option(help="Length unit of the file.")] = "m",
+    to: Annotated[
+        Path | None,
+        typer.Option("--to", help="Case file to write; prints to the terminal by default.", show_default=False),
+    ] = None,
+) -> None:
+    """Propose a commented case for a mesh: groups, arrays and planar port candidates found in it."""
+    from fluxmesh.starter import propose_case, write_case
+
+    text = propose_case(mesh, unit=unit, beside=to)
+    if to is None:
+        typer.echo(text, nl=False)
+    else:
+        write_case(text, to)
+        typer.echo(f"Written: {to}")
+
+
+def _version(wanted: bool) -> None:
+    if wanted:
+        from fluxmesh import __version__
+
+        typer.echo(f"fluxmesh {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _options(
+    version: Annotated[
+        bool, typer.Option("--version", help="Print the version.", callback=_version, is_eager=True)
+    ] = False,
+) -> None:
+    del version
+
+
+def main() -> None:
+    """Run the command line; errors of the input end with one message and exit code 2."""
+    warnings.simplefilter("default", FluxmeshWarning)
+    try:
+        app(prog_name="fluxmesh")
+    except FluxmeshError as error:
+        typer.echo(f"fluxmesh: {error}", err=True)
+        sys.exit(2)
+    except BrokenPipeError:
+        # the reader of our pipe has left: nothing more to say
+        sys.stderr.close()
+        sys.exit(141)

@@ -1,0 +1,280 @@
+"""The flow on a surface: density, velocity, pressure, traction and mass flux."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from fluxmesh.errors import FieldError, GroupError
+from fluxmesh.field.field import (
+    Field,
+    absent_field,
+    array_field,
+    constant_field,
+    require_finite,
+    require_positive,
+    supply,
+)
+from fluxmesh.field.pressure import PressureMeaning, pressure_terms
+from fluxmesh.integral.kernel import integrate
+from fluxmesh.integral.layout import ABSENT, PER_GROUP, FaceArrays, FlowArrays, PressureTerms, make_runs
+from fluxmesh.integral.table import IntegralTable
+from fluxmesh.surface.surface import ControlSurface, Role
+
+__all__ = ["Flow", "integrate_flow", "lay_flow", "near_origin", "require_flow", "still_flow"]
+
+
+@dataclass(frozen=True, eq=False)
+class Flow:
+    """Flow data laid on a surface.
+
+    Attributes
+    ----------
+    density : Field
+        kg/m^3.
+    velocity : Field
+        Absolute velocity, m/s.
+    pressure : Field
+        As exported; `meaning` says how to read it. Values supplied for a group
+        are gauge pressure in Pa.
+    traction : Field
+        Viscous traction on the FLUID, Pa.
+    mass_flux : Field
+        Mass flow OUT through each face, kg/s; where it is there, it carries the
+        mass and momentum flux in place of density times velocity.
+    meaning : PressureMeaning
+        Kind of the exported pressure, and its head.
+    ambient : float or None
+        Ambient absolute pressure, Pa.
+    gravity : tuple of 3 floats
+        m/s².
+    """
+
+    density: Field
+    velocity: Field
+    pressure: Field
+    traction: Field
+    mass_flux: Field
+    meaning: PressureMeaning = field(default_factory=PressureMeaning)
+    ambient: float | None = None
+    gravity: tuple[float, float, float] = (0.0, 0.0, 0.0)
+
+    def fields(self) -> tuple[Field, ...]:
+        """Return all fields."""
+        return (self.density, self.velocity, self.pressure, self.traction, self.mass_flux)
+
+    def uniform_density(self) -> float | None:
+        """Return the density if it is one constant, else None."""
+        values = self.density.group[self.density.where == PER_GROUP]
+        if values.size == 0 or (self.density.where > PER_GROUP).any() or np.ptp(values) > 0:
+            return None
+        return float(values[0])
+
+
+def still_flow(surface: ControlSurface) -> Flow:
+    """Return a flow without any data, for the geometry alone."""
+    return Flow(
+        density=absent_field(surface, "density", 1),
+        velocity=absent_field(surface, "velocity", 3),
+        pressure=absent_field(surface, "pressure", 1),
+        traction=absent_field(surface, "traction", 3),
+        mass_flux=absent_field(surface, "mass flux", 1),
+    )
+
+
+Value = ArrayLike | float | Sequence[float] | None
+
+
+def lay_flow(
+    surface: ControlSurface,
+    *,
+    density: Value = None,
+    velocity: Value = None,
+    pressure: Value = None,
+    traction: Value = None,
+    mass_flux: Value = None,
+    supplied: Mapping[str, Mapping[str, float | Sequence[float]]] | None = None,
+    meaning: PressureMeaning | None = None,
+    ambient: float | None = None,
+    gravity: Sequence[float] = (0.0, 0.0, 0.0),
+) -> Flow:
+    """Lay flow data on a surface.
+
+    Parameters
+    ----------
+    surface : ControlSurface
+        The surface.
+    density, pressure : float or array_like, shape (n,), optional
+        One value, or one a point or face: kg/m^3 and Pa (see `meaning`).
+    velocity, traction : 3 floats or array_like, shape (n, 3), optional
+        m/s, and viscous traction on the FLUID in Pa.
+    mass_flux : array_like, shape (n_faces,), optional
+        Mass flow out through each face, kg/s.
+    supplied : mapping, optional
+        ``{group: {"velocity": (..), "pressure": .., "density": .., "traction": (..)}}``:
+        one value for a group, in place of the arrays; pressure is gauge.
+    meaning : PressureMeaning, optional
+        How to read the pressure array; gauge with head by default.
+    ambient : float, optional
+        Ambient absolute pressure, Pa.
+    gravity : sequence of 3 floats, optional
+        m/s².
+
+    Returns
+    -------
+    Flow
+        Checked: lengths fit, values are finite, density is positive.
+
+    Raises
+    ------
+    FieldError
+        An array of the wrong length or component count, a value that is not
+        finite, or a density that is not positive.
+    GroupError
+        A supplied group that the surface does not have.
+    """
+
+    def lay(name: str, components: int, value: Value) -> Field:
+        if value is None:
+            return absent_field(surface, name, components)
+        given = np.asarray(value)
+        if given.ndim == 0 or (components == 3 and given.shape == (3,)):
+            constant = float(given) if components == 1 else [float(x) for x in given]
+            return constant_field(surface, name, components, constant)
+        return array_field(surface, name, components, given, at="faces" if name == "mass flux" else None)
+
+    fields = {
+        "density": lay("density", 1, density),
+        "velocity": lay("velocity", 3, velocity),
+        "pressure": lay("pressure", 1, pressure),
+        "traction": lay("traction", 3, traction),
+    }
+    if pressure is not None and np.ndim(pressure) == 0:
+        # one value everywhere is read like an array, so that `meaning` applies to it too
+        fields["pressure"] = array_field(
+            surface, "pressure", 1, np.full(surface.face_count, float(np.asarray(pressure))), at="faces"
+        )
+    names = [group.name for group in surface.groups]
+    for group, values in (supplied or {}).items():
+        if group not in names:
+            raise GroupError(f"data are supplied for group '{group}'", remedy=f"The surface has {', '.join(names)}")
+        for name, value in values.items():
+            if name not in fields:
+                raise FieldError(f"'{name}' is supplied for group '{group}'", remedy=f"Allowed: {', '.join(fields)}")
+            fields[name] = supply(fields[name], names.index(group), value)
+    down = [float(g) for g in gravity]
+    if len(down) != 3 or not np.isfinite(down).all():
+        raise FieldError(f"gravity is {gravity!r}", remedy="Three finite numbers in m/s² are needed")
+    flow = Flow(
+        **fields,
+        mass_flux=lay("mass flux", 1, mass_flux),
+        meaning=meaning or PressureMeaning(),
+        ambient=ambient,
+        gravity=(down[0], down[1], down[2]),
+    )
+    require_flow(surface, flow)
+    return flow
+
+
+def require_flow(surface: ControlSurface, flow: Flow) -> None:
+    """Raise if the values of a flow cannot be used.
+
+    Parameters
+    ----------
+    surface : ControlSurface
+        The surface.
+    flow : Flow
+        The flow.
+
+    Raises
+    ------
+    FieldError
+        A value that is not finite, a density that is not positive, or a group
+        with velocity or mass flux but no density.
+    """
+    for each in flow.fields():
+        require_finite(surface, each)
+    require_positive(surface, flow.density)
+    moving = flow.velocity.present() | flow.mass_flux.present()
+    for k, group in enumerate(surface.groups):
+        if moving[k] and flow.density.where[k] == ABSENT:
+            raise FieldError(
+                "there is a velocity or mass flux, but no density",
+                where=f"group '{group.name}'",
+                remedy="Give the density",
+            )
+
+
+def near_origin(surface: ControlSurface) -> NDArray[np.float64]:
+    """Return the middle of the points' bounding box, shape (3,), m."""
+    points = surface.points
+    low = np.array([points[:, k].min() for k in range(3)])
+    high = np.array([points[:, k].max() for k in range(3)])
+    return np.asarray(low + (high - low) / 2)
+
+
+def integrate_flow(surface: ControlSurface, flow: Flow, *, threads: int | None = None) -> IntegralTable:
+    """Return the table of basis integrals of a flow on a surface.
+
+    Parameters
+    ----------
+    surface : ControlSurface
+        The surface.
+    flow : Flow
+        The flow; pressure becomes gauge with its head on the way.
+    threads : int, optional
+        Threads; all cores by default. The result does not depend on it.
+
+    Returns
+    -------
+    IntegralTable
+        One row a group, about the middle of the bounding box.
+
+    Raises
+    ------
+    FieldError
+        Integrals that overflow.
+    """
+    origin = near_origin(surface)
+    terms = PressureTerms(False, 0.0, 0.0, 0.0, 0.0)
+    if flow.pressure.present().any():
+        terms = pressure_terms(
+            flow.meaning,
+            ambient=flow.ambient,
+            density=flow.uniform_density(),
+            gravity=np.asarray(flow.gravity),
+            origin=origin,
+        )
+    mesh = FaceArrays(
+        surface.points,
+        surface.connectivity,
+        np.empty(0, np.int64) if surface.offsets is None else surface.offsets,
+        np.empty(0, np.int8) if surface.kinds is None else surface.kinds,
+    )
+    arrays = FlowArrays(
+        velocity=flow.velocity.arrays(),
+        traction=flow.traction.arrays(),
+        pressure=flow.pressure.arrays(),
+        density=flow.density.arrays(),
+        mass=flow.mass_flux.arrays(),
+        terms=terms,
+    )
+    table = integrate(
+        mesh=mesh,
+        flow=arrays,
+        runs=make_runs(surface.group_of_face, surface.kinds),
+        origin=origin,
+        still_groups=np.array([group.role in (Role.WALL, Role.SYMMETRY) for group in surface.groups]),
+        threads=threads,
+    )
+    if not np.isfinite(table.values).all():
+        group = surface.groups[int(np.flatnonzero(~np.isfinite(table.values).all(axis=1))[0])].name
+        raise FieldError(
+            "the integrals overflow",
+            where=f"group '{group}'",
+            remedy="Check coordinates and field values for absurd sizes",
+        )
+    return table

@@ -1,0 +1,252 @@
+"""Two offscreen pictures of a balance: the forces, and the gauge pressure with the forces.
+
+VTK draws the surface; text, arrows, legend and bars are laid over it.
+Distances and forces are to stated scales, and the caution stands on the sheet.
+"""
+
+from __future__ import annotations
+
+import os
+import tempfile
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fluxmesh.errors import OutputError, PictureError
+from fluxmesh.report.picture_arrows import Reach, lay_out_arrows, pulled_in, reach_of
+from fluxmesh.report.picture_legend import ROLE_TINTS, draw_footer, draw_legend
+from fluxmesh.report.picture_overlay import draw_overlay
+from fluxmesh.report.picture_ports import Port, find_ports
+from fluxmesh.report.picture_pressure import Bands, draw_bar, pressure_bands
+from fluxmesh.report.picture_sheet import Sheet
+from fluxmesh.report.picture_surface import Layer, draw_surface, require_offscreen
+from fluxmesh.report.picture_text import engineering, nice_step
+from fluxmesh.report.picture_view import View, axes_for, choose_direction, fit
+from fluxmesh.report.scene import Scene, area_vectors, thin
+
+__all__ = ["draw_pressure", "draw_vectors"]
+
+_WALL_TINT = (214, 210, 202)
+_WALL_OPACITY = 0.35
+_MOST_FIT_POINTS = 20_000
+
+
+def draw_vectors(scene: Scene, path: str | Path, size: tuple[int, int] = (1600, 1200)) -> None:
+    """Draw the forces over a pale, translucent surface with its ports tinted by role.
+
+    Parameters
+    ----------
+    scene : Scene
+        What to show; large surfaces are thinned for the drawing.
+    path : str or Path
+        PNG file to write. It appears whole or not at all.
+    size : tuple of int
+        Width and height in pixels, 800 by 600 at least.
+
+    Raises
+    ------
+    PictureError
+        No offscreen window can be had, or the size is too small.
+    OutputError
+        The file cannot be written.
+    """
+    _draw(scene, Path(path), size, with_pressure=False)
+
+
+def draw_pressure(scene: Scene, path: str | Path, size: tuple[int, int] = (1600, 1200)) -> None:
+    """Draw the gauge pressure on the surface, with the same forces.
+
+    Pressure is shown in bands of the colour map cividis (Nuñez, Anderton and
+    Renslow, PLoS ONE 13, 2018), which reads alike with any colour vision and
+    grows steadily lighter when printed in grey.
+
+    Parameters
+    ----------
+    scene : Scene
+        What to show; triangles whose pressure is NaN stay pale.
+    path : str or Path
+        PNG file to write. It appears whole or not at all.
+    size : tuple of int
+        Width and height in pixels, 800 by 600 at least.
+
+    Raises
+    ------
+    PictureError
+        The scene has no pressure, no offscreen window can be had, or the size
+        is too small.
+    OutputError
+        The file cannot be written.
+    """
+    if scene.pressure is None or not np.isfinite(scene.pressure).any():
+        raise PictureError("the surface carries no pressure to draw", remedy="Draw the force vectors alone")
+    _draw(scene, Path(path), size, with_pressure=True)
+
+
+def _draw(scene: Scene, path: Path, size: tuple[int, int], with_pressure: bool) -> None:
+    if size[0] < 800 or size[1] < 600:
+        raise PictureError(
+            f"a picture of {size[0]} by {size[1]} pixels has no room for its legend",
+            remedy="Ask for 800 by 600 or more",
+        )
+    require_offscreen()
+    scene = thin(scene)
+    bands = pressure_bands(scene) if with_pressure else None
+    sheet = Sheet(size)
+    u = sheet.unit
+    margin, panel = 30.0 * u, 540.0 * u
+    top = size[1] - 96.0 * u
+    _draw_heading(sheet, scene.title, with_pressure, margin)
+    bottom = draw_footer(sheet, scene.notes, margin)
+    # from below: scale bars, colour bar, view; the panel stands to the right of all
+    left, right = round(margin), round(size[0] - panel - 2.0 * margin)
+    scales = bottom + 100.0 * u
+    base = round(scales + (90.0 * u if bands else 0.0))
+    area = (left, base, right, round(top))
+
+    ports = find_ports(scene)
+    reach = reach_of(scene, ports)
+    view = _view(scene, ports, reach, u, (left + 76 * u, base + 66 * u, right - 76 * u, top - 60 * u))
+    window, hidden = _looked_through(scene, bands, view)
+    layers = _layers(scene, bands, window, hidden)
+    image = draw_surface(scene.points, scene.triangles, layers, view, area, 1.1 * u)
+    sheet.image(image, area)
+    arrows = lay_out_arrows(scene, reach, view, u)
+    draw_overlay(sheet, scene, ports, arrows, view, image, area)
+    _draw_scales(sheet, view, reach, (left, bottom))
+    if bands:
+        draw_bar(sheet, bands, (left, scales, right, base))
+    column = (size[0] - panel - margin, bottom, size[0] - margin, top)
+    draw_legend(sheet, scene, arrows, column, bands, window, bool(hidden.any()))
+    _write(sheet.png(), path)
+
+
+def _draw_heading(sheet: Sheet, title: str, with_pressure: bool, margin: float) -> None:
+    u = sheet.unit
+    width, height = sheet.size
+    text = sheet.ruler.cut(title, 30 * u, width - 2 * margin, bold=True)
+    sheet.text(margin, height - 50 * u, text, 30 * u, bold=True)
+    what = "Gauge pressure on the surface, and the forces"
+    if not with_pressure:
+        what = "Forces on the control volume and on the hardware"
+    sheet.text(margin, height - 80 * u, what, 19 * u, colour="#444444")
+
+
+def _view(scene: Scene, ports: list[Port], reach: Reach, unit: float, area: tuple[float, float, float, float]) -> View:
+    """Choose the direction, and fit surface, arrows and markers into the area."""
+    centroids = np.array([port.centroid for port in ports]).reshape(-1, 3)
+    normals = np.array([port.normal for port in ports]).reshape(-1, 3)
+    vectors = reach.tip - reach.tail
+    lengths = np.linalg.norm(vectors, axis=1)
+    forces = vectors[lengths > 0.0] / lengths[lengths > 0.0, None]
+    size = float(np.linalg.norm(scene.points.max(axis=0) - scene.points.min(axis=0)))
+    turned = np.linalg.norm(normals, axis=1) > 0.0
+    toward = choose_direction(centroids, normals[turned], forces, size, scene.up)
+    shown = scene.points[np.unique(scene.triangles)]
+    # corners of the box would do, but would leave room for what is not there
+    some = shown[:: max(1, len(shown) // _MOST_FIT_POINTS)]
+    markers = np.array([pulled_in(scene, marker.at) for marker in scene.markers]).reshape(-1, 3)
+    axes = axes_for(toward, scene.up)
+    shown = np.vstack([some, reach.tail, reach.tip, markers])
+    view = fit(axes, shown, area)
+    # once more, with the arrows that are enlarged or set aside where they really lie
+    ends = [end for item in lay_out_arrows(scene, reach, view, unit) for end in (item.start, item.end)]
+    return fit(axes, np.vstack([shown, *(view.lift(end) for end in ends)]), area) if ends else view
+
+
+def _layers(scene: Scene, bands: Bands | None, window: float, hidden: NDArray[np.bool_]) -> list[Layer]:
+    """Say how each group, or each kind of triangle, is drawn.
+
+    `window` is the opacity of ports without a pressure, `hidden` marks
+    triangles that are left out.
+    """
+    layers = []
+    for number, (_, role) in enumerate(scene.groups):
+        whole = np.flatnonzero(scene.group_of_triangle == number)
+        members = whole[~hidden[whole]]
+        tint = _WALL_TINT if role == "wall" else ROLE_TINTS[role]
+        rim = None if role == "wall" else _darker(tint)
+        if rim is not None and members.size < whole.size:
+            layers.append(Layer(whole, np.array(tint, dtype=np.uint8), 0.0, rim=rim))
+        if bands is not None and scene.pressure is not None:
+            known = np.isfinite(scene.pressure[members])
+            coloured, members = members[known], members[~known]
+            if coloured.size:
+                limits = (float(bands.levels[0]), float(bands.levels[-1]))
+                values = scene.pressure[coloured]
+                layers.append(Layer(coloured, bands.palette, 1.0, values=values, limits=limits, rim=rim))
+            tint = _WALL_TINT
+        if members.size:
+            opacity = _WALL_OPACITY if role == "wall" or bands is not None else window
+            layers.append(Layer(members, np.array(tint, dtype=np.uint8), opacity, rim=rim))
+    return layers
+
+
+def _looked_through(scene: Scene, bands: Bands | None, view: View) -> tuple[float, NDArray[np.bool_]]:
+    """Return the opacity of ports, and the triangles that must go for the walls to be seen.
+
+    Where ports make up most of the surface (a control surface around a body),
+    they would hide the walls: they are drawn fainter, and in a picture of
+    pressure those turned to the viewer are left out.
+    """
+    vectors = area_vectors(scene.points, scene.triangles)
+    areas = np.linalg.norm(vectors, axis=1)
+    port = np.array([role != "wall" for _, role in scene.groups])[scene.group_of_triangle]
+    nothing = np.zeros(len(areas), dtype=bool)
+    if float(areas[port].sum()) <= float(areas[~port].sum()) or port.all():
+        return 0.75, nothing
+    if bands is None or scene.pressure is None or not np.isfinite(scene.pressure[~port]).any():
+        return 0.35, nothing
+    return 0.35, port & (vectors @ view.axes[2] > 0.0)
+
+
+def _darker(tint: tuple[int, int, int]) -> tuple[int, int, int]:
+    red, green, blue = (int(0.55 * value) for value in tint)
+    return red, green, blue
+
+
+def _draw_scales(sheet: Sheet, view: View, reach: Reach, corner: tuple[float, float]) -> None:
+    """Draw the axes and the two scale bars in the lower left corner."""
+    u = sheet.unit
+    x, y = corner
+    sheet.axes_sign(view.axes, np.array([x + 52 * u, y + 42 * u]), 38.0 * u)
+    metres = nice_step(230.0 * u / view.scale)
+    sheet.bar(
+        x + 150 * u,
+        y + 40 * u,
+        metres * view.scale,
+        engineering(metres, "m", 1),
+        "distance, square to the view",
+    )
+    if reach.metres_per_newton > 0.0:
+        pixels = reach.metres_per_newton * view.scale
+        newtons = nice_step(230.0 * u / pixels)
+        sheet.bar(
+            x + 480 * u,
+            y + 40 * u,
+            newtons * pixels,
+            engineering(newtons, "N", 1),
+            "force, by length of arrow in space",
+        )
+
+
+def _write(content: bytes, path: Path) -> None:
+    """Write a file whole or not at all."""
+    temporary = None
+    try:
+        with tempfile.NamedTemporaryFile(dir=path.parent, prefix=f".{path.name}.", delete=False) as stream:
+            temporary = stream.name
+            stream.write(content)
+        # a temporary file is private to its owner; a picture is as readable as any new file
+        mask = os.umask(0)
+        os.umask(mask)
+        os.chmod(temporary, 0o666 & ~mask)
+        os.replace(temporary, path)
+    except OSError as error:
+        if temporary is not None:
+            Path(temporary).unlink(missing_ok=True)
+        raise OutputError(
+            f"the picture cannot be written ({error.strerror})",
+            where=str(path),
+            remedy="Choose a folder that can be written",
+        ) from error

@@ -1,0 +1,268 @@
+"""What a run prints: ledger, loads with the bodies they act between, verdict, assumptions."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from fluxmesh.assess.assumptions import CAUTIONS
+from fluxmesh.assess.verdict import Verdict
+from fluxmesh.balance.balance import Balance
+from fluxmesh.balance.wrench import Vector, Wrench
+from fluxmesh.surface.surface import ControlSurface
+
+if TYPE_CHECKING:
+    from rich.console import Console
+
+__all__ = ["figure", "print_balance"]
+
+
+def figure(value: float | None, scale: float = 0.0) -> str:
+    """Return a number to five significant digits.
+
+    Parameters
+    ----------
+    value : float or None
+        The number; None prints as a dash.
+    scale : float, optional
+        Size of the quantities it stands among: what lies below 1e-12 of it is
+        round-off, and prints as 0.
+
+    Returns
+    -------
+    str
+        As "-1234.5" or "1.2345e-07".
+    """
+    if value is None:
+        return "–"
+    if abs(value) <= 1e-12 * scale:
+        return "0"
+    return f"{value:.5g}"
+
+
+def _stack(vector: Vector, scale: float) -> str:
+    return "\n".join(figure(float(x), scale) for x in vector)
+
+
+def _row(vector: Vector, scale: float | None = None) -> str:
+    size = float(np.linalg.norm(vector)) if scale is None else scale
+    return "(" + ", ".join(figure(float(x), size) for x in vector) + ")"
+
+
+def _table(title: str, columns: Sequence[tuple[str, str]], rows: Iterable[Sequence[str]]) -> Any:
+    from rich import box
+    from rich.table import Table
+    from rich.text import Text
+
+    table = Table(title=title, title_justify="left", title_style="bold", box=box.HORIZONTALS, pad_edge=False)
+    for heading, justify in columns:
+        table.add_column(heading, justify="right" if justify == "right" else "left", no_wrap=justify == "right")
+    for row in rows:
+        # Text and not markup: names come from outside
+        table.add_row(*(Text(cell) for cell in row))
+    return table
+
+
+def _surface_lines(balance: Balance, surface: ControlSurface) -> list[str]:
+    area = float(balance.table.total("area"))
+    shells = "" if surface.shells == 1 else f", {surface.shells} separate shells"
+    state = "closed" if balance.setting.closed else "OPEN (as the case says)"
+    lines = [f"Surface: {surface.face_count:,} faces, {state}{shells}, area {figure(area)} m²"]
+    if balance.enclosed is not None:
+        lines.append(
+            f"Volume inside: {figure(balance.enclosed.volume)} m³, centroid {_row(balance.enclosed.centroid, area**0.5)} m"
+        )
+    if balance.fluid is not None:
+        lines.append(f"Fluid held: {figure(balance.fluid.mass)} kg, weight {_row(balance.fluid.weight)} N")
+    return lines + [f"Note: {note}" for note in surface.notes]
+
+
+def _ledger(balance: Balance) -> Any:
+    flows = balance.table.column("mass_flow")
+    ledger = balance.momentum
+    size = max(ledger.size(), 0.0)
+    through = float(np.abs(flows).sum())
+    rows = []
+    for k, group in enumerate(balance.setting.groups):
+        data = balance.setting.data
+        rows.append(
+            [
+                f"{group.name}\n{group.role.value}",
+                figure(float(flows[k]), through) if data.flux[k] or not group.role.is_port else "not given",
+                "x\ny\nz",
+                _stack(ledger.group_flux[k], size),
+                _stack(ledger.group_pressure[k], size) if data.pressure[k] else "not given",
+                _stack(ledger.group_viscous[k], size) if data.traction[k] else "not given",
+            ]
+        )
+    if balance.mass is not None:
+        rows.append(["weight of fluid", "", "x\ny\nz", "", _stack(ledger.weight, size), ""])
+        residual = _stack(ledger.residual(), size) if balance.complete else "not known"
+        rows.append(["residual", figure(balance.mass.residual, through), "x\ny\nz", residual, "", ""])
+    return _table(
+        "Through and on each group",
+        [
+            ("group", "left"),
+            ("mass out, kg/s", "right"),
+            ("", "left"),
+            ("momentum out, N", "right"),
+            ("pressure on fluid, N", "right"),
+            ("shear on fluid, N", "right"),
+        ],
+        rows,
+    )
+
+
+def _wrench_row(name: str, wrench: Wrench | None) -> list[str]:
+    if wrench is None:
+        return [name, "not known", "", ""]
+    return [name, _row(wrench.force), figure(float(np.linalg.norm(wrench.force))), _row(wrench.moment)]
+
+
+def _loads(balance: Balance) -> Any:
+    load = balance.load
+    rows = [
+        _wrench_row("flow on hardware, from the walls", load.from_walls),
+        _wrench_row("flow on hardware, from the balance", load.from_balance),
+    ]
+    if load.from_walls is not None and load.from_balance is not None:
+        gap = Wrench(
+            load.from_walls.force - load.from_balance.force,
+            load.from_walls.moment - load.from_balance.moment,
+            load.from_walls.at,
+        )
+        rows.append(_wrench_row("difference (walls - balance)", gap))
+    if balance.reaction is not None:
+        rows.append(_wrench_row("ANCHOR ON HARDWARE (reaction)", balance.reaction.wrench))
+    return _table(
+        f"Loads, moments about the anchor {_row(np.asarray(balance.setting.anchor))} m",
+        [
+            ("who on whom", "left"),
+            ("force (x, y, z), N", "right"),
+            ("size, N", "right"),
+            ("moment (x, y, z), N m", "right"),
+        ],
+        rows,
+    )
+
+
+def _reaction_lines(balance: Balance) -> list[str]:
+    reaction = balance.reaction
+    if reaction is None:
+        return ["No reaction: neither the walls nor the ports carry enough data for a load."]
+    axis = reaction.line_of_action
+    # what lies below round-off of force times size of the device prints as 0
+    reach = float(np.linalg.norm(reaction.wrench.moment)) + balance.angular.size() + balance.momentum.size()
+    basis = "from the momentum balance" if reaction.basis == "balance" else "from the walls"
+    lines = [
+        f"The reaction rests on the load {basis}; it acts along the line through {_row(axis.point, 1.0)} m, "
+        f"direction {_row(axis.direction, 1e3)}, with a couple of {figure(axis.couple, reach)} N m about it."
+    ]
+    release = balance.release
+    if release is not None:
+        line = f"If the anchor let go, hardware and fluid would start along {_row(release.direction, 1e3)}"
+        if release.acceleration is not None:
+            line += f" at {figure(float(np.linalg.norm(release.acceleration)))} m/s²"
+        if release.turning_moment is not None:
+            line += f", turned by {_row(release.turning_moment, reach)} N m about their common centre"
+        lines.append(line + ".")
+    short = balance.short_form
+    if short is not None:
+        effect = float(np.linalg.norm(short.profile_effect))
+        rate = float(np.linalg.norm(short.rate))
+        share = f", {effect / rate:.2%} of it" if rate > 0 else ""
+        lines.append(
+            f"Short form, {short.inlet} to {short.outlet}: mass flow × (V2 - V1) = {figure(short.mass_flow)} kg/s × "
+            f"{_row(short.outlet_velocity - short.inlet_velocity)} m/s = {_row(short.rate)} N; "
+            f"the shape of the profiles adds {_row(short.profile_effect, effect + rate)} N{share}."
+        )
+    return lines
+
+
+def _ports(balance: Balance) -> Any:
+    rows = []
+    for name, port in balance.ports.items():
+        rows.append(
+            [
+                name,
+                figure(port.mean_speed),
+                figure(port.mean_pressure_area),
+                figure(port.mean_total_pressure_mass_flow),
+                figure(port.momentum_factor),
+                figure(port.kinetic_energy_factor),
+                "–" if port.reversed_share is None else f"{port.reversed_share:.2%}",
+            ]
+        )
+    return _table(
+        "Ports",
+        [
+            ("port", "left"),
+            ("speed, m/s", "right"),
+            ("pressure, Pa", "right"),
+            ("total pressure, Pa", "right"),
+            ("momentum factor", "right"),
+            ("energy factor", "right"),
+            ("reversed", "right"),
+        ],
+        rows,
+    )
+
+
+def _verdict_line(verdict: Verdict) -> tuple[str, str]:
+    if verdict.closes is None:
+        return "VERDICT: cannot be judged in full", "bold yellow"
+    if verdict.closes:
+        return "VERDICT: closes", "bold green"
+    return "VERDICT: DOES NOT CLOSE", "bold red"
+
+
+def print_balance(
+    console: Console,
+    balance: Balance,
+    verdict: Verdict,
+    *,
+    title: str,
+    surface: ControlSurface,
+    assumptions: Sequence[str],
+) -> None:
+    """Print a balance, its loads beside their assumptions, and its verdict.
+
+    Parameters
+    ----------
+    console : rich.console.Console
+        Where to.
+    balance : Balance
+        The balance.
+    verdict : Verdict
+        Its judgement.
+    title : str
+        Title of the case.
+    surface : ControlSurface
+        The surface, with notes on what was mended.
+    assumptions : sequence of str
+        What the figures assume.
+    """
+    from rich.text import Text
+
+    def say(line: str, style: str = "") -> None:
+        console.print(Text(line, style=style))
+
+    say(title, "bold")
+    for line in _surface_lines(balance, surface):
+        say(line)
+    console.print()
+    console.print(_ledger(balance))
+    if balance.ports:
+        console.print(_ports(balance))
+    console.print(_loads(balance))
+    for line in _reaction_lines(balance):
+        say(line)
+    say("Assumed: " + "; ".join(text[0].lower() + text[1:] for text in assumptions) + ".")
+    for caution in CAUTIONS:
+        say(f"Caution: {caution}")
+    console.print()
+    say(*_verdict_line(verdict))
+    for reason in verdict.reasons:
+        say(f"  - {reason}")

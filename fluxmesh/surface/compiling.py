@@ -1,0 +1,62 @@
+"""How the surface kernels are compiled and spread over threads."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
+from typing import Any, TypeVar, cast
+
+from numba import njit
+
+__all__ = ["compiled", "run_parts", "thread_count"]
+
+_Kernel = TypeVar("_Kernel", bound=Callable[..., Any])
+
+
+def compiled(function: _Kernel) -> _Kernel:
+    """Compile a function on its first call and keep the machine code on disk.
+
+    It runs without the interpreter's lock; no fast-math, so that sums keep
+    their order.
+
+    Parameters
+    ----------
+    function : callable
+        A function within numba's language.
+
+    Returns
+    -------
+    callable
+        Same signature.
+    """
+    return cast(_Kernel, njit(cache=True, nogil=True, error_model="numpy")(function))
+
+
+def thread_count() -> int:
+    """Return how many threads to use: ``FLUXMESH_THREADS`` or the cores this process may use."""
+    asked = os.environ.get("FLUXMESH_THREADS", "")
+    if asked.isdecimal() and int(asked) > 0:
+        return min(int(asked), 256)
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+
+
+def run_parts(work: Callable[[int], None], parts: int) -> None:
+    """Call ``work(part)`` for every part, on threads when there are several.
+
+    Parameters
+    ----------
+    work : callable
+        Takes the number of a part; parts write to separate places, so that the
+        result does not depend on the number of threads.
+    parts : int
+        How many parts.
+    """
+    workers = min(parts, thread_count())
+    if workers <= 1:
+        for part in range(parts):
+            work(part)
+        return
+    with ThreadPoolExecutor(workers) as pool:
+        for done in [pool.submit(work, part) for part in range(parts)]:
+            done.result()

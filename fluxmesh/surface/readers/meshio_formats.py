@@ -1,0 +1,303 @@
+"""Every other mesh format, through meshio: named sets, physical groups, mixed blocks."""
+
+from __future__ import annotations
+
+import io
+import re
+import struct
+import zlib
+from collections.abc import Iterable, Iterator
+from contextlib import contextmanager, redirect_stderr, redirect_stdout
+from pathlib import Path
+from typing import Any
+from xml.etree.ElementTree import ParseError
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fluxmesh.errors import FieldError, FileError
+from fluxmesh.surface.rawmesh import RawMesh
+from fluxmesh.surface.readers.faces import join_blocks, require_faces
+from fluxmesh.surface.surface import FaceKind
+
+__all__ = ["meshio_suffixes", "read_meshio"]
+
+_KINDS = {
+    "triangle": FaceKind.POLYGON,
+    "quad": FaceKind.POLYGON,
+    "polygon": FaceKind.POLYGON,
+    "triangle6": FaceKind.TRIANGLE6,
+    "quad8": FaceKind.QUAD8,
+    "quad9": FaceKind.QUAD9,
+}
+# What its readers are seen to raise on files that are damaged or not of their format.
+_DAMAGE = (
+    ArithmeticError,
+    AssertionError,
+    AttributeError,
+    EOFError,
+    LookupError,
+    MemoryError,
+    NameError,
+    OSError,
+    ParseError,
+    RuntimeError,
+    StopIteration,
+    SystemExit,
+    TypeError,
+    ValueError,
+    struct.error,
+    zlib.error,
+)
+# A writer without a reader, and a reader whose pattern takes exponential time.
+_LEFT_OUT = {"svg", "wkt"}
+# Suffixes with a reader that waits for ever at the end of a file cut short, and how it opens the file.
+_WAITS = {".dat": "r", ".mdpa": "rb", ".msh": "rb", ".tec": "r"}
+_WRONG_LENGTH = re.compile(r"""point_data\["(.+)"\]|cell data '(.+)'""")
+
+
+def meshio_suffixes() -> frozenset[str]:
+    """Return the suffixes meshio has a reader for, lower case with the dot.
+
+    Returns
+    -------
+    frozenset of str
+        Such as ".msh" or ".vol.gz".
+    """
+    import meshio
+
+    table = meshio.extension_to_filetypes
+    return frozenset(suffix for suffix, formats in table.items() if not _LEFT_OUT.issuperset(formats))
+
+
+def read_meshio(path: Path) -> RawMesh:
+    """Read a mesh file of any format meshio knows.
+
+    Parameters
+    ----------
+    path : Path
+        An existing file, not empty.
+
+    Returns
+    -------
+    RawMesh
+        Its two-dimensional cells; cell sets, named physical groups and named
+        families become `RawMesh.face_sets`.
+
+    Raises
+    ------
+    FileError
+        The file is damaged, of another format, needs a package that is not
+        installed, or has no faces.
+    FieldError
+        An array has the wrong length.
+    """
+    mesh = _read(path)
+    where = str(path)
+    blocks: list[tuple[FaceKind, NDArray[Any]]] = []
+    kept: list[int] = []
+    skipped: dict[str, int] = {}
+    for index, block in enumerate(mesh.cells):
+        if block.type in _KINDS:
+            blocks.append((_KINDS[block.type], np.asarray(block.data)))
+            kept.append(index)
+        elif len(block.data) and not block.type.startswith("polyhedron") and block.dim == 2:
+            raise FileError(
+                f"has {len(block.data)} faces of type {block.type}, which cannot be read",
+                where,
+                "Export triangles, quads, polygons, or quadratic triangles and quads",
+            )
+        elif len(block.data):
+            skipped[block.type] = skipped.get(block.type, 0) + len(block.data)
+    connectivity, offsets, kinds = join_blocks(blocks)
+    face_arrays = {
+        name: np.concatenate([np.asarray(values[index]) for index in kept]) if kept else np.zeros(0)
+        for name, values in mesh.cell_data.items()
+    }
+    starts = np.concatenate([[0], np.cumsum([rows.shape[0] for _, rows in blocks])]).astype(np.int64)
+    return require_faces(
+        RawMesh(
+            source=path.name,
+            points=_three_columns(np.asarray(mesh.points), where),
+            connectivity=connectivity,
+            offsets=offsets,
+            kinds=kinds,
+            node_arrays=dict(mesh.point_data),
+            face_arrays=face_arrays,
+            face_sets=_named_by_tag(mesh, face_arrays) | _cell_sets(mesh, kept, starts),
+            skipped=skipped,
+        ),
+        where,
+    )
+
+
+def _read(path: Path) -> Any:
+    """Let meshio read a file: it prints, and it ends the process, where others raise."""
+    import meshio
+
+    reasons = []
+    for name in _formats(path):
+        said = io.StringIO()
+        try:
+            with _opened(path, name) as source, redirect_stdout(said), redirect_stderr(said):
+                mesh = meshio.read(source, file_format=name)
+        except ImportError as error:
+            raise FileError(
+                f"needs the package {error.name} to be read", str(path), f"Install it: pip install {error.name}"
+            ) from error
+        except (meshio.ReadError, *_DAMAGE) as error:
+            array = _WRONG_LENGTH.search(str(error))
+            if array:
+                raise FieldError(
+                    f"array {array[1] or array[2]!r} has the wrong length ({error})", str(path), "Export it again"
+                ) from error
+            reasons.append(_reason(error, said.getvalue()))
+            continue
+        unclosed = re.search(r"(\$\w+) not\s+closed", said.getvalue())
+        if unclosed:
+            raise FileError(
+                f"its section {unclosed[1]} does not end",
+                str(path),
+                "It was cut short or is still being written; export or copy it again",
+            )
+        return mesh
+    raise FileError(
+        f"cannot be read as a {path.suffix} file ({'; '.join(reasons)})",
+        str(path),
+        "It is damaged, cut short, or its suffix does not tell what it is",
+    )
+
+
+def _formats(path: Path) -> list[str]:
+    """Return meshio's names of the formats a file may have."""
+    import meshio
+
+    suffix = path.suffix.lower()
+    double = "".join(path.suffixes[-2:]).lower()
+    formats = meshio.extension_to_filetypes.get(double) or meshio.extension_to_filetypes[suffix]
+    if "gmsh" in formats:
+        # two formats share the suffix, and only one of them starts with a dollar sign
+        with path.open("rb") as stream:
+            dollar = stream.read(1) == b"$"
+        formats = [name for name in formats if (name == "gmsh") == dollar]
+    return list(formats)
+
+
+@contextmanager
+def _opened(path: Path, name: str) -> Iterator[Any]:
+    """Give what meshio shall read: the path, or a stream that does not end in silence."""
+    mode = _WAITS.get(path.suffix.lower())
+    if mode is None or name == "gmsh":
+        yield path
+    elif mode == "r":
+        with _EndingText(path.open("rb"), encoding="utf-8") as text:
+            yield text
+    else:
+        with _EndingBytes(io.FileIO(path)) as stream:
+            yield stream
+
+
+class _Patience:
+    """Counts reads that gave nothing, and ends them."""
+
+    def __init__(self) -> None:
+        self.left = 1000
+
+    def check(self, got: bytes | str) -> None:
+        if not got:
+            self.left -= 1
+            if self.left < 0:
+                raise EOFError("the file ends too early")
+
+
+class _EndingBytes(io.BufferedReader):
+    """A file that raises when it is read again and again after its end."""
+
+    def __init__(self, raw: io.FileIO) -> None:
+        super().__init__(raw)
+        self._patience = _Patience()
+
+    def read(self, size: int | None = -1, /) -> bytes:
+        got = super().read(size)
+        self._patience.check(got)
+        return got
+
+    def readline(self, size: int | None = -1, /) -> bytes:
+        got = super().readline(size)
+        self._patience.check(got)
+        return got
+
+
+class _EndingText(io.TextIOWrapper):
+    """The same for text."""
+
+    def __init__(self, stream: Any, encoding: str) -> None:
+        super().__init__(stream, encoding=encoding)
+        self._patience = _Patience()
+
+    def readline(self, size: int = -1, /) -> str:  # type: ignore[override]
+        got = super().readline(size)
+        self._patience.check(got)
+        return got
+
+
+def _reason(error: BaseException, said: str) -> str:
+    """Return one clause on why meshio gave up."""
+    if isinstance(error, SystemExit):
+        # what it printed before it ended the process; the last line only repeats the file name
+        lines = [line.strip() for line in said.splitlines() if line.strip() and "Couldn't read" not in line]
+        return lines[0].rstrip(".") if lines and not lines[0].startswith("Error:") else "not of this format"
+    text = str(error).splitlines()
+    return f"{type(error).__name__}: {text[0]}" if text else type(error).__name__
+
+
+def _three_columns(points: NDArray[Any], where: str) -> NDArray[Any]:
+    """Return points with three columns of floats; a plane mesh lies at z = 0."""
+    if points.ndim != 2 or points.shape[1] not in (2, 3):
+        raise FileError(
+            f"its points have shape {points.shape}", where, "Points with two or three coordinates are needed"
+        )
+    if points.dtype not in (np.float32, np.float64):
+        points = points.astype(np.float64)
+    if points.shape[1] == 2:
+        points = np.column_stack([points, np.zeros(points.shape[0], dtype=points.dtype)])
+    return points
+
+
+def _cell_sets(mesh: Any, kept: list[int], starts: NDArray[np.int64]) -> dict[str, NDArray[np.int64]]:
+    """Return cell sets as face indices; sets without faces are left out."""
+    sets = {}
+    for name, members in mesh.cell_sets.items():
+        if name.startswith("gmsh:"):  # book-keeping of the reader, not a set of cells
+            continue
+        parts = [
+            start + np.asarray(members[index], dtype=np.int64)
+            for start, index in zip(starts, kept)
+            if members[index] is not None and len(members[index])
+        ]
+        if parts:
+            sets[name] = np.concatenate(parts)
+    return sets
+
+
+def _named_by_tag(mesh: Any, face_arrays: dict[str, NDArray[Any]]) -> dict[str, NDArray[np.int64]]:
+    """Return sets that a file names through an integer tag on its cells."""
+    sets: dict[str, NDArray[np.int64]] = {}
+    physical = face_arrays.get("gmsh:physical")
+    if physical is not None:
+        for name, entry in mesh.field_data.items():
+            number, dimension = _tag_and_dimension(entry)
+            if dimension == 2:
+                sets[name] = np.flatnonzero(physical == number)
+    families = face_arrays.get("cell_tags")
+    if families is not None:
+        for number, names in getattr(mesh, "cell_tags", {}).items():
+            for name in names:
+                faces = np.flatnonzero(families == number)
+                sets[name] = np.concatenate([sets[name], faces]) if name in sets else faces
+    return {name: faces for name, faces in sets.items() if faces.size}
+
+
+def _tag_and_dimension(entry: Iterable[Any]) -> tuple[int, int]:
+    values = [int(value) for value in np.ravel(np.asarray(entry))]
+    return (values[0], values[1]) if len(values) == 2 else (0, -1)

@@ -1,0 +1,83 @@
+"""Whether a legacy VTK file in ASCII is whole: VTK itself reads a cut one without a word."""
+
+from __future__ import annotations
+
+import mmap
+import re
+from pathlib import Path
+
+from fluxmesh.errors import FileError
+
+__all__ = ["check_vtk_legacy"]
+
+# A line that starts with a letter opens a block, unless it is a value that is not finite.
+_KEYWORD = re.compile(rb"^[ \t]*(?!(?:[-+]?(?:nan|inf))\b)[A-Za-z_][^\r\n]*", re.MULTILINE | re.IGNORECASE)
+_COMPONENTS = {b"VECTORS": 3, b"NORMALS": 3, b"TENSORS": 9, b"TENSORS6": 6, b"GLOBAL_IDS": 1, b"PEDIGREE_IDS": 1}
+
+
+def check_vtk_legacy(path: Path) -> None:
+    """Check that the last block of a legacy VTK file in ASCII holds as many values as it announces.
+
+    Parameters
+    ----------
+    path : Path
+        An existing file, not empty. Binary files pass: VTK reports those itself.
+
+    Raises
+    ------
+    FileError
+        The file is no legacy VTK file, or its last block is cut short.
+    """
+    with path.open("rb") as stream, mmap.mmap(stream.fileno(), 0, access=mmap.ACCESS_READ) as data:
+        head = data[:1024].splitlines()
+        if not head[0].lstrip().lower().startswith(b"# vtk datafile"):
+            raise FileError(
+                "is no legacy VTK file: its first line is not '# vtk DataFile ...'",
+                str(path),
+                "Check that the suffix tells what the file is",
+            )
+        if len(head) < 3 or not head[2].strip().upper().startswith(b"ASCII"):
+            return
+        body = data.find(b"\n", data.find(head[2], len(head[0])))
+        blocks = list(_KEYWORD.finditer(data, body)) if body >= 0 else []
+        if not blocks:
+            return
+        lines = [block[0].split() for block in blocks]
+        needed = _values_needed(lines)
+        if needed is None:
+            return
+        held = len(data[blocks[-1].end() :].split())
+        if held < needed:
+            raise FileError(
+                f"its last block '{b' '.join(lines[-1]).decode('utf-8', 'replace')}' holds {held} values of {needed}",
+                str(path),
+                "It was cut short or is still being written; export or copy it again",
+            )
+
+
+def _values_needed(lines: list[list[bytes]]) -> int | None:
+    """Return how many values must follow the last keyword line, None when it does not say."""
+    last, word = lines[-1], lines[-1][0].upper()
+    try:
+        if word == b"POINTS":
+            return 3 * int(last[1])
+        if word in (b"POLYGONS", b"TRIANGLE_STRIPS", b"LINES", b"VERTICES", b"CELLS"):
+            return int(last[2])
+        if word == b"CELL_TYPES":
+            return int(last[1])
+        if word in (b"OFFSETS", b"CONNECTIVITY"):
+            owner = next(line for line in reversed(lines) if line[0].upper() not in (b"OFFSETS", b"CONNECTIVITY"))
+            return int(owner[1] if word == b"OFFSETS" else owner[2])
+        if word in _COMPONENTS:
+            return _COMPONENTS[word] * _tuples(lines)
+        if word == b"LOOKUP_TABLE" and lines[-2][0].upper() == b"SCALARS":
+            return _tuples(lines) * (int(lines[-2][3]) if len(lines[-2]) > 3 else 1)
+        if len(last) == 4 and last[1].isdigit() and last[2].isdigit():  # an array of a FIELD
+            return int(last[1]) * int(last[2])
+    except (ValueError, IndexError, StopIteration):
+        return None  # VTK words the error of a damaged line better
+    return None
+
+
+def _tuples(lines: list[list[bytes]]) -> int:
+    return next(int(line[1]) for line in reversed(lines) if line[0].upper() in (b"POINT_DATA", b"CELL_DATA"))
