@@ -16,6 +16,7 @@ from fluxmesh.balance.shortform import ShortForm, short_form
 from fluxmesh.balance.weight import Enclosed, Fluid, enclosed_volume, fluid_held, weight_wrench
 from fluxmesh.balance.wrench import Wrench
 from fluxmesh.integral.table import IntegralTable
+from fluxmesh.surface.surface import Role
 
 __all__ = ["Balance", "balance_table"]
 
@@ -92,6 +93,7 @@ def balance_table(table: IntegralTable, setting: Setting) -> Balance:
         weight = weight_wrench(fluid.mass, fluid.centre, setting.gravity, about)
     momentum = momentum_ledger(table, weight.force)
     angular = angular_ledger(table, weight)
+    both_ways = np.array([group.role is Role.OPEN for group in setting.groups])
     load = hardware_load(momentum, angular, setting)
     reaction = anchor_reaction(load, setting)
     data = setting.data
@@ -100,7 +102,7 @@ def balance_table(table: IntegralTable, setting: Setting) -> Balance:
         setting=setting,
         enclosed=enclosed,
         fluid=fluid,
-        mass=mass_balance(table) if setting.closed else None,
+        mass=mass_balance(table, both_ways) if setting.closed else None,
         momentum=momentum,
         angular=angular,
         complete=bool(setting.closed and data.pressure.all() and data.flux[setting.ports()].all()),

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from math import fsum
 
 import numpy as np
+from numpy.typing import NDArray
 
 from fluxmesh.integral.table import IntegralTable
 
@@ -19,7 +20,8 @@ class MassBalance:
     Attributes
     ----------
     inflow, outflow : float
-        Sums over the groups that mass enters and leaves by, both positive, kg/s.
+        What enters and what leaves, both positive, kg/s. A group counts with its
+        net flow, but an open group, which flow may pass either way, with both.
     storage : float
         Rate of the mass contained, kg/s.
     residual : float
@@ -35,23 +37,28 @@ class MassBalance:
     relative: float | None
 
 
-def mass_balance(table: IntegralTable, storage: float = 0.0) -> MassBalance:
+def mass_balance(table: IntegralTable, both_ways: NDArray[np.bool_], storage: float = 0.0) -> MassBalance:
     """Return the mass balance of a table.
 
     Parameters
     ----------
     table : IntegralTable
         The table.
+    both_ways : ndarray of bool, shape (n_groups,)
+        Groups that count with what enters and what leaves, not with their net flow.
     storage : float, optional
         Rate of the mass contained, kg/s.
     """
     flows = table.column("mass_flow")
-    entries = [*flows.tolist(), storage]
-    size = fsum(abs(entry) for entry in entries)
-    residual = fsum(entries)
+    backward = table.column("reversed_mass_flow")
+    entering = np.where(both_ways, backward, np.maximum(-flows, 0.0))
+    leaving = np.where(both_ways, flows + backward, np.maximum(flows, 0.0))
+    inflow, outflow = fsum(entering.tolist()), fsum(leaving.tolist())
+    size = inflow + outflow + abs(storage)
+    residual = fsum([*flows.tolist(), storage])
     return MassBalance(
-        inflow=-fsum(flow for flow in flows.tolist() if flow < 0),
-        outflow=fsum(flow for flow in flows.tolist() if flow > 0),
+        inflow=inflow,
+        outflow=outflow,
         storage=storage,
         residual=residual,
         relative=float(np.abs(residual)) / size if size > 0 else None,

@@ -75,18 +75,20 @@ def port_figures(table: IntegralTable, setting: Setting) -> dict[str, PortFigure
         backward = at("reversed_mass_flow", k)
         forward = flow + backward
         density = at("density_area", k)
+        # factors compare with the net flow: none where as much goes back as forth
+        through = flux and abs(flow) > 0.01 * (forward + backward)
         figures[group.name] = PortFigures(
             mean_pressure_area=_over(at("pressure_area", k), area) if pressure else None,
-            mean_pressure_mass_flow=_over(at("pressure_mass_flow", k), flow) if both else None,
+            mean_pressure_mass_flow=_over(at("pressure_mass_flow", k), flow) if pressure and through else None,
             mean_total_pressure_area=_over(at("pressure_area", k) + at("dynamic_pressure_area", k), area)
             if both
             else None,
             mean_total_pressure_mass_flow=_over(at("pressure_mass_flow", k) + at("dynamic_pressure_mass_flow", k), flow)
-            if both
+            if pressure and through
             else None,
             mean_speed=_over(abs(at("volume_flow", k)), area) if flux else None,
-            momentum_factor=_over(at("normal_momentum", k) * density, flow**2) if flux else None,
-            kinetic_energy_factor=_over(2 * at("kinetic_energy_flux", k) * density**2, flow**3) if flux else None,
+            momentum_factor=_over(at("normal_momentum", k) * density, flow**2) if through else None,
+            kinetic_energy_factor=_over(2 * at("kinetic_energy_flux", k) * density**2, flow**3) if through else None,
             reversed_share=_over(min(forward, backward), forward + backward) if flux else None,
         )
     return figures

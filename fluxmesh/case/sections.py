@@ -79,7 +79,8 @@ class FluidSection(Table):
     Attributes
     ----------
     density : Measured or None
-        In kg/m³; None where an array or each group has it.
+        In kg/m³; None where an array or each group has it. Beside an array
+        it serves for the removed head and the weight only.
     ambient_pressure : Measured or None
         In Pa, absolute.
     gravity : tuple of 3 float

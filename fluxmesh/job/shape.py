@@ -86,7 +86,7 @@ def read_shape(case: Case) -> Shape:
             mesh.offsets,
             mesh.kinds,
             owner,
-            list(case.groups),
+            tuple(case.groups),
             require_closed=case.surface.closed,
             weld_tolerance=None if case.surface.weld is None else float(case.surface.weld),
         )
@@ -124,7 +124,7 @@ def _groups_of(case: Case, mesh: RawMesh, points: NDArray[np.float64], notes: li
     wanted = {name: section.tag or (name,) for name, section in case.groups.items() if not section.rest}
     order = list(case.groups)
     if naming is not None and naming.array is not None:
-        owner = by_array(_group_array(mesh, naming.array), wanted, rest=bool(rest))
+        owner = by_array(_group_array(mesh, naming.array), wanted, rest=bool(rest), array=naming.array)
     elif naming is not None and naming.sets:
         owner = by_sets(
             mesh.face_sets,

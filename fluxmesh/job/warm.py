@@ -2,11 +2,10 @@
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
 from threading import Thread
-
-import numpy as np
 
 __all__ = ["load_kernels", "warmed"]
 
@@ -16,6 +15,8 @@ def load_kernels() -> None:
 
     The first call of a kernel loads its machine code from disk, or compiles it.
     """
+    import numpy as np
+
     from fluxmesh.field.flow import integrate_flow, still_flow
     from fluxmesh.surface.build import control_surface
 
@@ -25,9 +26,23 @@ def load_kernels() -> None:
     integrate_flow(surface, still_flow(surface), threads=1)
 
 
+def _load_without_blas() -> None:
+    # numba looks for SciPy's BLAS as it loads its array functions, and importing scipy.linalg costs
+    # more than all our kernels; none of them uses a BLAS. Only for a process of our own.
+    blocked = "scipy.linalg" not in sys.modules
+    if blocked:
+        sys.modules["scipy.linalg"] = None  # type: ignore[assignment]
+    try:
+        import numba.np.arraymath  # noqa: F401
+    finally:
+        if blocked:
+            del sys.modules["scipy.linalg"]
+
+
 @contextmanager
 def warmed() -> Iterator[None]:
     """Load the kernels on a thread beside the work inside."""
+    _load_without_blas()
     thread = Thread(target=load_kernels, name="load kernels", daemon=True)
     thread.start()
     yield

@@ -133,7 +133,7 @@ def _cost(
     away = 0.5 * (boxes[:, :2] + boxes[:, 2:]) - anchor
     if wish.any():
         turn = (away @ wish) / np.maximum(np.linalg.norm(away, axis=1) * np.linalg.norm(wish), 1e-9)
-        cost += 1.2 * (1.0 - turn)
+        cost += 2.0 * (1.0 - turn)
     leaders = np.hstack([np.broadcast_to(anchor, nearest.shape), nearest])
     if len(strokes):
         # close beside a line is almost as bad as on it: the label seems to belong to it

@@ -7,18 +7,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from fluxmesh.assess.assumptions import CAUTIONS
 from fluxmesh.report.picture_arrows import ARROW_STYLES, DrawnArrow
 from fluxmesh.report.picture_pressure import Bands
 from fluxmesh.report.picture_sheet import Sheet
 from fluxmesh.report.picture_text import engineering_vector
 from fluxmesh.report.scene import ARROW_KINDS, Scene
 
-__all__ = ["CAUTION", "ROLE_TINTS", "Row", "draw_footer", "draw_legend", "stack_rows"]
-
-CAUTION = (
-    "Steady load only: no surge, start-up, vibration, thermal growth or seismic load is in these numbers. "
-    "Local codes and a licensed engineer decide."
-)
+__all__ = ["ROLE_TINTS", "Row", "draw_footer", "draw_legend", "stack_rows"]
 
 #: Tints of groups that are no wall, from the "bright" and "light" schemes of Paul Tol, "Colour Schemes"
 #: (SRON/EPS/TN/09-002; from memory), chosen so that their grey values differ.
@@ -220,6 +216,15 @@ def _tints(scene: Scene, bands: Bands | None, window: float) -> list[tuple[str, 
 def draw_footer(sheet: Sheet, notes: Sequence[str], margin: float) -> float:
     """Draw the caution and the notes along the lower edge.
 
+    Parameters
+    ----------
+    sheet : Sheet
+        To draw on.
+    notes : sequence of str
+        Sentences, with or without a full stop.
+    margin : float
+        Clear space at either side in pixels.
+
     Returns
     -------
     float
@@ -227,10 +232,12 @@ def draw_footer(sheet: Sheet, notes: Sequence[str], margin: float) -> float:
     """
     u = sheet.unit
     room = sheet.size[0] - 2 * margin
-    lines = [line for text in notes for line in sheet.ruler.wrap(text, 16 * u, room)]
+    # notes run on in one paragraph: there may be many short ones
+    said = " ".join(f"{text.rstrip(' .')}." for text in notes)
+    lines = sheet.ruler.wrap(said, 16 * u, room)
     if len(lines) > _MOST_NOTE_LINES:
-        lines = [*lines[: _MOST_NOTE_LINES - 1], "Further notes stand in the result file."]
-    caution = sheet.ruler.wrap(CAUTION, 17 * u, room)
+        lines = [*lines[: _MOST_NOTE_LINES - 1], "… More stands in the result file."]
+    caution = sheet.ruler.wrap(" ".join(CAUTIONS), 17 * u, room)
     y = 20 * u + 22 * u * (len(lines) + len(caution))
     top = y + 16 * u
     sheet.line([(margin, top - 4 * u), (sheet.size[0] - margin, top - 4 * u)], 1.2 * u, colour="#999999")

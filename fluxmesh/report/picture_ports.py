@@ -13,6 +13,8 @@ __all__ = ["Port", "find_ports"]
 
 # A net area below this share of the whole is the sign of a group that closes on itself.
 _CLOSED = 1e-6
+# Shorter rims, as shares of the longest, are flaws of the mesh or of its thinning.
+_LEAST_RIM = 0.05
 
 
 @dataclass(frozen=True, eq=False)
@@ -96,4 +98,6 @@ def _rims(points: NDArray[np.float64], triangles: NDArray[np.int64]) -> tuple[ND
             if step == start:
                 break
         rims.append(merged[chain])
-    return tuple(rims)
+    lengths = [float(np.linalg.norm(np.diff(rim, axis=0), axis=1).sum()) for rim in rims]
+    longest = max(lengths, default=0.0)
+    return tuple(rim for rim, length in zip(rims, lengths) if length > _LEAST_RIM * longest)

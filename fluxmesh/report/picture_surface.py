@@ -26,8 +26,10 @@ _FINER = 2
 _CREASE = 38.0
 # A surface with more creases than this share of its triangles is rough, not edged: creases would blacken it.
 _MOST_CREASES = 0.08
-# Sharp edges that hang together over less than this share of the picture's half height are not drawn.
+# Lines that hang together over less than this share of the picture's half height are not drawn.
 _SPECK = 0.08
+_CREASE_GREY = (90, 90, 90)
+_OUTLINE_GREY = (64, 64, 64)
 # Sheets of translucent surface one behind another that are told apart.
 _PEELS = 6
 _PROBE_SECONDS = 60.0
@@ -116,7 +118,7 @@ def require_offscreen() -> None:
     if problem:
         raise PictureError(
             f"pictures cannot be drawn: {problem}",
-            remedy="Install an OpenGL library with a software renderer (Debian, Ubuntu: "
+            remedy="Install pyvista and matplotlib, and an OpenGL library with a software renderer (Debian, Ubuntu: "
             "apt-get install libgl1 libegl1 libgl1-mesa-dri); the numbers do not depend on it",
         )
 
@@ -224,14 +226,12 @@ def _add_layer(
     used, numbered = np.unique(triangles, return_inverse=True)
     patch = pyvista.PolyData.from_regular_faces(points[used], numbered.reshape(-1, 3))
     if layer.rim is not None:
-        rim = patch.extract_feature_edges(
-            boundary_edges=True, feature_edges=False, non_manifold_edges=False, manifold_edges=False
-        )
-        if rim.n_cells:
-            colour = [value / 255.0 for value in layer.rim]
-            plotter.add_mesh(
-                rim, color=colour, line_width=2.0 * width, lighting=False, render=False, reset_camera=False
+        rim = _without_specks(
+            patch.extract_feature_edges(
+                boundary_edges=True, feature_edges=False, non_manifold_edges=False, manifold_edges=False
             )
+        )
+        _add_lines(plotter, rim, layer.rim, 2.0 * width)
     if layer.opacity == 0.0:
         return
     look: dict[str, Any] = {"color": (layer.colours / 255.0).tolist(), "ambient": 0.55, "diffuse": 0.50}
@@ -262,12 +262,14 @@ def _add_layer(
         reset_camera=False,
         **look,
     )
-    creases = _creases(patch)
-    if creases is not None:
-        plotter.add_mesh(
-            creases, color=(0.35, 0.35, 0.35), line_width=width, lighting=False, render=False, reset_camera=False
-        )
-    plotter.add_silhouette(patch, color=(0.25, 0.25, 0.25), line_width=1.5 * width, decimate=None)
+    _add_lines(plotter, _creases(patch), _CREASE_GREY, width)
+    _add_lines(plotter, _outlines(patch), _OUTLINE_GREY, 1.5 * width)
+
+
+def _add_lines(plotter: Any, lines: Any, colour: tuple[int, int, int], width: float) -> None:
+    if lines is not None:
+        look = {"color": [value / 255.0 for value in colour], "line_width": width, "lighting": False}
+        plotter.add_mesh(lines, render=False, reset_camera=False, **look)
 
 
 def _creases(patch: Any) -> Any:
@@ -277,13 +279,35 @@ def _creases(patch: Any) -> Any:
     )
     if not 0 < edges.n_cells <= max(200.0, _MOST_CREASES * patch.n_cells):
         return None
-    # Specks are folds of single facets, as thinning makes them; a real edge goes on.
-    edges = edges.connectivity("all")
-    ends = edges.points[edges.lines.reshape(-1, 3)[:, 1:]]
-    piece = edges.cell_data["RegionId"]
+    return _without_specks(edges)
+
+
+def _outlines(patch: Any) -> Any:
+    """Return the lines where a patch turns away from the viewer, or None where there are none."""
+    import pyvista
+    from vtkmodules.vtkFiltersHybrid import vtkPolyDataSilhouette
+
+    outline = vtkPolyDataSilhouette()
+    outline.SetInputData(patch)
+    # the viewer of a parallel projection stands in one direction, whatever the point
+    outline.SetDirectionToSpecifiedVector()
+    outline.SetVector(0.0, 0.0, 1.0)
+    outline.SetEnableFeatureAngle(False)
+    outline.Update()
+    lines = pyvista.wrap(outline.GetOutput())
+    return _without_specks(lines)
+
+
+def _without_specks(lines: Any) -> Any:
+    """Return the lines that go on for a while, or None: folds of single facets, as thinning makes them, do not."""
+    if not lines.n_cells:
+        return None
+    lines = lines.connectivity("all")
+    ends = lines.points[lines.lines.reshape(-1, 3)[:, 1:]]
+    piece = lines.cell_data["RegionId"]
     reach = np.bincount(piece, weights=np.linalg.norm(ends[:, 1] - ends[:, 0], axis=1))
     kept = np.flatnonzero(reach[piece] > _SPECK)
-    return edges.extract_cells(kept) if kept.size else None
+    return lines.extract_cells(kept) if kept.size else None
 
 
 def _point_means(triangles: NDArray[np.int64], values: NDArray[np.float64]) -> NDArray[np.float64]:

@@ -142,9 +142,8 @@ def _view(scene: Scene, ports: list[Port], reach: Reach, unit: float, area: tupl
     size = float(np.linalg.norm(scene.points.max(axis=0) - scene.points.min(axis=0)))
     turned = np.linalg.norm(normals, axis=1) > 0.0
     toward = choose_direction(centroids, normals[turned], forces, size, scene.up)
-    shown = scene.points[np.unique(scene.triangles)]
-    # corners of the box would do, but would leave room for what is not there
-    some = shown[:: max(1, len(shown) // _MOST_FIT_POINTS)]
+    # the corners of the box would do, but would leave room for what is not there
+    some = scene.points[:: max(1, len(scene.points) // _MOST_FIT_POINTS)]
     markers = np.array([pulled_in(scene, marker.at) for marker in scene.markers]).reshape(-1, 3)
     axes = axes_for(toward, scene.up)
     shown = np.vstack([some, reach.tail, reach.tip, markers])
@@ -232,21 +231,22 @@ def _draw_scales(sheet: Sheet, view: View, reach: Reach, corner: tuple[float, fl
 
 def _write(content: bytes, path: Path) -> None:
     """Write a file whole or not at all."""
-    temporary = None
     try:
-        with tempfile.NamedTemporaryFile(dir=path.parent, prefix=f".{path.name}.", delete=False) as stream:
-            temporary = stream.name
-            stream.write(content)
-        # a temporary file is private to its owner; a picture is as readable as any new file
-        mask = os.umask(0)
-        os.umask(mask)
-        os.chmod(temporary, 0o666 & ~mask)
-        os.replace(temporary, path)
+        handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.", suffix=".part")
+        try:
+            with os.fdopen(handle, "wb") as stream:
+                stream.write(content)
+            # a temporary file is private to its owner; a picture is as readable as any new file
+            mask = os.umask(0)
+            os.umask(mask)
+            os.chmod(name, 0o666 & ~mask)
+            os.replace(name, path)
+        except BaseException:
+            Path(name).unlink(missing_ok=True)
+            raise
     except OSError as error:
-        if temporary is not None:
-            Path(temporary).unlink(missing_ok=True)
         raise OutputError(
-            f"the picture cannot be written ({error.strerror})",
+            f"the picture cannot be written ({error.strerror or error})",
             where=str(path),
             remedy="Choose a folder that can be written",
         ) from error

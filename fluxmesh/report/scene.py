@@ -144,6 +144,8 @@ class Scene:
         count = len(self.triangles)
         if self.points.ndim != 2 or self.points.shape[1] != 3 or self.triangles.shape != (count, 3) or not count:
             raise ValueError(f"points {self.points.shape} and triangles {self.triangles.shape} make no surface")
+        if not np.isfinite(self.points).all():
+            raise ValueError("points have coordinates that are not finite")
         if self.triangles.min() < 0 or self.triangles.max() >= len(self.points):
             raise ValueError(f"triangles use points outside 0 to {len(self.points) - 1}")
         if self.group_of_triangle.shape != (count,):
@@ -207,8 +209,18 @@ def merge_points(
     return merged, number[triangles]
 
 
+def _single(triangles: NDArray[np.int64]) -> NDArray[np.int64]:
+    """Return the first of all triangles on the same three points, whichever way they face."""
+    corners = np.sort(triangles, axis=1)
+    count = int(corners.max(initial=0)) + 1
+    if count < 2_000_000:  # three indices then fit in one 63-bit key
+        key = (corners[:, 0] * count + corners[:, 1]) * count + corners[:, 2]
+        return np.sort(np.unique(key, return_index=True)[1])
+    return np.sort(np.unique(corners, axis=0, return_index=True)[1])
+
+
 def thin(scene: Scene, most: int = 400_000) -> Scene:
-    """Coarsen a surface that has more triangles than a picture can show.
+    """Leave out unused points, and coarsen a surface that has more triangles than a picture can show.
 
     Points that share a cell of a cubic grid become one, and triangles that
     shrink to a line or a point vanish: vertex clustering after Rossignac and
@@ -227,11 +239,14 @@ def thin(scene: Scene, most: int = 400_000) -> Scene:
     Returns
     -------
     Scene
-        The scene itself when it is small enough; else a coarser one that
+        The scene itself when there is nothing to do; else a coarser one that
         remembers the range of the pressure.
     """
     if len(scene.triangles) <= most:
-        return scene
+        used = np.unique(scene.triangles)
+        if used.size == len(scene.points):
+            return scene
+        return replace(scene, points=scene.points[used], triangles=np.searchsorted(used, scene.triangles))
     # every so many triangles are enough to estimate the area
     step = max(1, len(scene.triangles) // most)
     some = scene.triangles[::step]
@@ -243,6 +258,7 @@ def thin(scene: Scene, most: int = 400_000) -> Scene:
         points, triangles = merge_points(scene.points, scene.triangles, cell)
         a, b, c = triangles.T
         kept = np.flatnonzero((a != b) & (b != c) & (c != a))
+        kept = kept[_single(triangles[kept])]
         if 0 < kept.size <= most:
             break
         cell *= 0.3 if kept.size == 0 else 1.2

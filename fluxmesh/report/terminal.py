@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
+from math import floor, log10
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -33,13 +34,15 @@ def figure(value: float | None, scale: float = 0.0) -> str:
     Returns
     -------
     str
-        As "-1234.5" or "1.2345e-07".
+        As "-1,234.5" or "1.2345e-07".
     """
     if value is None:
         return "–"
-    if abs(value) <= 1e-12 * scale:
+    if value == 0.0 or abs(value) <= 1e-12 * scale:
         return "0"
-    return f"{value:.5g}"
+    if 1e-3 <= abs(value) < 1e7:
+        return f"{value:,.{max(0, 4 - floor(log10(abs(value))))}f}"
+    return f"{value:.4e}"
 
 
 def _stack(vector: Vector, scale: float) -> str:
@@ -115,17 +118,19 @@ def _ledger(balance: Balance) -> Any:
     )
 
 
-def _wrench_row(name: str, wrench: Wrench | None) -> list[str]:
+def _wrench_row(name: str, wrench: Wrench | None, scale: tuple[float, float]) -> list[str]:
     if wrench is None:
         return [name, "not known", "", ""]
-    return [name, _row(wrench.force), figure(float(np.linalg.norm(wrench.force))), _row(wrench.moment)]
+    size = float(np.linalg.norm(wrench.force))
+    return [name, _row(wrench.force, scale[0]), figure(size, scale[0]), _row(wrench.moment, scale[1])]
 
 
 def _loads(balance: Balance) -> Any:
     load = balance.load
+    scale = (balance.momentum.size(), balance.angular.size() + balance.momentum.size())
     rows = [
-        _wrench_row("flow on hardware, from the walls", load.from_walls),
-        _wrench_row("flow on hardware, from the balance", load.from_balance),
+        _wrench_row("flow on hardware (walls)", load.from_walls, scale),
+        _wrench_row("flow on hardware (balance)", load.from_balance, scale),
     ]
     if load.from_walls is not None and load.from_balance is not None:
         gap = Wrench(
@@ -133,9 +138,9 @@ def _loads(balance: Balance) -> Any:
             load.from_walls.moment - load.from_balance.moment,
             load.from_walls.at,
         )
-        rows.append(_wrench_row("difference (walls - balance)", gap))
+        rows.append(_wrench_row("difference", gap, scale))
     if balance.reaction is not None:
-        rows.append(_wrench_row("ANCHOR ON HARDWARE (reaction)", balance.reaction.wrench))
+        rows.append(_wrench_row("ANCHOR ON HARDWARE", balance.reaction.wrench, scale))
     return _table(
         f"Loads, moments about the anchor {_row(np.asarray(balance.setting.anchor))} m",
         [

@@ -161,7 +161,7 @@ def control_surface(
         offsets,
         kinds,
         owner,
-        [g.name for g in made],
+        tuple(g.name for g in made),
         require_closed=closed,
         weld_tolerance=weld,
     )

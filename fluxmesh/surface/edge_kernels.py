@@ -28,6 +28,7 @@ __all__ = [
     "label_sheets",
     "lay_starts",
     "match_edges",
+    "merge_forests",
     "place_half_edges",
 ]
 
@@ -261,21 +262,26 @@ def join(parents: Ints, one: int, other: int) -> None:
 
 @compiled
 def match_edges(
-    part: int, starts: Ints, bounds: Ints, slots: Ints, parents: Ints, tallies: Ints, on_open_edge: Ints
+    first_point: int,
+    end_point: int,
+    starts: Ints,
+    slots: Ints,
+    forest: Ints,
+    tally: Ints,
+    on_open_edge: Ints,
 ) -> None:
     """Sort each bucket, count its edges by kind and unite the faces of two-face edges.
 
-    Part t works on the buckets ``bounds[t]`` to ``bounds[t + 1]`` with its own
-    forest ``parents[t]``. ``tallies[t]`` gets the numbers of: edges, edges with
-    an odd number of faces, two-face edges run the same way, edges of more than
-    two faces, those of them not balanced, half edges of them, and half edges
+    Works on the buckets of ``first_point`` to ``end_point``; each part of them
+    has its own forest. ``tally`` gets the numbers of: edges, edges with an odd
+    number of faces, two-face edges run the same way, edges of more than two
+    faces, those of them not balanced, half edges of them, and half edges
     without a counterpart outside two-face edges.
     """
-    forest = parents[part]
     for face in range(forest.size):
         forest[face] = face
     edges = odd = same_way = crowded = unbalanced = crowded_halves = single = 0
-    for point in range(bounds[part], bounds[part + 1]):
+    for point in range(first_point, end_point):
         bucket_end = starts[point + 1]
         _sort_bucket(slots, starts[point], bucket_end)
         first = starts[point]
@@ -302,19 +308,26 @@ def match_edges(
                     if excess:
                         unbalanced += 1
             first = end
-    row = tallies[part]
-    row[0] = edges
-    row[1] = odd
-    row[2] = same_way
-    row[3] = crowded
-    row[4] = unbalanced
-    row[5] = crowded_halves
-    row[6] = single
+    tally[0] = edges
+    tally[1] = odd
+    tally[2] = same_way
+    tally[3] = crowded
+    tally[4] = unbalanced
+    tally[5] = crowded_halves
+    tally[6] = single
 
 
 @compiled
-def label_sheets(parents: Ints, no_edges: Ints) -> int:
-    """Merge the forests into the first and turn it into labels 0, 1, ... by lowest face.
+def merge_forests(forest: Ints, other: Ints) -> None:
+    """Unite in `forest` what is united in `other`."""
+    for face in range(forest.size):
+        if other[face] != face:
+            join(forest, face, other[face])
+
+
+@compiled
+def label_sheets(forest: Ints, no_edges: Ints) -> int:
+    """Turn a forest, in place, into labels 0, 1, ... by lowest face.
 
     Faces marked in `no_edges` get the label -1.
 
@@ -323,11 +336,6 @@ def label_sheets(parents: Ints, no_edges: Ints) -> int:
     int
         Number of labels.
     """
-    forest = parents[0]
-    for part in range(1, parents.shape[0]):
-        for face in range(forest.size):
-            if parents[part, face] != face:
-                join(forest, face, parents[part, face])
     count = 0
     for face in range(forest.size):
         # a parent comes before its children, so its entry is a label already

@@ -127,11 +127,11 @@ class _Faces(NamedTuple):
 
 
 class _Matched(NamedTuple):
-    """Sorted buckets, the forests of their faces, and what was counted."""
+    """Sorted buckets, the forest of the faces, and what was counted."""
 
     starts: _Index
     slots: _Index
-    forests: _Index
+    forest: _Index
     tally: NDArray[np.int64]
     on_open_edge: NDArray[np.bool_]
     no_edges: NDArray[np.bool_]
@@ -185,13 +185,11 @@ def pair_edges(
     faces = _faces(connectivity, offsets, kinds, point_count, representative)
     matched = _match(faces, point_count)
     edges, odd, same_way, crowded, unbalanced, crowded_halves, single = (int(n) for n in matched.tally)
-    sheets = int(edge_kernels.label_sheets(matched.forests, matched.no_edges))
-    shell_of_face = matched.forests[0]
+    shell_of_face = matched.forest
+    sheets = int(edge_kernels.label_sheets(shell_of_face, matched.no_edges))
     if crowded:
         sheet_of_face = shell_of_face.copy()
-        sheets = int(
-            edge_passes.join_sheets(matched.starts, matched.slots, sheet_of_face, sheets, shell_of_face)
-        )
+        sheets = int(edge_passes.join_sheets(matched.starts, matched.slots, sheet_of_face, sheets, shell_of_face))
     listed = listing and (single or same_way or crowded)
     open_edges = np.empty((single if listed else 0, 3), np.int64)
     same_way_edges = np.empty((same_way if listed else 0, 4), np.int64)
@@ -209,8 +207,7 @@ def pair_edges(
         crowded_edges=crowded_edges,
         midside_gaps=_midside_gaps(matched, faces, listing),
         on_open_edge=matched.on_open_edge,
-        # one forest is kept, the others go
-        shell_of_face=shell_of_face.astype(np.int32, copy=matched.forests.shape[0] > 1),
+        shell_of_face=shell_of_face.astype(np.int32, copy=False),
         shell_count=sheets,
         closed=single == 0 and same_way == 0,
     )
@@ -279,22 +276,18 @@ def _faces(
             f"face {face} uses point {entries[at]}, but there are {point_count} points",
             remedy="The file is damaged or its counts are wrong; export the mesh again",
         )
-    if representative is not None and representative.shape != (point_count,):
-        raise SurfaceError(f"{representative.size} representatives for {point_count} points")
+    if representative is not None:
+        _require_representatives(representative, point_count)
     curved = kinds is not None and bool(kinds.any())
     return _Faces(
         connectivity=entries,
         offsets=starts,
         kinds=np.ascontiguousarray(kinds, np.int8) if curved else _NO_KIND,
-        representative=_NO_INDEX
-        if representative is None
-        else np.ascontiguousarray(representative, np.int64),
+        representative=_NO_INDEX if representative is None else np.ascontiguousarray(representative, np.int64),
     )
 
 
-def _require_whole_faces(
-    entries: NDArray[np.int64], starts: NDArray[np.int64], kinds: NDArray[np.int8] | None
-) -> None:
+def _require_whole_faces(entries: NDArray[np.int64], starts: NDArray[np.int64], kinds: NDArray[np.int8] | None) -> None:
     if entries.size == 0:
         raise SurfaceError("the surface has no faces", remedy="Give a mesh of triangles, quads or polygons")
     if starts.size == 0:
@@ -322,6 +315,15 @@ def _require_whole_faces(
             )
 
 
+def _require_representatives(representative: NDArray[np.int64], point_count: int) -> None:
+    if representative.shape != (point_count,):
+        raise SurfaceError(f"{representative.size} representatives for {point_count} points")
+    low, high = int(representative.min()), int(representative.max())
+    if low < 0 or high >= point_count:
+        bad = low if low < 0 else high
+        raise SurfaceError(f"a point is represented by point {bad}, but there are {point_count} points")
+
+
 def _match(faces: _Faces, point_count: int) -> _Matched:
     """Fill the buckets by a counting sort and match within each."""
     parts = min(_MOST_PARTS, thread_count(), faces.face_count)
@@ -329,13 +331,18 @@ def _match(faces: _Faces, point_count: int) -> _Matched:
     # parts of equal work: buckets of low points are fuller when points are numbered at random
     bounds = np.searchsorted(starts, np.linspace(0, int(starts[-1]), parts + 1).astype(starts.dtype))
     bounds[0], bounds[-1] = 0, point_count
-    forests = np.empty((parts, faces.face_count), starts.dtype)
+    forests = [np.empty(faces.face_count, starts.dtype) for _ in range(parts)]
     tallies = np.zeros((parts, 7), np.int64)
     on_open_edge = np.zeros(point_count, np.bool_)
     run_parts(
-        lambda p: edge_kernels.match_edges(p, starts, bounds, slots, forests, tallies, on_open_edge), parts
+        lambda p: edge_kernels.match_edges(
+            bounds[p], bounds[p + 1], starts, slots, forests[p], tallies[p], on_open_edge
+        ),
+        parts,
     )
-    return _Matched(starts, slots, forests, tallies.sum(axis=0), on_open_edge, no_edges)
+    for other in forests[1:]:
+        edge_kernels.merge_forests(forests[0], other)
+    return _Matched(starts, slots, forests[0], tallies.sum(axis=0), on_open_edge, no_edges)
 
 
 def _fill_buckets(faces: _Faces, point_count: int, parts: int) -> tuple[_Index, _Index, NDArray[np.bool_]]:

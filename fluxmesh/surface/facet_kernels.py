@@ -58,20 +58,6 @@ def _facet(face: int, which: int, connectivity: Array, offsets: Array, kinds: Ar
 
 
 @compiled
-def _face_extent(face: int, points: Array, connectivity: Array, offsets: Array, kinds: Array) -> tuple[float, float]:
-    """Return the area of the facets of a face and its longest facet side squared."""
-    area = longest = 0.0
-    for which in range(_facet_count(face, offsets, kinds)):
-        i, j, k = _facet(face, which, connectivity, offsets, kinds)
-        ux, uy, uz = points[j, 0] - points[i, 0], points[j, 1] - points[i, 1], points[j, 2] - points[i, 2]
-        vx, vy, vz = points[k, 0] - points[i, 0], points[k, 1] - points[i, 1], points[k, 2] - points[i, 2]
-        cx, cy, cz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
-        area += 0.5 * np.sqrt(cx * cx + cy * cy + cz * cz)
-        longest = max(longest, ux * ux + uy * uy + uz * uz, vx * vx + vy * vy + vz * vz)
-    return area, longest
-
-
-@compiled
 def measure_shells(
     part: int,
     points: Array,
@@ -109,37 +95,59 @@ def measure_shells(
     """
     parts = sums.shape[0]
     faces = shell_of_face.size
-    for face in range(faces * part // parts, faces * (part + 1) // parts):
-        area, longest = _face_extent(face, points, connectivity, offsets, kinds)
-        if area <= thinness * longest:
-            flat[face] = True
-        shell = shell_of_face[face]
-        if shell < 0:
-            continue
-        ox, oy, oz = origins[shell, 0], origins[shell, 1], origins[shell, 2]
-        volume = 0.0
-        for which in range(_facet_count(face, offsets, kinds)):
-            corners = _facet(face, which, connectivity, offsets, kinds)
-            for corner in corners:
-                for axis in range(3):
-                    if points[corner, axis] < lows[part, shell, axis]:
-                        lows[part, shell, axis] = points[corner, axis]
-                    if points[corner, axis] > highs[part, shell, axis]:
-                        highs[part, shell, axis] = points[corner, axis]
-            i, j, k = corners
-            ax, ay, az = points[i, 0] - ox, points[i, 1] - oy, points[i, 2] - oz
-            bx, by, bz = points[j, 0] - ox, points[j, 1] - oy, points[j, 2] - oz
-            cx, cy, cz = points[k, 0] - ox, points[k, 1] - oy, points[k, 2] - oz
-            volume += ax * (by * cz - bz * cy) + ay * (bz * cx - bx * cz) + az * (bx * cy - by * cx)
-        sums[part, shell, 0] += volume / 6.0
-        sums[part, shell, 1] += area
+    first, end = faces * part // parts, faces * (part + 1) // parts
+    begin = first
+    while begin < end:
+        # a run of faces of one shell is summed in registers
+        stop = begin + 1
+        while stop < end and shell_of_face[stop] == shell_of_face[begin]:
+            stop += 1
+        shell = shell_of_face[begin]
+        origin = origins[max(shell, 0)]
+        x0 = y0 = z0 = np.inf
+        x1 = y1 = z1 = -np.inf
+        volume = total = 0.0
+        for face in range(begin, stop):
+            area = longest = 0.0
+            for which in range(_facet_count(face, offsets, kinds)):
+                i, j, k = _facet(face, which, connectivity, offsets, kinds)
+                ax, ay, az = points[i, 0], points[i, 1], points[i, 2]
+                bx, by, bz = points[j, 0], points[j, 1], points[j, 2]
+                cx, cy, cz = points[k, 0], points[k, 1], points[k, 2]
+                x0, y0, z0 = min(x0, ax, bx, cx), min(y0, ay, by, cy), min(z0, az, bz, cz)
+                x1, y1, z1 = max(x1, ax, bx, cx), max(y1, ay, by, cy), max(z1, az, bz, cz)
+                ux, uy, uz, vx, vy, vz = bx - ax, by - ay, bz - az, cx - ax, cy - ay, cz - az
+                nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
+                area += 0.5 * np.sqrt(nx * nx + ny * ny + nz * nz)
+                longest = max(longest, ux * ux + uy * uy + uz * uz, vx * vx + vy * vy + vz * vz)
+                volume += (ax - origin[0]) * nx + (ay - origin[1]) * ny + (az - origin[2]) * nz
+            total += area
+            if area <= thinness * longest:
+                flat[face] = True
+        if shell >= 0:
+            _add_run(lows[part, shell], highs[part, shell], x0, y0, z0, x1, y1, z1)
+            sums[part, shell, 0] += volume / 6.0
+            sums[part, shell, 1] += total
+        begin = stop
+
+
+@compiled
+def _add_run(low: Array, high: Array, x0: float, y0: float, z0: float, x1: float, y1: float, z1: float) -> None:
+    low[0], low[1], low[2] = min(low[0], x0), min(low[1], y0), min(low[2], z0)
+    high[0], high[1], high[2] = max(high[0], x1), max(high[1], y1), max(high[2], z1)
 
 
 @compiled
 def face_areas(points: Array, connectivity: Array, offsets: Array, kinds: Array, areas: Array) -> None:
     """Write the area of every face, m²."""
     for face in range(areas.size):
-        areas[face] = _face_extent(face, points, connectivity, offsets, kinds)[0]
+        areas[face] = 0.0
+        for which in range(_facet_count(face, offsets, kinds)):
+            i, j, k = _facet(face, which, connectivity, offsets, kinds)
+            ux, uy, uz = points[j, 0] - points[i, 0], points[j, 1] - points[i, 1], points[j, 2] - points[i, 2]
+            vx, vy, vz = points[k, 0] - points[i, 0], points[k, 1] - points[i, 1], points[k, 2] - points[i, 2]
+            nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
+            areas[face] += 0.5 * np.sqrt(nx * nx + ny * ny + nz * nz)
 
 
 @compiled

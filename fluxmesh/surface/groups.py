@@ -87,16 +87,14 @@ def by_array(
         owner = _by_text(tags, _claims(wanted, str))
     else:
         owner = _by_number(tags, _claims(wanted, lambda tag: _whole(tag, tags, called)), called)
-    found = np.zeros(len(wanted) + 1, dtype=bool)
-    found[owner] = True  # -1 falls on the last place
     for index, (name, group_tags) in enumerate(wanted.items()):
-        if not found[index]:
+        if not (owner == index).any():
             listed = ", ".join(repr(tag) for tag in group_tags) or "nothing"
             raise GroupError(
                 f"group '{name}' has no faces: no face has the tag {listed} in {called}, which holds {_tally(tags)}",
                 remedy=f"Name one of these with tag = ...{_near_text(tags, group_tags)}",
             )
-    if found[-1] and not rest:
+    if not rest and owner.min(initial=0) < 0:
         left = tags[owner < 0]
         raise GroupError(
             f"{counted(left.size, 'face')} in no group: {called} has {_tally(left)} there",
@@ -363,7 +361,7 @@ def _by_number(tags: NDArray[Any], claims: dict[int, int], called: str) -> NDArr
     for start in range(0, tags.size, _BLOCK):
         block = _whole_block(tags, start, called)
         if in_table:
-            owner[start : start + _BLOCK] = table[np.clip(block, low, high) - low]
+            owner[start : start + _BLOCK] = table.take(block - low, mode="clip")
         else:
             at = np.minimum(np.searchsorted(known, block), known.size - 1)
             owner[start : start + _BLOCK] = np.where(known[at] == block, groups[at], -1)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -77,7 +78,7 @@ def find_holes(
     points: NDArray[np.float64],
     open_edges: NDArray[np.int64],
     group_of_face: NDArray[np.int32],
-    group_names: tuple[str, ...],
+    group_names: Sequence[str],
     *,
     most: int = 5,
 ) -> Openings:
@@ -91,7 +92,7 @@ def find_holes(
         Half edges without a counterpart, ``[from, to, face]``; at least one.
     group_of_face : ndarray, shape (n_faces,), int32
         Index into `group_names`.
-    group_names : tuple of str
+    group_names : sequence of str
         Names of the groups.
     most : int, optional
         How many holes are described singly.

@@ -6,6 +6,7 @@ is an error that says where.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -81,7 +82,7 @@ def mend(
     offsets: NDArray[np.int64] | None,
     kinds: NDArray[np.int8] | None,
     group_of_face: NDArray[np.int32],
-    group_names: tuple[str, ...],
+    group_names: Sequence[str],
     *,
     require_closed: bool = True,
     weld_tolerance: float | None = None,
@@ -109,7 +110,7 @@ def mend(
         straight-edged.
     group_of_face : ndarray, shape (n_faces,), int32
         Index into `group_names`.
-    group_names : tuple of str
+    group_names : sequence of str
         Names of the groups, for messages.
     require_closed : bool, optional
         False accepts an open surface and notes its holes.

@@ -90,6 +90,8 @@ def planar_regions(
     label = np.arange(faces.size)
     settled = np.zeros(faces.size, dtype=bool)
     for share in _NARROWER:
+        if settled.all():
+            break
         # faces of a chain that is bent as a whole are tried again with a narrower angle
         open_ = ~settled[pairs[:, 0]] & ~settled[pairs[:, 1]]
         cosine = np.einsum("ij,ij->i", *(geometry.normals[faces[pairs[open_, side]]] for side in (0, 1)))

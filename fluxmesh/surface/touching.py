@@ -43,7 +43,9 @@ def edge_neighbours(
     tails = connectivity[entries]
     following = np.arange(1, starts[-1] + 1)
     following[starts[1:] - 1] = starts[:-1]
-    used, tails = np.unique(tails, return_inverse=True)
+    used = np.zeros(points.shape[0], dtype=bool)
+    used[tails] = True
+    tails = (np.cumsum(used) - 1)[tails]
     place = points[used].astype(np.float64)
     tails = _same_places(place)[tails]
     owner = np.repeat(np.arange(faces.size), np.diff(starts))
@@ -90,7 +92,7 @@ def _pair_edges(
     """Return pairs of owners of equal edges, and which edges have no partner."""
     low, high = np.minimum(tails, heads), np.maximum(tails, heads)
     keys = low * (int(high.max(initial=0)) + 1) + high
-    order = np.argsort(keys, kind="stable")
+    order = np.argsort(keys)
     equal = keys[order[1:]] == keys[order[:-1]]
     pairs = np.column_stack([owner[order[:-1]], owner[order[1:]]])[equal]
     alone = np.ones(keys.size, dtype=bool)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from copy import copy
 from typing import Any
 
@@ -31,7 +32,7 @@ class Workpiece:
         Kind of each face; None when none is curved.
     group_of_face : ndarray, shape (n_faces,), int32
         Index into `group_names`.
-    group_names : tuple of str
+    group_names : sequence of str
         Names of the groups.
 
     Attributes
@@ -53,7 +54,7 @@ class Workpiece:
         offsets: NDArray[np.int64] | None,
         kinds: NDArray[np.int8] | None,
         group_of_face: NDArray[np.int32],
-        group_names: tuple[str, ...],
+        group_names: Sequence[str],
     ) -> None:
         """Take the arrays as they are; they are replaced, never written to."""
         self.points = points
@@ -75,7 +76,7 @@ class Workpiece:
         offsets: NDArray[Any] | None,
         kinds: NDArray[Any] | None,
         group_of_face: NDArray[Any],
-        group_names: tuple[str, ...],
+        group_names: Sequence[str],
     ) -> Workpiece:
         """Return a workpiece after checking what the pairing of edges does not.
 
