@@ -14,11 +14,11 @@ from fluxmesh.errors import SurfaceError
 from fluxmesh.surface import edges
 from fluxmesh.surface.edges import EdgePairing, pair_edges, relate_faces
 from fluxmesh.surface.surface import FaceKind
-from tests import solids
+from tests import small_meshes as meshes
 
 
 def pair(points, faces, **options) -> EdgePairing:
-    connectivity, offsets = solids.flat(faces)
+    connectivity, offsets = meshes.flat(faces)
     return pair_edges(connectivity, offsets, None, len(points), **options)
 
 
@@ -128,7 +128,7 @@ def test_triangles_on_joined_points_agree_with_a_dictionary(faces, order, count)
 @settings(max_examples=200, deadline=None)
 @given(any_faces(sizes=(3, 4)))
 def test_relation_of_faces_leaves_no_two_the_same_way(faces):
-    connectivity, offsets = solids.flat(faces)
+    connectivity, offsets = meshes.flat(faces)
     relation = relate_faces(connectivity, offsets, None, 7)
     turned = [face[::-1] if turn else face for face, turn in zip(faces, relation.against)]
     left = [e for e, on in half_edges(turned).items() if len(on) == 2 and on[0][1] == on[1][1]]
@@ -147,7 +147,7 @@ def test_relation_of_faces_leaves_no_two_the_same_way(faces):
             assert any(a[1] ^ turn[a[0]] == b[1] ^ turn[b[0]] for a, b in pairs)
 
 
-@pytest.mark.parametrize("shape", [solids.cube(), solids.cube_quads(), solids.tetrahedron(), solids.sphere()])
+@pytest.mark.parametrize("shape", [meshes.cube(), meshes.cube_quads(), meshes.tetrahedron(), meshes.sphere()])
 def test_closed_shapes(shape):
     points, faces = shape
     pairing = pair(points, faces)
@@ -163,7 +163,7 @@ def test_closed_shapes(shape):
 
 
 def test_missing_face_leaves_its_edges_backward():
-    points, faces = solids.cube_quads()
+    points, faces = meshes.cube_quads()
     pairing = pair(points, faces[1:])
     gone = [tuple(edge) for edge in zip(np.roll(faces[0], -1).tolist(), faces[0].tolist())]
     assert not pairing.closed
@@ -174,7 +174,7 @@ def test_missing_face_leaves_its_edges_backward():
 
 
 def test_flipped_face_runs_the_same_way_as_its_neighbours():
-    points, faces = solids.cube_quads()
+    points, faces = meshes.cube_quads()
     faces[2] = faces[2, ::-1]
     pairing = pair(points, faces)
     assert (pairing.closed, pairing.sealed, pairing.consistent) == (False, True, False)
@@ -184,7 +184,7 @@ def test_flipped_face_runs_the_same_way_as_its_neighbours():
 
 
 def test_shells_are_numbered_by_their_first_face():
-    points, faces = solids.together(solids.cube(), solids.tetrahedron(), solids.sphere(1))
+    points, faces = meshes.together(meshes.cube(), meshes.tetrahedron(), meshes.sphere(1))
     order = np.random.default_rng(3).permutation(len(faces))
     owner = np.repeat([0, 1, 2], [12, 4, 80])[order]
     pairing = pair(points, faces[order])
@@ -194,7 +194,7 @@ def test_shells_are_numbered_by_their_first_face():
 
 
 def test_cubes_that_share_an_edge_are_two_shells():
-    points, faces = solids.together(solids.cube_quads(), solids.cube_quads(origin=(1, 1, 0)))
+    points, faces = meshes.together(meshes.cube_quads(), meshes.cube_quads(origin=(1, 1, 0)))
     # points 3 and 7 of the first stand where 0 and 4 of the second do
     representative = np.arange(16)
     representative[[8, 12]] = [3, 7]
@@ -206,7 +206,7 @@ def test_cubes_that_share_an_edge_are_two_shells():
 
 
 def test_inner_wall_makes_an_odd_crowded_edge():
-    points, faces = solids.together(solids.cube_quads(), solids.cube_quads(origin=(1, 0, 0)))
+    points, faces = meshes.together(meshes.cube_quads(), meshes.cube_quads(origin=(1, 0, 0)))
     representative = np.arange(16)
     representative[[8, 10, 12, 14]] = [1, 3, 5, 7]
     # the second cube without the face it has in common with the first
@@ -231,7 +231,7 @@ def test_bucket_of_a_point_with_a_thousand_faces():
 
 
 def test_repeated_points_of_a_face_do_not_open_the_surface():
-    points, faces = solids.cube_quads()
+    points, faces = meshes.cube_quads()
     # a flat triangle (0, 0, 1) between two faces, and a quad with a doubled corner
     degenerate = [*faces.tolist(), [0, 0, 1]]
     pairing = pair(points, degenerate)
@@ -249,7 +249,7 @@ def lists_of(pairing: EdgePairing) -> list[list[object]]:
 @pytest.mark.parametrize("kind", ["triangles", "polygons"])
 def test_any_number_of_threads_gives_the_same(monkeypatch, kind):
     rng = np.random.default_rng(5)
-    points, faces = solids.together(solids.sphere(3), solids.cube(), solids.cube())
+    points, faces = meshes.together(meshes.sphere(3), meshes.cube(), meshes.cube())
     faces = faces[rng.permutation(len(faces))][:-40]
     faces[::9] = faces[::9, ::-1]
     faces = np.concatenate([faces, faces[:30]])
@@ -264,7 +264,7 @@ def test_any_number_of_threads_gives_the_same(monkeypatch, kind):
 
 
 def test_wide_work_arrays_give_the_same(monkeypatch):
-    points, faces = solids.sphere(2)
+    points, faces = meshes.sphere(2)
     faces = np.concatenate([faces[3:], faces[40:50, ::-1], faces[60:61]])
     narrow = lists_of(pair(points, faces))
     monkeypatch.setattr(edges, "_NARROW_LIMIT", 0)
@@ -272,7 +272,7 @@ def test_wide_work_arrays_give_the_same(monkeypatch):
 
 
 def test_without_listing_only_the_lists_are_empty():
-    points, faces = solids.cube()
+    points, faces = meshes.cube()
     faces[3] = faces[3, ::-1]
     faces = np.concatenate([faces[1:], faces[5:6]])
     full, short = vars(pair(points, faces)), vars(pair(points, faces, listing=False))
@@ -288,15 +288,15 @@ def test_without_listing_only_the_lists_are_empty():
 @pytest.mark.parametrize(
     ("kind", "shape"),
     [
-        (FaceKind.TRIANGLE6, solids.tetrahedron()),
-        (FaceKind.QUAD8, solids.cube_quads()),
-        (FaceKind.QUAD9, solids.cube_quads()),
+        (FaceKind.TRIANGLE6, meshes.tetrahedron()),
+        (FaceKind.QUAD8, meshes.cube_quads()),
+        (FaceKind.QUAD9, meshes.cube_quads()),
     ],
 )
 def test_curved_faces_pair_by_corners_and_tell_midside_gaps(kind, shape):
-    points, rows, kinds = solids.curved(*shape, kind)
+    points, rows, kinds = meshes.curved(*shape, kind)
     corners = shape[1].shape[1]
-    connectivity, offsets = solids.flat(rows)
+    connectivity, offsets = meshes.flat(rows)
     pairing = pair_edges(connectivity, offsets, kinds, len(points))
     assert pairing.closed
     assert pairing.edge_count == rows.shape[0] * corners // 2
@@ -318,10 +318,10 @@ def test_curved_faces_pair_by_corners_and_tell_midside_gaps(kind, shape):
 
 
 def test_curved_beside_straight_is_a_gap():
-    points, faces = solids.tetrahedron()
-    more, rows, _ = solids.curved(points, faces, FaceKind.TRIANGLE6)
+    points, faces = meshes.tetrahedron()
+    more, rows, _ = meshes.curved(points, faces, FaceKind.TRIANGLE6)
     mixed = [rows[0].tolist(), *faces[1:].tolist()]
-    connectivity, offsets = solids.flat(mixed)
+    connectivity, offsets = meshes.flat(mixed)
     pairing = pair_edges(connectivity, offsets, np.array([1, 0, 0, 0], np.int8), len(more))
     assert pairing.closed
     assert len(pairing.midside_gaps) == 3

@@ -16,13 +16,13 @@ from fluxmesh.surface.mend import Mended, mend
 from fluxmesh.surface.orient import turn_faces
 from fluxmesh.surface.surface import FaceKind
 from fluxmesh.surface.weld import join_equal_points
-from tests import solids
+from tests import small_meshes as meshes
 
 NAMES = ("shell", "core", "cap")
 
 
 def mended(points, faces, groups=None, *, kinds=None, names=NAMES, **options) -> Mended:
-    connectivity, offsets = solids.flat(faces)
+    connectivity, offsets = meshes.flat(faces)
     group_of_face = np.zeros(len(faces), np.int32) if groups is None else np.asarray(groups, np.int32)
     before = [None if a is None else a.copy() for a in (points, connectivity, offsets, group_of_face)]
     result = mend(points, connectivity, offsets, kinds, group_of_face, names, **options)
@@ -41,7 +41,8 @@ def triangles(result: Mended) -> trimesh.Trimesh:
         rows = np.array([[p[0], p[i], p[i + 1]] for p in parts for i in range(1, len(p) - 1)])
     if result.representative is not None:
         rows = result.representative[rows]
-    return trimesh.Trimesh(result.points, rows, process=False)
+    # far from the origin its volume would lose digits
+    return trimesh.Trimesh(result.points - result.points.mean(axis=0), rows, process=False)
 
 
 def assert_closed(result: Mended, volume: float) -> None:
@@ -54,11 +55,11 @@ def assert_closed(result: Mended, volume: float) -> None:
 
 
 SHAPES = {
-    "cube": solids.cube(),
-    "quads": solids.cube_quads(),
-    "tetrahedron": solids.tetrahedron(),
-    "sphere": solids.sphere(2),
-    "far": solids.sphere(1, 0.3, (2e5, -3e5, 4e5)),
+    "cube": meshes.cube(),
+    "quads": meshes.cube_quads(),
+    "tetrahedron": meshes.tetrahedron(),
+    "sphere": meshes.sphere(2),
+    "far": meshes.sphere(1, 0.3, (2e5, -3e5, 4e5)),
 }
 
 
@@ -96,7 +97,7 @@ def test_inward_surface_is_turned(name):
 @pytest.mark.parametrize("name", SHAPES)
 def test_soup_is_joined_but_keeps_its_own_points(name):
     points, faces = SHAPES[name]
-    own_points, own_faces = solids.soup(points, faces)
+    own_points, own_faces = meshes.soup(points, faces)
     own_points = np.where(own_points == 0, -0.0, own_points)
     own_points[::2] += 0.0  # -0.0 and 0.0 are the same place
     result = mended(own_points, own_faces)
@@ -110,8 +111,8 @@ def test_soup_is_joined_but_keeps_its_own_points(name):
 
 
 def test_split_along_the_rim_of_a_group_is_joined():
-    points, faces = solids.cube_quads()
-    cap = faces[1]
+    points, faces = meshes.cube_quads()
+    cap = faces[1].copy()
     split = np.concatenate([points, points[cap]])
     faces[1] = np.arange(8, 12)
     result = mended(split, faces, [0, 2, 0, 0, 0, 0])
@@ -123,7 +124,7 @@ def test_split_along_the_rim_of_a_group_is_joined():
 
 def test_closed_surface_with_coincident_points_stays_untouched():
     # two cubes that touch along an edge, and points within the tolerance of each other
-    points, faces = solids.together(solids.cube(), solids.cube(origin=(1, 1, 0)))
+    points, faces = meshes.together(meshes.cube(), meshes.cube(origin=(1, 1, 0)))
     points[8] += 1e-9
     result = mended(points, faces)
     assert result.closed
@@ -135,22 +136,22 @@ def test_closed_surface_with_coincident_points_stays_untouched():
 
 def test_only_points_on_open_edges_are_joined():
     # a closed tetrahedron stands with one point exactly on a corner of a cube in pieces
-    points, faces = solids.together(solids.soup(*solids.cube()), solids.tetrahedron())
-    result = mended(points - [0, 0, 0], faces)
+    points, faces = meshes.together(meshes.soup(*meshes.cube()), meshes.tetrahedron())
+    result = mended(points, faces)
     assert result.closed
     assert result.representative is not None
     assert (result.representative[36:] == np.arange(36, 40)).all()
 
 
 def near_halves(gap: float) -> tuple[np.ndarray, np.ndarray]:
-    points, faces = solids.cube()
-    return solids.together((points, faces[:6]), (points + [gap, 0, 0], faces[6:]))
+    points, faces = meshes.cube()
+    return meshes.together((points, faces[:6]), (points + np.array([gap, 0, 0]), faces[6:]))
 
 
 def test_near_points_are_joined_when_that_closes():
     points, faces = near_halves(1e-7)
     result = mended(points, faces)
-    assert_closed(result, 1.0 + 1e-7 * 0)
+    assert_closed(result, 1.0)
     assert result.points is not points
     (note,) = result.notes
     assert note.startswith("16 points at 8 coincident places joined to close the surface (within 1.732e-06 m")
@@ -176,7 +177,7 @@ def test_joining_that_does_not_close_is_not_done():
 
 
 def test_a_wide_tolerance_never_folds_a_face():
-    points, faces = solids.sphere(2)
+    points, faces = meshes.sphere(2)
     with pytest.raises(SurfaceError, match=r"3 open edges"):
         mended(points, faces[1:], weld_tolerance=0.4)
     with pytest.raises(SurfaceError, match=r"the tolerance for joining points is -1 m"):
@@ -211,7 +212,7 @@ def test_holes_are_measured_and_the_largest_comes_first():
     rows = np.concatenate(
         [
             np.stack([np.arange(n), around, np.arange(n)], 1),
-            np.stack([around, np.arange(n), np.arange(n)], 1) + [n, n, 0],
+            np.stack([around, np.arange(n), np.arange(n)], 1) + np.array([n, n, 0]),
         ]
     )
     found = find_holes(points, rows, np.repeat([1, 0], 32).astype(np.int32), NAMES)
@@ -227,7 +228,7 @@ def test_holes_are_measured_and_the_largest_comes_first():
 
 
 def test_hanging_point_is_named_as_a_slit():
-    points, faces = solids.cube_quads()
+    points, faces = meshes.cube_quads()
     points = np.concatenate([points, [[0.5, 0, 0]]])
     rows = [face.tolist() for face in faces]
     rows[0] = [0, 2, 3, 1, 8]  # the edge 0-1 has a point here and none in the other face
@@ -252,7 +253,7 @@ def test_faces_that_run_against_their_neighbours_are_turned(flipped):
 
 def test_majority_goes_by_area():
     # 7 of 12 triangles run inward, but they are slivers on the side walls of a flat box
-    points, faces = solids.cube()
+    points, faces = meshes.cube()
     points = points * [1, 1, 0.01]
     sides = np.flatnonzero(np.ptp(points[faces][:, :, 2], axis=1) > 0)[:7]
     faces[sides] = faces[sides, ::-1]
@@ -262,7 +263,7 @@ def test_majority_goes_by_area():
 
 
 def test_open_pieces_are_oriented_too():
-    points, faces = solids.sphere(2)
+    points, faces = meshes.sphere(2)
     piece = faces[40:]
     wrong = piece.copy()
     wrong[10] = wrong[10, ::-1]
@@ -277,11 +278,11 @@ def test_open_pieces_are_oriented_too():
 
 @pytest.mark.parametrize("require_closed", [True, False])
 def test_one_sided_surfaces_are_refused(require_closed):
-    points, faces = solids.moebius()
+    points, faces = meshes.moebius()
     message = r"24 faces that hang together cannot be given one orientation: .* one-sided surface"
     with pytest.raises(SurfaceError, match=message):
         mended(points, faces, require_closed=require_closed)
-    grid = solids.twisted_grid(8, 6)
+    grid = meshes.twisted_grid(8, 6)
     cloud = np.random.default_rng(0).normal(size=(48, 3))
     with pytest.raises(SurfaceError, match=r"96 faces that hang together .*Möbius band, through face \d+ at \("):
         mended(cloud, grid, require_closed=require_closed)
@@ -294,7 +295,7 @@ def test_copies_in_one_group_are_dropped(opposite, joined):
     copies = faces[[3, 200]]
     all_faces = np.concatenate([faces, copies[:, ::-1] if opposite else np.roll(copies, 1, axis=1)])
     if not joined:
-        points, all_faces = solids.soup(points, all_faces)
+        points, all_faces = meshes.soup(points, all_faces)
     result = mended(points, all_faces)
     assert_closed(result, volume_of(*SHAPES["sphere"]))
     assert result.kept_faces.tolist() == list(range(320))
@@ -310,7 +311,7 @@ def test_whole_surface_given_twice():
     assert result.group_of_face.shape == (6,)
     # with points of its own the second is a closed shell on the first
     with pytest.raises(SurfaceError, match=r"shell 2 \(6 faces\) lies on shell 1 \(6 faces\): the same faces"):
-        mended(*solids.together((points, faces), (points, faces)))
+        mended(*meshes.together((points, faces), (points, faces)))
 
 
 def test_a_face_in_two_groups_is_refused():
@@ -323,7 +324,7 @@ def test_a_face_in_two_groups_is_refused():
 
 def baffle() -> tuple[np.ndarray, np.ndarray]:
     """Return a cube round a square wall given from both sides."""
-    points, faces = solids.cube(4.0)
+    points, faces = meshes.cube(4.0)
     wall = np.array([[1, 1, 1], [2, 1, 1], [2, 2, 1], [1, 2, 1]], float)
     front = np.array([[8, 9, 10], [8, 10, 11]])
     return np.concatenate([points, wall]), np.concatenate([faces, front, front[:, ::-1]])
@@ -333,35 +334,40 @@ def test_wall_of_no_thickness_is_kept():
     points, faces = baffle()
     result = mended(points, faces, [0] * 12 + [1, 1, 2, 2])
     assert result.closed
-    assert result.shells == 2
+    assert result.shells == 1
     assert (result.kept_faces, result.turned) == (None, None)
-    # its inner edge is crowded, its rim is not
     assert result.notes == (
         "4 faces lie on another with the opposite normal (a thin wall of no thickness) and were kept",
-        "shell 2 (4 faces, groups 'core' and 'cap') encloses no volume",
+        "4 faces form shells that enclose no volume: 2 in 'core', 2 in 'cap'",
     )
 
 
 def test_full_width_wall_between_two_halves():
     # faces of two cubes that share a wall, each with its own side of it: crowded edges, all balanced
-    points, faces = solids.together(solids.cube_quads(), solids.cube_quads(origin=(1, 0, 0)))
+    points, faces = meshes.together(meshes.cube_quads(), meshes.cube_quads(origin=(1, 0, 0)))
     merged = join_equal_points(points, np.ones(16, bool))[faces]
     result = mended(points, merged)
     assert result.closed
-    assert result.shells == 2
+    assert result.shells == 1
+    assert result.notes == (
+        "2 faces lie on another with the opposite normal (a thin wall of no thickness) and were kept",
+    )
     assert_allclose(triangles(result).volume, 2.0, rtol=1e-14)
     inner = np.delete(merged, 5, axis=0)
-    with pytest.raises(SurfaceError, match=r"4 edges join more than two faces \(the first is at .*group 'shell'\)"):
-        mended(points, inner)
+    # with one cube inside out the two sides of the wall run the same way
+    inverted = np.concatenate([merged[:6], merged[6:, ::-1]])
+    for broken in (inner, inverted):
+        with pytest.raises(SurfaceError, match=r"4 edges join more than two faces \(the first is at .*group 'shell'\)"):
+            mended(points, broken)
 
 
 @pytest.mark.parametrize("inward", [True, False])
 def test_cavities_point_out_of_the_fluid(inward):
-    points, faces = solids.together(solids.cube(), solids.sphere(2, 0.2, (0.5, 0.5, 0.5)))
+    points, faces = meshes.together(meshes.cube(), meshes.sphere(2, 0.2, (0.5, 0.5, 0.5)))
     if inward:
         faces[12:] = faces[12:, ::-1]
     result = mended(points, faces, [0] * 12 + [1] * 320)
-    assert_closed(result, 1.0 - volume_of(*solids.sphere(2, 0.2)))
+    assert_closed(result, 1.0 - volume_of(*meshes.sphere(2, 0.2)))
     assert result.shells == 2
     expected = () if inward else ("shell 2 (a cavity: 320 faces, group 'core') was turned",)
     assert result.notes == expected
@@ -370,34 +376,34 @@ def test_cavities_point_out_of_the_fluid(inward):
 @pytest.mark.parametrize("seed", range(4))
 def test_nested_and_separate_shells(seed):
     rng = np.random.default_rng(seed)
-    parts = [solids.sphere(1, r) for r in (4, 3, 2, 1)]
-    parts += [solids.cube(0.4, (-0.2, -0.2, 2.3)), solids.cube(1, (9, 0, 0)), solids.sphere(1, 0.1, (9.5, 0.5, 0.5))]
+    parts = [meshes.sphere(1, r) for r in (4, 3, 2, 1)]
+    parts += [meshes.cube(0.4, (-0.2, -0.2, 2.3)), meshes.cube(1, (9, 0, 0)), meshes.sphere(1, 0.1, (9.5, 0.5, 0.5))]
     signs = [1, -1, 1, -1, 1, 1, -1]
     # the small cube stands between the spheres of 3 and 2: within a body, so it holds fluid
     expected = sum(sign * volume_of(*part) for sign, part in zip(signs, parts))
     order = rng.permutation(len(parts))
     turned = [(points, faces[:, ::-1] if rng.random() < 0.5 else faces) for points, faces in (parts[i] for i in order)]
-    result = mended(*solids.together(*turned))
+    result = mended(*meshes.together(*turned))
     assert result.shells == 7
     assert_closed(result, expected)
 
 
 def test_a_thousand_bodies_in_a_large_shell():
     grid = np.stack(np.meshgrid(*[np.linspace(-0.5, 0.5, 10)] * 3), -1).reshape(-1, 3)
-    body = solids.sphere(1, 0.02)
-    outer = solids.sphere(6, 1.0)
+    body = meshes.sphere(1, 0.02)
+    outer = meshes.sphere(6, 1.0)
     assert len(outer[1]) > shells._LARGE_SHELL
     parts = [outer, *((body[0] + place, body[1]) for place in grid)]
-    result = mended(*solids.together(*parts))
+    result = mended(*meshes.together(*parts))
     assert result.shells == 1001
     assert_closed(result, volume_of(*outer) - 1000 * volume_of(*body))
     assert len(result.notes) == 6
     assert result.notes[0] == "shell 2 (a cavity: 80 faces, group 'shell') was turned"
-    assert result.notes[5] == "the same holds for 995 more shells"
+    assert result.notes[5] == "995 more shells were turned"
 
 
 def test_lumped_winding_number_agrees_with_the_exact_one(monkeypatch):
-    points, faces = solids.sphere(4, 1.0)
+    points, faces = meshes.sphere(4, 1.0)
     points = points * [1, 2, 0.5]
     facets = shells.Facets(points, faces.ravel(), np.empty(0, np.int64), np.empty(0, np.int8))
     rng = np.random.default_rng(2)
@@ -418,7 +424,7 @@ def test_lumped_winding_number_agrees_with_the_exact_one(monkeypatch):
 
 
 def test_faces_without_area_are_told_and_kept():
-    points, faces = solids.cube_quads()
+    points, faces = meshes.cube_quads()
     points = np.concatenate([points, [[0.5, 0, 0]]])
     rows = [face.tolist() for face in faces]
     rows[0] = [0, 2, 3, 1, 8]
@@ -431,9 +437,9 @@ def test_faces_without_area_are_told_and_kept():
 
 @pytest.mark.parametrize("kind", [FaceKind.TRIANGLE6, FaceKind.QUAD8, FaceKind.QUAD9])
 def test_curved_faces_are_turned_with_their_midsides(kind):
-    shape = solids.tetrahedron() if kind is FaceKind.TRIANGLE6 else solids.cube_quads()
-    points, rows, kinds = solids.curved(*shape, kind)
-    connectivity, offsets = solids.flat(rows)
+    shape = meshes.tetrahedron() if kind is FaceKind.TRIANGLE6 else meshes.cube_quads()
+    points, rows, kinds = meshes.curved(*shape, kind)
+    connectivity, offsets = meshes.flat(rows)
     turned = turn_faces(connectivity, offsets, kinds, np.ones(len(rows), bool)).reshape(rows.shape)
     size = shape[1].shape[1]
     assert (turned[:, 0] == rows[:, 0]).all()
@@ -449,9 +455,9 @@ def test_curved_faces_are_turned_with_their_midsides(kind):
 
 @pytest.mark.parametrize("kind", [FaceKind.TRIANGLE6, FaceKind.QUAD8, FaceKind.QUAD9])
 def test_curved_soup_is_joined_with_its_midsides(kind):
-    shape = solids.tetrahedron() if kind is FaceKind.TRIANGLE6 else solids.cube_quads()
-    points, rows, kinds = solids.curved(*shape, kind)
-    own_points, own_rows = solids.soup(points, rows)
+    shape = meshes.tetrahedron() if kind is FaceKind.TRIANGLE6 else meshes.cube_quads()
+    points, rows, kinds = meshes.curved(*shape, kind)
+    own_points, own_rows = meshes.soup(points, rows)
     result = mended(own_points, own_rows, kinds=kinds)
     assert result.closed
     assert len(result.notes) == 1
@@ -481,7 +487,7 @@ def test_curved_soup_is_joined_with_its_midsides(kind):
     ],
 )
 def test_arrays_that_do_not_fit(change, error, message):
-    points, faces = solids.tetrahedron()
+    points, faces = meshes.tetrahedron()
     arguments = {
         "points": points,
         "connectivity": faces.ravel(),
@@ -498,7 +504,7 @@ def test_arrays_that_do_not_fit(change, error, message):
 def disturbed_solid(draw):
     """Draw a closed solid with points and faces renumbered, rows rotated and some of them turned."""
     name = draw(st.sampled_from(["cube", "quads", "tetrahedron", "ball"]))
-    points, faces = solids.sphere(1) if name == "ball" else SHAPES[name]
+    points, faces = meshes.sphere(1) if name == "ball" else SHAPES[name]
     rng = np.random.default_rng(draw(st.integers(0, 2**32 - 1)))
     shape = np.eye(3) + rng.uniform(-0.3, 0.3, (3, 3))
     points = points @ shape
@@ -512,7 +518,7 @@ def disturbed_solid(draw):
     turned = rng.random(len(rows)) < draw(st.sampled_from([0, 0.1, 0.5, 0.9, 1]))
     rows[turned] = rows[turned, ::-1]
     if draw(st.booleans()):
-        moved, rows = solids.soup(moved, rows)
+        moved, rows = meshes.soup(moved, rows)
     return moved, rows, volume
 
 

@@ -17,6 +17,8 @@ __all__ = ["Bands", "draw_bar", "pressure_bands"]
 _FEWEST_BANDS = 7
 # Share of the area at either end that may fall off the bar where a few faces stretch its range.
 _TAIL = 0.002
+# Pressures below this many pascals everywhere are zero; finer steps would run out of exponents.
+_NOTHING = 1e-100
 _UNITS = ((1e9, "GPa"), (1e6, "MPa"), (1e3, "kPa"), (1.0, "Pa"), (1e-3, "mPa"))
 
 
@@ -68,9 +70,9 @@ def pressure_bands(scene: Scene) -> Bands:
     if high - low >= 0.5 * (most - least):
         low, high = least, most
     magnitude = max(abs(low), abs(high))
-    if high - low <= 1e-9 * magnitude or magnitude == 0.0:
+    if high - low <= 1e-9 * magnitude or magnitude < _NOTHING:
         # one pressure everywhere: a band around it
-        step = nice_step(0.02 * magnitude) if magnitude > 0.0 else 1.0
+        step = nice_step(0.02 * magnitude) if magnitude >= _NOTHING else 1.0
         first = math.floor(low / step)
         numbers = np.arange(first, first + 2)
     else:

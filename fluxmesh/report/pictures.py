@@ -89,6 +89,8 @@ def _draw(scene: Scene, path: Path, size: tuple[int, int], with_pressure: bool) 
             f"a picture of {size[0]} by {size[1]} pixels has no room for its legend",
             remedy="Ask for 800 by 600 or more",
         )
+    if not path.parent.is_dir():
+        raise OutputError("there is no such folder", where=str(path.parent), remedy="Make it first, or choose another")
     require_offscreen()
     scene = thin(scene)
     bands = pressure_bands(scene) if with_pressure else None

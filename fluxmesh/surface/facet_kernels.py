@@ -58,6 +58,14 @@ def _facet(face: int, which: int, connectivity: Array, offsets: Array, kinds: Ar
 
 
 @compiled
+def _normal(points: Array, i: int, j: int, k: int) -> tuple[float, float, float]:
+    """Return twice the area vector of a facet, m²."""
+    ux, uy, uz = points[j, 0] - points[i, 0], points[j, 1] - points[i, 1], points[j, 2] - points[i, 2]
+    vx, vy, vz = points[k, 0] - points[i, 0], points[k, 1] - points[i, 1], points[k, 2] - points[i, 2]
+    return uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
+
+
+@compiled
 def measure_shells(
     part: int,
     points: Array,
@@ -144,9 +152,7 @@ def face_areas(points: Array, connectivity: Array, offsets: Array, kinds: Array,
         areas[face] = 0.0
         for which in range(_facet_count(face, offsets, kinds)):
             i, j, k = _facet(face, which, connectivity, offsets, kinds)
-            ux, uy, uz = points[j, 0] - points[i, 0], points[j, 1] - points[i, 1], points[j, 2] - points[i, 2]
-            vx, vy, vz = points[k, 0] - points[i, 0], points[k, 1] - points[i, 1], points[k, 2] - points[i, 2]
-            nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
+            nx, ny, nz = _normal(points, i, j, k)
             areas[face] += 0.5 * np.sqrt(nx * nx + ny * ny + nz * nz)
 
 
@@ -207,14 +213,12 @@ def face_centre(face: int, points: Array, connectivity: Array, offsets: Array, k
     best = -1.0
     for which in range(_facet_count(face, offsets, kinds)):
         i, j, k = _facet(face, which, connectivity, offsets, kinds)
-        u, v = points[j] - points[i], points[k] - points[i]
-        size = np.sum(
-            (u[1] * v[2] - u[2] * v[1]) ** 2 + (u[2] * v[0] - u[0] * v[2]) ** 2 + (u[0] * v[1] - u[1] * v[0]) ** 2
-        )
+        nx, ny, nz = _normal(points, i, j, k)
+        size = nx * nx + ny * ny + nz * nz
         if size > best:
             best = size
             for axis in range(3):
-                centre[axis] = points[i, axis] + (u[axis] + v[axis]) / 3.0
+                centre[axis] = (points[i, axis] + points[j, axis] + points[k, axis]) / 3.0
 
 
 @compiled
@@ -302,25 +306,30 @@ def cell_sums(
 ) -> None:
     """Write area vector, m², centre, m, and radius, m, of the faces in each cell."""
     for cell in range(sums.shape[0]):
+        row = sums[cell]
         weight = 0.0
-        for place in range(starts[cell], starts[cell + 1]):
+        first, end = starts[cell], starts[cell + 1]
+        for place in range(first, end):
             for which in range(_facet_count(order[place], offsets, kinds)):
                 i, j, k = _facet(order[place], which, connectivity, offsets, kinds)
-                u, v = points[j] - points[i], points[k] - points[i]
-                vector = 0.5 * np.cross(u, v)
-                area = np.sqrt(np.sum(vector * vector))
+                nx, ny, nz = _normal(points, i, j, k)
+                area = np.sqrt(nx * nx + ny * ny + nz * nz)
                 weight += area
-                sums[cell, :3] += vector
-                sums[cell, 3:6] += area * (points[i] + points[j] + points[k]) / 3.0
-        if weight > 0.0:
-            sums[cell, 3:6] /= weight
-        else:
-            sums[cell, 3:6] = points[_facet(order[starts[cell]], 0, connectivity, offsets, kinds)[0]]
-        for place in range(starts[cell], starts[cell + 1]):
+                row[0] += 0.5 * nx
+                row[1] += 0.5 * ny
+                row[2] += 0.5 * nz
+                for axis in range(3):
+                    row[3 + axis] += area * (points[i, axis] + points[j, axis] + points[k, axis]) / 3.0
+        some = _facet(order[first], 0, connectivity, offsets, kinds)[0]
+        for axis in range(3):
+            row[3 + axis] = row[3 + axis] / weight if weight > 0.0 else points[some, axis]
+        furthest = 0.0
+        for place in range(first, end):
             for which in range(_facet_count(order[place], offsets, kinds)):
                 for corner in _facet(order[place], which, connectivity, offsets, kinds):
-                    reach = points[corner] - sums[cell, 3:6]
-                    sums[cell, 6] = max(sums[cell, 6], np.sqrt(np.sum(reach * reach)))
+                    x, y, z = points[corner, 0] - row[3], points[corner, 1] - row[4], points[corner, 2] - row[5]
+                    furthest = max(furthest, x * x + y * y + z * z)
+        row[6] = np.sqrt(furthest)
 
 
 @compiled

@@ -58,7 +58,8 @@ class Mended:
         Every edge is run as often forward as backward; normals then point
         out of the fluid.
     shells : int
-        Number of shells.
+        Number of shells that enclose volume; of an open surface, number of
+        pieces that hang together over edges.
     notes : tuple of str
         What was mended or noticed, one sentence each without a full stop.
     """
@@ -159,8 +160,11 @@ def _mend(piece: Workpiece, require_closed: bool, weld_tolerance: float | None) 
         flat = int(np.count_nonzero(measures.flat_faces))
         verb = "has" if flat == 1 else "have"
         piece.note(f"{counted(flat, 'face')} {verb} no area: {piece.groups_text(measures.flat_faces)}")
+    shells = pairing.shell_count
     if pairing.closed:
         _point_outward(piece, pairing, measures)
+        # thin walls of no thickness may be many shells by their edges, but bound nothing
+        shells = int(np.count_nonzero(~measures.empty)) or shells
     else:
         _tell_open(piece, require_closed)
     _tell_midside_gaps(piece, pairing)
@@ -174,7 +178,7 @@ def _mend(piece: Workpiece, require_closed: bool, weld_tolerance: float | None) 
         turned=piece.turned,
         representative=piece.representative,
         closed=pairing.closed,
-        shells=pairing.shell_count,
+        shells=shells,
         notes=tuple(piece.notes),
     )
 
@@ -292,29 +296,26 @@ def _point_outward(piece: Workpiece, pairing: EdgePairing, measures: ShellMeasur
         if (wrong | empty).all():
             piece.note("all faces pointed into the fluid and were turned")
         else:
-            _tell_shells(piece, shells, wrong, "was turned", depths)
+            _tell_turned(piece, shells, np.flatnonzero(wrong).tolist(), depths)
     if empty.all():
         piece.note("the surface encloses no volume")
     elif empty.any():
-        _tell_shells(piece, shells, empty, "encloses no volume")
+        mask = empty[shells] & (shells >= 0)
+        count = counted(int(np.count_nonzero(mask)), "face")
+        piece.note(f"{count} form shells that enclose no volume: {piece.groups_text(mask)}")
 
 
-def _tell_shells(
-    piece: Workpiece,
-    shell_of_face: NDArray[np.int32],
-    chosen: NDArray[np.bool_],
-    what: str,
-    depths: NDArray[np.int64] | None = None,
+def _tell_turned(
+    piece: Workpiece, shell_of_face: NDArray[np.int32], turned: list[int], depths: NDArray[np.int64]
 ) -> None:
-    numbers = np.flatnonzero(chosen)
-    for shell in numbers[:_MOST_SHELLS_TOLD].tolist():
+    for shell in turned[:_MOST_SHELLS_TOLD]:
         mask = shell_of_face == shell
-        place = "" if depths is None else "a cavity: " if depths[shell] % 2 else "around fluid: "
+        place = "a cavity: " if depths[shell] % 2 else "around fluid: "
         faces = counted(int(np.count_nonzero(mask)), "face")
-        piece.note(f"shell {shell + 1} ({place}{faces}, {names_text(piece.groups_of(mask))}) {what}")
-    if numbers.size > _MOST_SHELLS_TOLD:
-        more = numbers.size - _MOST_SHELLS_TOLD
-        piece.note(f"the same holds for {counted(more, 'more shell')}: it {what}")
+        piece.note(f"shell {shell + 1} ({place}{faces}, {names_text(piece.groups_of(mask))}) was turned")
+    more = len(turned) - _MOST_SHELLS_TOLD
+    if more > 0:
+        piece.note(f"{counted(more, 'more shell')} {'was' if more == 1 else 'were'} turned")
 
 
 def _tell_open(piece: Workpiece, require_closed: bool) -> None:
