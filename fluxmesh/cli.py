@@ -67,6 +67,7 @@ def balance(
         title=done.title,
         surface=done.surface,
         assumptions=done.assumptions,
+        comparison=done.comparison,
     )
     typer.echo(f"\nWritten: {folder / 'balance.json'}")
     if pictures:

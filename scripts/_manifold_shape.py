@@ -224,7 +224,7 @@ def _map_junction(local: Array) -> Array:
     hump_y = JUNCTION_BULGE * ((1 - x**2) * (1 - z**2)) ** 2
     hump_z = JUNCTION_BULGE * ((1 - x**2) * (1 - y**2)) ** 2 * (1 - z) / 2  # the top is open
     stretched = np.stack([x, y * (1 + hump_y), z - hump_z], axis=1)
-    return JUNCTION_CENTRE + JUNCTION_HALF_SIZE * stretched
+    return np.asarray(JUNCTION_CENTRE + JUNCTION_HALF_SIZE * stretched)
 
 
 def _map_arm(arm: Arm, depth: Array, a: Array, b: Array) -> Array:

@@ -178,7 +178,8 @@ def any_polyhedron(seed: int) -> Solid:
     rng = np.random.default_rng(seed)
     kind = seed % 5
     if kind == 0:
-        solid = hull(rng.standard_normal((int(rng.integers(5, 20)), 3)))
+        sites = rng.standard_normal((int(rng.integers(5, 20)), 3))
+        solid = hull(sites / np.linalg.norm(sites, axis=1)[:, None] * [1.5, 1.0, 0.8])  # every point is a corner
     elif kind == 1:
         ball = sphere(1)
         solid = replace(ball, points=ball.points * rng.uniform(0.4, 1.6, len(ball.points))[:, None])
@@ -272,6 +273,23 @@ def torus(major: float, minor: float, around: int, across: int, *, quadratic: in
         columns += [at(1, 0), at(2, 1), at(1, 2), at(0, 1), at(1, 1)]
     rows = np.column_stack(columns[: quadratic or 4])
     return one_group(points, rows, curved=bool(quadratic))
+
+
+def ring(inner: float, outer: float, height: float, around: int) -> Solid:
+    """Return the space between two cylinders about z, in triangles: groups ``inner``, ``outer``, ``low``, ``high``."""
+    angle = np.arange(around) * (2 * np.pi / around)
+    section = ((inner, 0.0), (outer, 0.0), (outer, height), (inner, height))
+    points = np.concatenate(
+        [np.column_stack([r * np.cos(angle), r * np.sin(angle), 0 * angle + z]) for r, z in section]
+    )
+    here = np.arange(around)
+    there = np.roll(here, -1)
+    faces = []
+    for k in range(4):
+        a, b = k * around, (k + 1) % 4 * around
+        faces += list(np.column_stack([here + a, there + a, there + b, here + b]))
+    names = ("low", "outer", "high", "inner")
+    return in_triangles(Solid(points, faces, {name: here + k * around for k, name in enumerate(names)}))
 
 
 # ---- pipes ----------------------------------------------------------------------------------

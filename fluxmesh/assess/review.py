@@ -141,10 +141,13 @@ def _leak_doubts(balance: Balance) -> list[Doubt]:
     flows = balance.table.column("mass_flow")
     ports = balance.setting.ports()
     through = float(np.abs(flows[ports]).sum()) / 2
+    # what the speeds along the surface could carry: a leak far below it is round-off
+    table = balance.table
+    sweep = float((table.column("density_area") * table.column("speed_area") / table.column("area").clip(1e-300)).sum())
     doubts = []
     for k, group in enumerate(balance.setting.groups):
         leak = abs(float(flows[k]))
-        if not ports[k] and leak > _LEAK * through and leak > 0:
+        if not ports[k] and leak > _LEAK * through and leak > 1e-6 * sweep:
             share = f"{leak / through:.2%} of the flow through the ports" if through > 0 else f"{leak:.4g} kg/s"
             doubts.append(
                 Doubt(

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
 
 from fluxmesh.assess.assumptions import assumptions_of
+from fluxmesh.assess.comparison import Comparison, compare_reported
 from fluxmesh.assess.verdict import Verdict, verdict_of
 from fluxmesh.balance.balance import Balance, balance_table
 from fluxmesh.balance.setting import GroupData, Hardware, Setting
@@ -43,6 +44,8 @@ class Outcome:
         Whether the numbers close.
     assumptions : tuple of str
         What the figures assume.
+    comparison : Comparison or None
+        A reported load beside ours.
     """
 
     title: str
@@ -51,11 +54,17 @@ class Outcome:
     balance: Balance
     verdict: Verdict
     assumptions: tuple[str, ...]
+    comparison: Comparison | None = None
 
     def data(self) -> dict[str, Any]:
         """Return everything as plain data, the content of ``balance.json``."""
         return result_data(
-            self.balance, self.verdict, title=self.title, assumptions=self.assumptions, notes=self.surface.notes
+            self.balance,
+            self.verdict,
+            title=self.title,
+            assumptions=self.assumptions,
+            notes=self.surface.notes,
+            comparison=self.comparison,
         )
 
 
@@ -171,7 +180,7 @@ def run_case(case: Case, *, threads: int | None = None) -> Outcome:
     """
     shape = read_shape(case)
     flow = lay_case(case, shape)
-    return balance_of(
+    done = balance_of(
         shape.surface,
         flow,
         anchor=case.anchor.at,
@@ -180,4 +189,10 @@ def run_case(case: Case, *, threads: int | None = None) -> Outcome:
         encloses_hardware=case.closure.encloses_hardware,
         title=case.title or case.name,
         threads=threads,
+    )
+    asked = case.reported
+    if asked is None:
+        return done
+    return replace(
+        done, comparison=compare_reported(done.balance, force=asked.force, moment=asked.moment, on=asked.on)
     )

@@ -12,6 +12,7 @@ from typing import Any, Final
 import numpy as np
 
 from fluxmesh.assess.assumptions import CAUTIONS
+from fluxmesh.assess.comparison import Comparison
 from fluxmesh.assess.verdict import Verdict, relative_without_mean_pressure
 from fluxmesh.balance.balance import Balance
 from fluxmesh.balance.momentum import Ledger
@@ -104,6 +105,7 @@ def result_data(
     title: str,
     assumptions: tuple[str, ...],
     notes: tuple[str, ...] = (),
+    comparison: Comparison | None = None,
 ) -> dict[str, Any]:
     """Return a balance as plain data, SI units throughout.
 
@@ -119,6 +121,8 @@ def result_data(
         What the figures assume.
     notes : tuple of str, optional
         What was mended or noticed on the way.
+    comparison : Comparison, optional
+        A reported load beside ours.
 
     Returns
     -------
@@ -180,6 +184,8 @@ def result_data(
         data["short_form"] = asdict(balance.short_form)
     if balance.release is not None:
         data["release"] = asdict(balance.release)
+    if comparison is not None:
+        data["reported"] = asdict(comparison)
     plain: dict[str, Any] = _plain(data)
     return plain
 

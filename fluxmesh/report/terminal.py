@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from fluxmesh.assess.assumptions import CAUTIONS
+from fluxmesh.assess.comparison import Comparison
 from fluxmesh.assess.verdict import Verdict
 from fluxmesh.balance.balance import Balance
 from fluxmesh.balance.wrench import Vector, Wrench
@@ -54,6 +55,10 @@ def _row(vector: Vector, scale: float | None = None) -> str:
     return "(" + ", ".join(figure(float(x), size) for x in vector) + ")"
 
 
+def _place(point: Vector) -> str:
+    return "(" + ", ".join(f"{x if abs(x) > 1e-12 else 0.0:.5g}" for x in point.tolist()) + ")"
+
+
 def _table(title: str, columns: Sequence[tuple[str, str]], rows: Iterable[Sequence[str]]) -> Any:
     from rich import box
     from rich.table import Table
@@ -75,7 +80,7 @@ def _surface_lines(balance: Balance, surface: ControlSurface) -> list[str]:
     lines = [f"Surface: {surface.face_count:,} faces, {state}{shells}, area {figure(area)} m²"]
     if balance.enclosed is not None:
         lines.append(
-            f"Volume inside: {figure(balance.enclosed.volume)} m³, centroid {_row(balance.enclosed.centroid, area**0.5)} m"
+            f"Volume inside: {figure(balance.enclosed.volume)} m³, centroid {_place(balance.enclosed.centroid)} m"
         )
     if balance.fluid is not None:
         lines.append(f"Fluid held: {figure(balance.fluid.mass)} kg, weight {_row(balance.fluid.weight)} N")
@@ -142,7 +147,7 @@ def _loads(balance: Balance) -> Any:
     if balance.reaction is not None:
         rows.append(_wrench_row("ANCHOR ON HARDWARE", balance.reaction.wrench, scale))
     return _table(
-        f"Loads, moments about the anchor {_row(np.asarray(balance.setting.anchor))} m",
+        f"Loads, moments about the anchor {_place(np.asarray(balance.setting.anchor))} m",
         [
             ("who on whom", "left"),
             ("force (x, y, z), N", "right"),
@@ -162,7 +167,7 @@ def _reaction_lines(balance: Balance) -> list[str]:
     reach = float(np.linalg.norm(reaction.wrench.moment)) + balance.angular.size() + balance.momentum.size()
     basis = "from the momentum balance" if reaction.basis == "balance" else "from the walls"
     lines = [
-        f"The reaction rests on the load {basis}; it acts along the line through {_row(axis.point, 1.0)} m, "
+        f"The reaction rests on the load {basis}; it acts along the line through {_place(axis.point)} m, "
         f"direction {_row(axis.direction, 1e3)}, with a couple of {figure(axis.couple, reach)} N m about it."
     ]
     release = balance.release
@@ -182,6 +187,25 @@ def _reaction_lines(balance: Balance) -> list[str]:
             f"Short form, {short.inlet} to {short.outlet}: mass flow × (V2 - V1) = {figure(short.mass_flow)} kg/s × "
             f"{_row(short.outlet_velocity - short.inlet_velocity)} m/s = {_row(short.rate)} N; "
             f"the shape of the profiles adds {_row(short.profile_effect, effect + rate)} N{share}."
+        )
+    return lines
+
+
+def _comparison_lines(comparison: Comparison | None) -> list[str]:
+    if comparison is None:
+        return []
+    lines = []
+    on = ", ".join(comparison.on)
+    if comparison.reported_force is not None:
+        apart = "" if comparison.relative is None else f", {comparison.relative:.2%} apart"
+        lines.append(
+            f"Reported by the solver on {on}: force {_row(comparison.reported_force)} N, here {_row(comparison.force)} N"
+            f"{apart} (compared, not used)."
+        )
+    if comparison.reported_moment is not None:
+        lines.append(
+            f"Reported by the solver on {on}: moment {_row(comparison.reported_moment)} N m, "
+            f"here {_row(comparison.moment)} N m (compared, not used)."
         )
     return lines
 
@@ -231,6 +255,7 @@ def print_balance(
     title: str,
     surface: ControlSurface,
     assumptions: Sequence[str],
+    comparison: Comparison | None = None,
 ) -> None:
     """Print a balance, its loads beside their assumptions, and its verdict.
 
@@ -248,6 +273,8 @@ def print_balance(
         The surface, with notes on what was mended.
     assumptions : sequence of str
         What the figures assume.
+    comparison : Comparison, optional
+        A reported load beside ours.
     """
     from rich.text import Text
 
@@ -262,7 +289,7 @@ def print_balance(
     if balance.ports:
         console.print(_ports(balance))
     console.print(_loads(balance))
-    for line in _reaction_lines(balance):
+    for line in [*_reaction_lines(balance), *_comparison_lines(comparison)]:
         say(line)
     say("Assumed: " + "; ".join(text[0].lower() + text[1:] for text in assumptions) + ".")
     for caution in CAUTIONS:

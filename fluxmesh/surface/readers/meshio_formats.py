@@ -49,10 +49,14 @@ _DAMAGE = (
     struct.error,
     zlib.error,
 )
-# A writer without a reader, and a reader whose pattern takes exponential time.
-_LEFT_OUT = {"svg", "wkt"}
-# Suffixes with a reader that waits for ever at the end of a file cut short, and how it opens the file.
-_WAITS = {".dat": "r", ".mdpa": "rb", ".msh": "rb", ".tec": "r"}
+# A writer without a reader, a reader of volumes alone, and one whose pattern takes exponential time.
+_LEFT_OUT = {"svg", "tetgen", "wkt"}
+# Readers that take an open file. Many of them read on for ever at the end of one that was cut short,
+# so they get a file that does not let them.
+_TEXT = frozenset(".avs .bdf .dat .dato .fem .inp .mesh .nas .off .post .su2 .tec .vol".split())
+_BINARY = frozenset([".mdpa", ".msh"])
+# What it says aloud of files that it reads all the same, though they were cut short.
+_CUT = re.compile(r"(\$\w+)\s+not\s+closed|but\s+found\s+only")
 _WRONG_LENGTH = re.compile(r"""point_data\["(.+)"\]|cell data '(.+)'""")
 
 
@@ -98,8 +102,8 @@ def read_meshio(path: Path) -> RawMesh:
     kept: list[int] = []
     skipped: dict[str, int] = {}
     for index, block in enumerate(mesh.cells):
-        if block.type in _KINDS:
-            blocks.append((_KINDS[block.type], np.asarray(block.data)))
+        if block.type in _KINDS and len(block.data):
+            blocks.append((_KINDS[block.type], _rows(block, where)))
             kept.append(index)
         elif len(block.data) and not block.type.startswith("polyhedron") and block.dim == 2:
             raise FileError(
@@ -153,10 +157,10 @@ def _read(path: Path) -> Any:
                 ) from error
             reasons.append(_reason(error, said.getvalue()))
             continue
-        unclosed = re.search(r"(\$\w+) not\s+closed", said.getvalue())
-        if unclosed:
+        cut = _CUT.search(said.getvalue())
+        if cut:
             raise FileError(
-                f"its section {unclosed[1]} does not end",
+                f"its section {cut[1]} does not end" if cut[1] else "has fewer markers than it announces",
                 str(path),
                 "It was cut short or is still being written; export or copy it again",
             )
@@ -186,15 +190,15 @@ def _formats(path: Path) -> list[str]:
 @contextmanager
 def _opened(path: Path, name: str) -> Iterator[Any]:
     """Give what meshio shall read: the path, or a stream that does not end in silence."""
-    mode = _WAITS.get(path.suffix.lower())
-    if mode is None or name == "gmsh":
-        yield path
-    elif mode == "r":
-        with _EndingText(path.open("rb"), encoding="utf-8") as text:
+    suffix = path.suffix.lower()
+    if suffix in _TEXT:
+        with _EndingText(path.open("rb"), encoding="utf-8", errors="replace") as text:
             yield text
-    else:
+    elif suffix in _BINARY and name != "gmsh":  # which takes a path only
         with _EndingBytes(io.FileIO(path)) as stream:
             yield stream
+    else:
+        yield path
 
 
 class _Patience:
@@ -231,8 +235,8 @@ class _EndingBytes(io.BufferedReader):
 class _EndingText(io.TextIOWrapper):
     """The same for text."""
 
-    def __init__(self, stream: Any, encoding: str) -> None:
-        super().__init__(stream, encoding=encoding)
+    def __init__(self, stream: Any, encoding: str, errors: str) -> None:
+        super().__init__(stream, encoding=encoding, errors=errors)
         self._patience = _Patience()
 
     def readline(self, size: int = -1, /) -> str:  # type: ignore[override]
@@ -249,6 +253,18 @@ def _reason(error: BaseException, said: str) -> str:
         return lines[0].rstrip(".") if lines and not lines[0].startswith("Error:") else "not of this format"
     text = str(error).splitlines()
     return f"{type(error).__name__}: {text[0]}" if text else type(error).__name__
+
+
+def _rows(block: Any, where: str) -> NDArray[Any]:
+    """Return the point indices of a block, a row a face."""
+    rows = np.asarray(block.data)
+    if rows.ndim != 2 or rows.shape[1] < 3 or rows.dtype.kind not in "iu":
+        raise FileError(
+            f"has a block of {block.type} faces whose point indices make no table (shape {rows.shape})",
+            where,
+            "The file is damaged or cut short; export it again",
+        )
+    return rows
 
 
 def _three_columns(points: NDArray[Any], where: str) -> NDArray[Any]:

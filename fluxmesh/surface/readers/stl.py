@@ -113,6 +113,13 @@ def _corners(body: bytes, name: str, path: Path) -> NDArray[np.float64]:
     from trimesh.exchange.stl import load_stl_ascii
 
     facets = len(re.findall(rb"\bendfacet\b", body, re.IGNORECASE))
+    count = len(re.findall(rb"\bvertex\b", body, re.IGNORECASE))
+    if count != 3 * facets:
+        raise FileError(
+            f"its solid {name!r} has {facets} facets but {count} vertices where {3 * facets} are needed",
+            str(path),
+            "The file is damaged; export it again",
+        )
     try:
         with warnings.catch_warnings():
             # NumPy before 2.3 only warns when it stops at a word that is no number
@@ -125,9 +132,9 @@ def _corners(body: bytes, name: str, path: Path) -> NDArray[np.float64]:
             "The file is damaged; export it again",
         ) from error
     corners: NDArray[np.float64] = loaded.get("vertices", np.zeros((0, 3)))
-    if len(corners) != 3 * facets:
+    if len(corners) != count:
         raise FileError(
-            f"its solid {name!r} has {facets} facets but {len(corners)} vertices where {3 * facets} are needed",
+            f"its solid {name!r} has {count} vertices, of which {len(corners)} have three numbers",
             str(path),
             "The file is damaged; export it again",
         )

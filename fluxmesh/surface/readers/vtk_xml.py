@@ -41,6 +41,7 @@ class _Layout:
     compressed: bool
     encoding: str  # of the appended data: raw or base64
     appended_at: int  # first byte of the appended data
+    appended_end: int  # first byte after them
 
 
 @dataclass(frozen=True)
@@ -115,17 +116,19 @@ def _attributes(text: str) -> dict[str, str]:
 
 def _layout(data: mmap.mmap, head: dict[str, str]) -> _Layout:
     at = data.find(b"<AppendedData")
-    encoding, appended_at = "raw", len(data)
+    encoding, appended_at, appended_end = "raw", len(data), len(data)
     if at >= 0:
         end = data.find(b">", at)
         encoding = _attributes(data[at:end].decode("utf-8", "replace")).get("encoding", "base64")
         appended_at = _find(data, b"_", end) + 1
+        appended_end = data.rfind(b"</AppendedData")
     return _Layout(
         order=">" if head.get("byte_order") == "BigEndian" else "<",
         word=8 if head.get("header_type") == "UInt64" else 4,
         compressed=bool(head.get("compressor")),
         encoding=encoding,
         appended_at=appended_at,
+        appended_end=appended_end,
     )
 
 
@@ -193,33 +196,33 @@ def _count_tokens(data: mmap.mmap, start: int) -> int:
 
 def _declared_bytes(declared: _Declared, data: mmap.mmap, layout: _Layout, where: str) -> int:
     """Return how many bytes an array has once unpacked, as its length words say."""
-    words = 3 if layout.compressed else 1
-    if declared.attributes["format"] == "appended":
+    appended = declared.attributes["format"] == "appended"
+    base64 = layout.encoding == "base64" if appended else True
+    start = declared.inline_at
+    if appended:
         start = layout.appended_at + int(declared.attributes["offset"])
-        base64 = layout.encoding == "base64"
     else:
-        start, base64 = declared.inline_at, True
         while data[start : start + 1].isspace():
             start += 1
-    length = words * layout.word
+    length = (3 if layout.compressed else 1) * layout.word
     # 4 characters carry 3 bytes; a single length word is encoded together with its data
     stored = data[start : start + (-(-length // 3) * 4 if base64 else length)]
-    if not base64 and not layout.compressed and len(stored) == length:
-        count = int(np.frombuffer(stored, f"{layout.order}u{layout.word}")[0])
-        if start + length + count > len(data):
-            raise FileError(
-                f"array {declared.name!r} needs {start + length + count} bytes, but the file has {len(data)}",
-                where,
-                _CUT_SHORT,
-            )
-        return count
     head = binascii.a2b_base64(stored) if base64 else stored
-    # no block at all: one zero word and nothing else
-    known = np.frombuffer(head[: len(head) // layout.word * layout.word], f"{layout.order}u{layout.word}")
+    words = np.frombuffer(head[: len(head) // layout.word * layout.word], f"{layout.order}u{layout.word}")
     if not layout.compressed:
-        return int(known[0])
-    blocks = int(known[0])
-    if blocks == 0:
-        return 0
-    full, last = int(known[1]), int(known[2])
-    return blocks * full if last == 0 else (blocks - 1) * full + last
+        count = int(words[0]) if words.size else 0
+        stop = start + length + (count if words.size and not base64 else 0)
+    elif words.size == 3 and words[0] > 0:
+        blocks, full, last = (int(word) for word in words)
+        count = blocks * full if last == 0 else (blocks - 1) * full + last
+        stop = start + length
+    else:  # no block at all: one zero word and nothing else
+        count, stop = 0, start
+    if appended and stop > layout.appended_end:
+        raise FileError(
+            f"the appended data end before array {declared.name!r} does: "
+            f"{stop - layout.appended_at} bytes are needed, {layout.appended_end - layout.appended_at} are there",
+            where,
+            _CUT_SHORT,
+        )
+    return count
