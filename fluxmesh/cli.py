@@ -11,7 +11,7 @@ import typer
 
 from fluxmesh.errors import FluxmeshError, FluxmeshWarning, PictureError
 
-__all__ = ["app", "main"]
+__all__ = ["app", "balance", "check", "main", "start"]
 
 app = typer.Typer(
     help="Mass and momentum balance over a closed, tagged surface: loads on hardware, the reaction at the anchor, "

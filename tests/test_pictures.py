@@ -190,9 +190,10 @@ def test_text_is_never_read_as_mathematics() -> None:
         sheet.text(10.0, 100.0, text, 20.0)
         # literal text is as wide as its letters are; a fraction or an exponent would be narrower
         assert ruler.width(text, 20.0) >= 0.8 * sum(ruler.width(letter, 20.0) for letter in text)
+    sheet.text(10.0, 200.0, "two\nlines", 20.0)
     texts = sheet._axes.texts
     assert all(not mark.get_parse_math() for mark in texts)
-    assert [mark.get_text() for mark in texts] == [r"$\frac{a}{b}$", r"\$x$", "<b>x</b>", "$"]
+    assert [mark.get_text() for mark in texts] == [r"$\frac{a}{b}$", r"\$x$", "<b>x</b>", "$", "two lines"]
     sheet.png()
 
 
@@ -439,8 +440,12 @@ def test_the_chosen_view_shows_every_port() -> None:
     # the same, with gravity along y
     toward = choose_direction(normals, normals, np.zeros((0, 3)), 2.0, np.array([0.0, 1.0, 0.0]))
     assert (normals @ toward > 0.3).all()
+    # a face, not a back
+    back = np.array([[-1.0, 0.0, 0.0]])
+    toward = choose_direction(back, back, np.zeros((0, 3)), 2.0, np.array([0.0, 0.0, 1.0]))
+    assert float(back[0] @ toward) > 0.3
     # a force is not looked at from its end
-    force = np.array([[0.6, -0.8, 0.0]])
+    force = np.array([[1.0, 0.0, 0.0]])
     toward = choose_direction(np.zeros((0, 3)), np.zeros((0, 3)), force, 2.0, np.array([0.0, 0.0, 1.0]))
     assert abs(float(force[0] @ toward)) < 0.7
 

@@ -145,9 +145,9 @@ def test_no_drag_through_any_surface_round_the_sphere(body_of: Callable[[int], S
     assert_order_two(turning, below=0.05, tolerance=0.3)
 
 
-def test_the_upstream_half_of_a_sphere_is_sucked_forward() -> None:
-    # axial pressure force -(pi/16) rho U² a² = -0.19634954085 (computed by two routes): a part of a surface,
-    # the level of pressure counted from the far stream. The dome faces downstream here; both halves are alike.
+def test_each_half_of_a_sphere_is_sucked_outward() -> None:
+    # axial force (pi/16) rho U² a² = 0.19634954085 away from the middle (computed by two routes): a part of a surface,
+    # with the pressure counted from the far stream. The dome faces downstream here; both halves are alike.
     errors = []
     for k in LEVELS:
         body = dome(1.0, np.pi / 2, 12 * 2**k, 3 * 2**k)

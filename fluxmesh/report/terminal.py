@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from math import floor, log10
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -42,7 +41,8 @@ def figure(value: float | None, scale: float = 0.0) -> str:
     if value == 0.0 or abs(value) <= 1e-12 * scale:
         return "0"
     if 1e-3 <= abs(value) < 1e7:
-        return f"{value:,.{max(0, 4 - floor(log10(abs(value))))}f}"
+        exponent = int(f"{abs(value):.4e}".partition("e")[2])  # of the rounded number
+        return f"{value:,.{max(0, 4 - exponent)}f}"
     return f"{value:.4e}"
 
 
