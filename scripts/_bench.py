@@ -137,6 +137,7 @@ def plainly(surface: ControlSurface, flow: Flow) -> None:
             flow.density.arrays(),
             flow.mass_flux.arrays(),
             PressureTerms(False, 0.0, 0.0, 0.0, 0.0),
+            flow.sample_start,
         ),
         runs=make_runs(surface.group_of_face, None, length=8192),
         origin=near_origin(surface),

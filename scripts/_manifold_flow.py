@@ -26,7 +26,7 @@ from numpy.typing import NDArray
 from skfem import Basis, BilinearForm, ElementTetP1, ElementTetP2, FacetBasis, MeshTet, asm
 from skfem.helpers import dot, grad
 
-__all__ = ["Domain", "Flow", "add_midpoints", "port_quadrature", "solve", "wall_reaction"]
+__all__ = ["Domain", "Flow", "add_midpoints", "head_load", "port_quadrature", "solve", "wall_reaction"]
 
 Array = NDArray[np.float64]
 NEWTON_TOLERANCE = 1e-7  # of the residual, in density times speed squared times diameter squared
@@ -334,3 +334,12 @@ def port_quadrature(domain: Domain, flow: Flow, facets: NDArray[np.int64]) -> di
         "viscous_force": total(np.einsum("kjfq,jfq->kfq", strain, normal)) / flow.reynolds,
         "reversed_flow": float(total(np.minimum(outward, 0.0))),
     }
+
+
+def head_load(domain: Domain, facets: NDArray[np.int64], gradient: Array) -> tuple[Array, Array]:
+    """Force and moment about the origin, on the facets, of a pressure that rises linearly from 0 at the origin."""
+    basis = domain.facet_basis(facets)
+    position = np.asarray(basis.global_coordinates())
+    push = np.einsum("k,kfq->fq", gradient, position) * np.asarray(basis.normals)
+    force = (push * basis.dx).sum(axis=(1, 2))
+    return force, (np.cross(position, push, axis=0) * basis.dx).sum(axis=(1, 2))

@@ -28,7 +28,7 @@ from typing import Any
 os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 
 import numpy as np
-from _manifold_flow import Domain, Flow, add_midpoints, port_quadrature, solve, wall_reaction
+from _manifold_flow import Domain, Flow, add_midpoints, head_load, port_quadrature, solve, wall_reaction
 from _manifold_shape import ARMS, INLET, WALL_TAG, Lattice, build_lattice, carry_over, map_points
 from numpy.typing import NDArray
 from skfem import MeshTet
@@ -42,6 +42,7 @@ MESHES = {"coarse": 6, "medium": 10, "fine": 14}  # hexahedra across each sectio
 VOLUME_MESH = "coarse"
 DENSITY = 880.0  # kg/m^3
 VISCOSITY = 0.15  # Pa s
+GRAVITY = np.array([0.0, 0.0, -9.80665])  # m/s^2, of the case files; the flow is computed without
 FLOW_RATE = 20e-3 / 60  # m^3/s
 DIAMETER = 2 * INLET.half_section[0]  # m
 SPEED = FLOW_RATE / (np.pi / 4 * DIAMETER**2)  # m/s, mean over the round inlet
@@ -61,11 +62,12 @@ groups = {{ array = "region" }}           # one integer a face
 [fluid]
 density = "{density:g} kg/m^3"
 ambient_pressure = "101325 Pa"          # printed for absolute pressures; the exported one is gauge
-gravity = [0, 0, -9.80665]              # weight of oil and block
+gravity = {gravity}          # weight of oil and block, head in the oil
 
 [flow]
 velocity = {{ array = "velocity", unit = "m/s", frame = "absolute" }}
 # The flow was computed without gravity: its pressure holds no hydrostatic head, so "removed".
+# The head is put back, zero at the origin: a hose from each port down to that height.
 pressure = {{ array = "pressure", unit = "Pa", kind = "gauge", head = "removed" }}
 # Viscous part only, the pull of the oil on the wall; the ports carry it with the same sign.
 traction = {{ array = "wall_traction", unit = "Pa", acts_on = "wall" }}
@@ -93,8 +95,8 @@ centre = [0.074, 0.005, 0.057]
 [anchor]                                # the foot of the bracket
 at = [0, 0, 0]
 
-# What the flow computation itself found for the load on the housing, from its assembled residual
-# (see reference.json). Set it beside the result by removing the comment signs:
+# What the flow computation itself found for the load on the housing, from its assembled residual, with
+# the hydrostatic head added (both are in reference.json). Set it beside the result by removing the comment signs:
 # [reported]
 # force = {force}
 # moment = {moment}
@@ -135,9 +137,11 @@ def main() -> None:
         solution = _solve_level(level, cells, solution)
         results[level] = _describe(solution)
         _write_surface(folder / f"manifold_{level}.vtp", solution)
-        reaction = results[level]["reaction"]
-        printed = {key: [float(f"{x:.5g}") for x in reaction[key]] for key in ("force", "moment")}
-        text = CASE.format(level=level, reynolds=REYNOLDS, density=DENSITY, **printed)
+        printed = {
+            key: [float(f"{x:.5g}") for x in np.add(results[level]["reaction"][key], results[level]["head"][key])]
+            for key in ("force", "moment")
+        }
+        text = CASE.format(level=level, reynolds=REYNOLDS, density=DENSITY, gravity=GRAVITY.tolist(), **printed)
         (folder / f"manifold_{level}.toml").write_text(text, encoding="utf-8")
         if level == VOLUME_MESH:
             _write_volume(folder / f"manifold_{level}.vtu", solution)
@@ -175,6 +179,7 @@ def _describe(solution: Solution) -> dict[str, Any]:
     force, moment = wall_reaction(domain, flow)
     other_force, other_moment = wall_reaction(domain, flow, whole_inlet=True)
     direct = port_quadrature(domain, flow, domain.wall)
+    head_force, head_moment = head_load(domain, domain.wall, DENSITY * GRAVITY * DIAMETER)
     ports = {}
     for name, facets in domain.ports.items():
         values = port_quadrature(domain, flow, facets)
@@ -198,6 +203,10 @@ def _describe(solution: Solution) -> dict[str, Any]:
             "force_spread": _rounded(np.linalg.norm(other_force - force) * STRESS * DIAMETER**2),
             "moment_spread": _rounded(np.linalg.norm(other_moment - moment) * STRESS * DIAMETER**3),
         },
+        "head": {
+            "force": _rounded(head_force * DIAMETER**2),
+            "moment": _rounded(head_moment * DIAMETER**3),
+        },
         "wall_stress_force": _rounded(-(direct["pressure_force"] + direct["viscous_force"]) * STRESS * DIAMETER**2),
         "ports": ports,
     }
@@ -208,10 +217,12 @@ def _reference(results: dict[str, Any]) -> dict[str, Any]:
         "about": "What the flow computation itself says, in SI units; made by scripts/make_manifold.py",
         "reaction": "force and moment of the flow on the housing from the assembled momentum residual at the wall "
         "nodes; spread: length of the difference to the same from another test field, which tells how well it is known",
+        "head": "what hydrostatic head, zero at the origin, adds to the load on the housing (reaction: without)",
         "wall_stress_force": "the same force by quadrature of the finite-element stress over the wall, less accurate",
         "ports": "quadrature of the finite-element solution, with the normal out of the fluid: mass flow is positive "
         "where it leaves, forces act on the fluid",
         "density": DENSITY,
+        "gravity": GRAVITY.tolist(),
         "viscosity": VISCOSITY,
         "flow_rate": _rounded(FLOW_RATE),
         "inlet_diameter": DIAMETER,

@@ -95,7 +95,9 @@ def ascii_stl(solids: dict[str, np.ndarray]) -> str:
     return "\n".join(lines) + "\n"
 
 
-def write_meshio(path: Path, cells: list[tuple[str, np.ndarray]], *, points: np.ndarray = BOX_POINTS, **more: Any) -> Path:
+def write_meshio(
+    path: Path, cells: list[tuple[str, np.ndarray]], *, points: np.ndarray = BOX_POINTS, **more: Any
+) -> Path:
     """Write a file with meshio."""
     import meshio
 

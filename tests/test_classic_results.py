@@ -24,7 +24,7 @@ def job(
     *,
     density: float,
     roles: Mapping[str, str] = PORTS,
-    anchor: Any = (0, 0, 0),
+    anchor: Any = (0.3, -0.4, 0.2),
     **fields: Any,
 ) -> Outcome:
     """Balance a body whose groups without a role are walls."""
@@ -80,11 +80,12 @@ def test_jet_pump_of_one_area() -> None:
     # a = 0.25, 30 and 3 m/s, 1000 kg/m³ give 9.75 m/s and 136687.5 Pa (White's problem family, from memory)
     duct = box((0, 0, 0), (2, 0.4, 0.4), (1, 4, 4), quads=True)
     entry = duct.groups["x-"]
+    middle = np.array([np.abs(duct.points[duct.faces[f], 1:].mean(axis=0) - 0.2).max() < 0.1 for f in entry])
     body = replace(
         duct,
         groups={
-            "jet": entry[:4],
-            "stream": entry[4:],
+            "jet": entry[middle],
+            "stream": entry[~middle],
             "mixed": duct.groups["x+"],
             "duct": np.concatenate([duct.groups[side] for side in ("y-", "y+", "z-", "z+")]),
         },
@@ -226,32 +227,21 @@ def test_published_right_angled_reducing_elbow() -> None:
     assert_allclose(force, [-1349.84, -639.36, 0], rtol=0, atol=1e-9)
 
 
-@pytest.mark.parametrize(
-    ("degrees", "diameter", "density", "speed", "load", "printed"),
-    [
-        (45, 0.114, 1000.0, 20.0, (1195.828, -2886.985), (1196, 2887, 3125)),
-        (90, 0.102, 440.0, 5.0, None, (91, 91, 128)),
-    ],
-)
-def test_published_bends_without_pressure(
-    degrees: float, diameter: float, density: float, speed: float, load: Any, printed: tuple[float, ...]
-) -> None:
-    # an engineering note on pipe bends: forces of the change of direction alone, N
-    area, turn = np.pi / 4 * diameter**2, np.radians(degrees)
-    body = reducing_elbow((area, area), degrees, TO_Y)
+def test_published_bend_without_pressure() -> None:
+    # an engineering note on pipe bends: 45 degrees, 114 mm, water at 20 m/s, change of direction alone:
+    # 1196 N, 2887 N, together 3125 N; exact 1195.828, 2886.985, 3124.850
+    area, turn, speed = np.pi / 4 * 0.114**2, np.radians(45), 20.0
+    body = reducing_elbow((area, area), 45, TO_Y)
     data = {
         "inlet": {"velocity": (speed, 0, 0), "pressure": 0.0},
         "outlet": {"velocity": (speed * np.cos(turn), speed * np.sin(turn), 0), "pressure": 0.0},
     }
-    done = job(body, data, density=density)
+    done = job(body, data, density=1000.0)
     force = done.balance.load.from_balance.force
-    found = [abs(force[0]), abs(force[1]), np.linalg.norm(force)]
-    # the note's second case is rounded to whole newtons from a rounded area
-    assert_allclose(found, printed, rtol=0, atol=0.65)
-    if load:
-        assert_allclose(force[:2], load, rtol=0, atol=6e-4)
-    short = done.balance.short_form
-    assert_allclose(-short.rate, force, rtol=0, atol=1e-9 * found[2])
+    assert_allclose(force, [1195.828, -2886.985, 0], rtol=0, atol=6e-4)
+    assert_allclose(np.linalg.norm(force), 3124.850, rtol=0, atol=6e-4)
+    # with no pressure the short form is all there is
+    assert_allclose(-done.balance.short_form.rate, force, rtol=0, atol=1e-9)
 
 
 # ---- jets and open channels: plane contours, one metre wide ---------------------------------

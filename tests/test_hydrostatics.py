@@ -10,7 +10,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose
 
-from fluxmesh import PressureMeaning, balance_of, lay_flow
+from fluxmesh import Hardware, PressureMeaning, balance_of, lay_flow
 from fluxmesh.balance.hardware import HardwareLoad
 from fluxmesh.errors import FieldError
 from fluxmesh.field.pressure import Head, PressureKind
@@ -149,6 +149,28 @@ def test_quadratic_faces_are_exact_too() -> None:
     body = moved(box((0, 0, 0), (1, 2, 0.5), 2), *rigid_motion(np.random.default_rng(3)))
     load = load_of(quadratic(body), lambda x: 1e4 + DENSITY * x @ DOWN, gravity=DOWN)
     assert_weight(load, moments(body), size_of(body, 1e5))
+
+
+def test_a_full_tank_rests_on_the_sum_of_its_weights() -> None:
+    # fluid and hardware hang on one line: through their common centre of mass, up
+    body = any_polyhedron(1)
+    held, hardware = moments(body), Hardware(350.0, (0.4, -0.2, 0.7))
+    surface = body.surface(rest="wall")
+    pressure = 2e4 + DENSITY * surface.points @ DOWN
+    flow = lay_flow(surface, density=DENSITY, pressure=pressure, gravity=DOWN)
+    done = balance_of(surface, flow, anchor=ANCHOR, hardware=hardware).balance
+    mass = DENSITY * held.volume + hardware.mass
+    centre = (DENSITY * held.first + hardware.mass * np.array(hardware.centre)) / mass
+    reaction = done.reaction
+    assert_allclose(reaction.wrench.force, -mass * DOWN, rtol=0, atol=1e-12 * mass * GRAVITY)
+    assert_allclose(reaction.wrench.moment, np.cross(centre - ANCHOR, -mass * DOWN), rtol=0, atol=1e-8)
+    line = reaction.line_of_action
+    assert_allclose(line.direction, [0, 0, 1], rtol=0, atol=1e-12)
+    assert_allclose(line.point[:2], centre[:2], rtol=0, atol=1e-12)
+    assert_allclose(line.couple, 0, rtol=0, atol=1e-8)
+    # let go, it falls
+    assert_allclose(done.release.acceleration, DOWN, rtol=0, atol=1e-10)
+    assert_allclose(done.release.turning_moment, 0, rtol=0, atol=1e-8)
 
 
 # ---- bodies in a fluid ----------------------------------------------------------------------

@@ -15,7 +15,7 @@ from fluxmesh.surface.holes import find_holes
 from fluxmesh.surface.mend import Mended, mend
 from fluxmesh.surface.orient import turn_faces
 from fluxmesh.surface.surface import FaceKind
-from fluxmesh.surface.weld import join_equal_points
+from fluxmesh.surface.weld import join_equal_points, join_near_points
 from tests import small_meshes as meshes
 
 NAMES = ("shell", "core", "cap")
@@ -227,6 +227,39 @@ def test_holes_are_measured_and_the_largest_comes_first():
     assert "round (0, 0, 3) m, at groups 'shell' and 'core'" in str(large)
 
 
+def test_hole_far_from_the_origin_and_uneven():
+    corners = np.array([[0, 0, 0], [1, 0, 0], [2, 0, 0], [4, 0, 0], [4, 1, 0], [0, 1, 0]]) + np.array([100, 50, -70.0])
+    rows = np.stack([np.arange(6), np.roll(np.arange(6), -1), np.zeros(6, int)], axis=1)
+    (hole,) = find_holes(corners, rows, np.zeros(1, np.int32), ("a",)).largest
+    # a rectangle of 4 m by 1 m
+    assert_allclose((hole.area, hole.length), (4, 10), rtol=1e-12)
+    assert_allclose(hole.centre, (102, 50.5, -70), rtol=1e-12)
+    assert hole.encloses_area
+
+
+def test_hole_beside_an_inner_wall():
+    points, faces = meshes.together(meshes.cube_quads(), meshes.cube_quads(origin=(1, 0, 0)))
+    merged = join_equal_points(points, np.ones(16, bool))[faces]
+    # without the first cube's side of the wall, and without its bottom: three sides of it are open,
+    # at the fourth the wall and the second bottom meet
+    with pytest.raises(SurfaceError) as caught:
+        mended(points, np.delete(merged, [0, 5], axis=0))
+    text = str(caught.value)
+    assert "1 hole, 3 open edges; it is a loop of 3 edges, length 3 m, round (0.3333, 0.5, 0) m" in text
+    assert "; 3 edges join more than two faces (the first is at (1, " in text
+
+
+def test_crowded_points_are_not_joined():
+    rng = np.random.default_rng(4)
+    points = np.concatenate([np.eye(3), 5 + 1e-3 * rng.random((100, 3))])
+    own = np.arange(103)
+    none = (np.empty(0, np.int64), np.empty(0, np.int8))
+    arguments = (points, np.ones(103, bool), own, 1e-2, (np.array([0, 1, 2]), *none))
+    assert join_near_points(*arguments) is own
+    few = join_near_points(points, own < 6, *arguments[2:])
+    assert few.tolist() == [0, 1, 2, 3, 3, 3, *range(6, 103)]
+
+
 def test_hanging_point_is_named_as_a_slit():
     points, faces = meshes.cube_quads()
     points = np.concatenate([points, [[0.5, 0, 0]]])
@@ -402,6 +435,28 @@ def test_a_thousand_bodies_in_a_large_shell():
     assert result.notes[5] == "995 more shells were turned"
 
 
+def test_a_body_in_the_hole_of_a_ring_is_not_inside_it():
+    ring = trimesh.creation.torus(1.0, 0.3)
+    points, faces = np.array(ring.vertices), np.array(ring.faces)
+    ball, dot = meshes.sphere(1, 0.2), meshes.sphere(1, 0.05, (1, 0, 0))
+    result = mended(*meshes.together((points, faces), ball, dot))
+    assert result.notes == ("shell 3 (a cavity: 80 faces, group 'shell') was turned",)
+    assert_closed(result, volume_of(points, faces) + volume_of(*ball) - volume_of(*dot))
+
+
+def test_volume_is_taken_about_a_near_point():
+    points, faces = meshes.cube(0.1, (3e6, -5e6, 7e6))
+    facets = shells.Facets(points, faces.ravel(), np.empty(0, np.int64), np.empty(0, np.int8))
+    measures = shells.measure_shells(facets, np.zeros(12, np.int32), 1)
+    # differences of coordinates are exact; about the far origin nine digits of the volume would be lost
+    low, high = points.min(axis=0), points.max(axis=0)
+    x, y, z = high - low
+    assert_allclose(measures.volume, [x * y * z], rtol=1e-14)
+    assert_allclose(measures.area, [2 * (x * y + y * z + z * x)], rtol=1e-14)
+    assert measures.low.tolist() == [low.tolist()]
+    assert measures.high.tolist() == [high.tolist()]
+
+
 def test_lumped_winding_number_agrees_with_the_exact_one(monkeypatch):
     points, faces = meshes.sphere(4, 1.0)
     points = points * [1, 2, 0.5]
@@ -416,10 +471,12 @@ def test_lumped_winding_number_agrees_with_the_exact_one(monkeypatch):
     # a sum of 5120 angles
     assert_allclose(values[clear], inside[clear], atol=1e-11)
     monkeypatch.setattr(shells, "_LARGE_SHELL", 1)
+    monkeypatch.setattr(shells, "_CLEAR", 1.0)  # never asks the exact one
     lumped = shells._Winding(facets, np.arange(len(faces)))
     values = np.array([lumped.number(place) for place in places])
     assert lumped.cells is not None
-    assert_allclose(values[clear], inside[clear], atol=shells._CLEAR)
+    # dipoles further off than three radii: well below the half that tells inside from outside
+    assert_allclose(values[clear], inside[clear], atol=0.03)
     assert np.abs(values - inside)[clear].max() > 1e-9  # far cells were taken as dipoles
 
 
@@ -460,12 +517,27 @@ def test_curved_soup_is_joined_with_its_midsides(kind):
     own_points, own_rows = meshes.soup(points, rows)
     result = mended(own_points, own_rows, kinds=kinds)
     assert result.closed
-    assert len(result.notes) == 1
+    # corners and mid-side points, not the points within a face
+    count = 2 * shape[1].size
+    places = len(shape[0]) + shape[1].size // 2
+    assert result.notes == (
+        f"{count} points at {places} coincident places joined to close the surface (exactly equal coordinates)",
+    )
     # a mid-side point out of place leaves a gap, and that is told
     own_points[own_rows[0, shape[1].shape[1]]] += [0, 0, 0.01]
     apart = mended(own_points, own_rows, kinds=kinds)
     assert apart.closed
     assert apart.notes[-1].startswith("curved faces part along 1 edge, by up to 0.01 m at (")
+
+
+def test_midsides_of_their_own_in_one_place_are_no_gap():
+    points, rows, kinds = meshes.curved(*meshes.tetrahedron(), FaceKind.TRIANGLE6)
+    points = np.concatenate([points, points[rows[2, 3:4]]])
+    rows[2, 3] = len(points) - 1
+    assert mended(points, rows, kinds=kinds).notes == ()
+    points[-1] += 1e-3
+    (note,) = mended(points, rows, kinds=kinds).notes
+    assert note.startswith("curved faces part along 1 edge, by up to 0.001732 m at (0")
 
 
 @pytest.mark.parametrize(
@@ -509,7 +581,6 @@ def disturbed_solid(draw):
     shape = np.eye(3) + rng.uniform(-0.3, 0.3, (3, 3))
     points = points @ shape
     volume = volume_of(points, faces)
-    # the convex solids are bent by a smooth map that does not fold them
     number = rng.permutation(len(points))
     moved = np.empty_like(points)
     moved[number] = points

@@ -148,9 +148,25 @@ def test_pressure_is_seen_in_the_colours_of_the_bar(tmp_path: Path) -> None:
     assert alike.mean() > 0.1
 
 
+def test_the_surface_lies_where_the_view_says() -> None:
+    view = View(front_view().axes, np.array([0.0, 0.0, 0.0]), np.array([130.0, 90.0]), 50.0)
+    points = np.array([[-1.0, 3.0, -0.8], [1.2, 3.0, -0.8], [1.2, 4.0, 1.1]])
+    black = picture_surface.Layer(np.array([0]), np.zeros(3, dtype=np.uint8), 1.0)
+    area = (40, 20, 240, 170)
+    image = picture_surface.draw_surface(points, np.array([[0, 1, 2]]), [black], view, area, 1.0)
+    assert image.shape == (150, 200, 3)
+    rows, columns = np.nonzero(image[..., 0] < 128)
+    low, high = view.project(points).min(axis=0) - area[:2], view.project(points).max(axis=0) - area[:2]
+    seen = [columns.min(), 150 - 1 - rows.max(), columns.max() + 1, 150 - rows.min()]
+    assert_allclose(seen, [*low, *high], rtol=0.0, atol=2.5)  # pixels, lines and a sharp corner
+
+
 def test_an_empty_scene_and_a_far_one_are_drawn(tmp_path: Path) -> None:
     bare = replace(box_scene(), arrows=(), markers=(), notes=(), groups=(("a", "wall"), ("b", "wall"), ("c", "wall")))
     draw_vectors(bare, tmp_path / "bare.png", SMALL)
+    # walls are translucent: pale, but neither white nor left out
+    shade = pixels(tmp_path / "bare.png")[60:400, 20:500].mean(axis=2)
+    assert ((shade > 120) & (shade < 245)).mean() > 0.2
     shift = np.array([4.0e6, -3.0e5, 100.0])
     far = replace(bare, points=bare.points + shift)
     draw_vectors(far, tmp_path / "far.png", SMALL)
@@ -494,6 +510,15 @@ def test_thinning_keeps_shape_groups_and_pressure() -> None:
 
 def test_thinning_of_slivers_and_unused_points() -> None:
     scene = box_scene(cells=4)
+    rng = np.random.default_rng(11)
+    corners = (rng.random((3_000, 1, 3)) + 1e-3 * rng.random((3_000, 3, 3))).reshape(-1, 3)
+    dust = Scene("dust", corners, np.arange(9_000).reshape(-1, 3), np.zeros(3_000, dtype=np.int32), (("a", "wall"),))
+    coarse = thin(dust, most=200)
+    assert 0 < len(coarse.triangles) < 200  # by a coarser grid; the last resort would give exactly 200
+    assert np.unique(coarse.triangles).size == len(coarse.points)
+    plate = replace(scene, points=scene.points * [1.0, 1.0, 1e-4])
+    sheet = thin(plate, most=100)
+    assert len(np.unique(np.sort(sheet.triangles, axis=1), axis=0)) == len(sheet.triangles)
     flat = replace(scene, points=scene.points * [1.0, 0.0, 0.0])
     assert 0 < len(thin(flat, most=50).triangles) <= 50
     stray = replace(scene, points=np.vstack([scene.points, [[1e6, 0.0, 0.0]]]))
@@ -553,6 +578,8 @@ def test_one_wild_face_does_not_set_the_bands() -> None:
     bands = pressure_bands(replace(scene, pressure=pressure))
     assert bands.levels[-1] < 4e3
     assert bands.most == 9e9
+    # extremes that thinning lost are still named
+    assert pressure_bands(replace(scene, pressure_range=(-7.0, 8e3))).least == -7.0
 
 
 # ---- words and numbers

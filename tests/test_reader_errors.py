@@ -164,7 +164,10 @@ def test_legacy_vtk_cut_short(tmp_path: Path, refuse: Refuse, binary: bool) -> N
 @pytest.mark.parametrize(
     ("last", "match"),
     [
-        ("POINT_DATA 3\nSCALARS p double 2\nLOOKUP_TABLE default\n1 2 3 4 5\n", "'LOOKUP_TABLE default' holds 5 values of 6"),
+        (
+            "POINT_DATA 3\nSCALARS p double 2\nLOOKUP_TABLE default\n1 2 3 4 5\n",
+            "'LOOKUP_TABLE default' holds 5 values of 6",
+        ),
         ("POINT_DATA 3\nVECTORS U double\n1 2 3 4 5 6 7 8\n", "'VECTORS U double' holds 8 values of 9"),
         ("CELL_DATA 1\nFIELD FieldData 1\nS 9 1 double\n1 2 3\n", "'S 9 1 double' holds 3 values of 9"),
         ("CELL_DATA 1\nTENSORS S double\n1 2 3 4 -inf\n", "'TENSORS S double' holds 5 values of 9"),
@@ -242,9 +245,7 @@ def test_ply_cut_short(tmp_path: Path, refuse: Refuse, mode: str, polygons: list
     ],
 )
 def test_damaged_ply(tmp_path: Path, refuse: Refuse, old: str, new: str, match: str) -> None:
-    path = write_ply(
-        tmp_path / "box.ply", BOX_POINTS, [[0, 3, 2, 1], [4, 5, 6]], "ascii", PRESSURE, np.arange(2)
-    )
+    path = write_ply(tmp_path / "box.ply", BOX_POINTS, [[0, 3, 2, 1], [4, 5, 6]], "ascii", PRESSURE, np.arange(2))
     text = path.read_text()
     if "more" in match:
         # one row of vertices too few is announced, and the faces are plain numbers too
@@ -279,7 +280,9 @@ def test_damaged_obj(tmp_path: Path, refuse: Refuse, old: str, new: str, match: 
     refuse(path, match)
 
 
-@pytest.mark.parametrize("options", [{"file_format": "gmsh22"}, {"file_format": "gmsh22", "binary": False}, {"file_format": "gmsh"}])
+@pytest.mark.parametrize(
+    "options", [{"file_format": "gmsh22"}, {"file_format": "gmsh22", "binary": False}, {"file_format": "gmsh"}]
+)
 def test_msh_cut_short(tmp_path: Path, refuse: Refuse, options: dict[str, object]) -> None:
     path = write_meshio(tmp_path / "box.msh", [("triangle", BOX_TRIANGLES)], **options)
     assert_refused_when_cut(path, refuse)
@@ -338,7 +341,9 @@ def test_faces_of_unsupported_shape_are_refused_not_dropped(tmp_path: Path, refu
     ]:
         grid = pv.UnstructuredGrid([count, *range(count)], [kind], points)
         refuse(write_vtk_xml(grid, tmp_path / "odd.vtu"), match)
-    path = write_meshio(tmp_path / "odd.msh", [("triangle10", np.arange(10)[None])], points=points, file_format="gmsh22")
+    path = write_meshio(
+        tmp_path / "odd.msh", [("triangle10", np.arange(10)[None])], points=points, file_format="gmsh22"
+    )
     refuse(path, "has 1 faces of type triangle10, which cannot be read")
 
 
@@ -372,9 +377,7 @@ def with_values(text: str, name: str, change: Callable[[list[str]], list[str]]) 
         ("region", 24, "array 'region' holds 24 values, but there are 12 cells"),
     ],
 )
-def test_array_of_the_wrong_length_in_ascii(
-    tmp_path: Path, refuse: Refuse, name: str, count: int, match: str
-) -> None:
+def test_array_of_the_wrong_length_in_ascii(tmp_path: Path, refuse: Refuse, name: str, count: int, match: str) -> None:
     path = tmp_path / "box.vtp"
     path.write_text(with_values(box_text(tmp_path), name, lambda values: (values * 2)[:count]))
     refuse(path, match, FieldError)
@@ -463,7 +466,9 @@ def test_face_that_uses_a_point_that_is_not_there(tmp_path: Path, refuse: Refuse
         refuse(write_vtk_xml(data, path), match)
 
 
-def test_messages_of_vtk_are_heard_again_afterwards(tmp_path: Path, refuse: Refuse, capfd: pytest.CaptureFixture[str]) -> None:
+def test_messages_of_vtk_are_heard_again_afterwards(
+    tmp_path: Path, refuse: Refuse, capfd: pytest.CaptureFixture[str]
+) -> None:
     from vtkmodules.vtkIOXML import vtkXMLPolyDataReader
 
     path = tmp_path / "letter.vtp"

@@ -49,9 +49,7 @@ def read(capfd: pytest.CaptureFixture[str]) -> Read:
 def faces_of(mesh: RawMesh) -> list[list[int]]:
     if mesh.offsets is None:
         return mesh.connectivity.reshape(-1, 3).tolist()
-    return [
-        mesh.connectivity[start:stop].tolist() for start, stop in zip(mesh.offsets[:-1], mesh.offsets[1:])
-    ]
+    return [mesh.connectivity[start:stop].tolist() for start, stop in zip(mesh.offsets[:-1], mesh.offsets[1:])]
 
 
 def assert_box(mesh: RawMesh) -> None:
@@ -317,7 +315,9 @@ def test_ply_of_another_writer_with_list_properties(tmp_path: Path, read: Read) 
     assert_arrays(mesh.face_arrays, {"region": REGION})
 
 
-@given(st.lists(st.lists(st.integers(0, 7), min_size=3, max_size=7), min_size=1, max_size=12), st.sampled_from(PLY_MODES))
+@given(
+    st.lists(st.lists(st.integers(0, 7), min_size=3, max_size=7), min_size=1, max_size=12), st.sampled_from(PLY_MODES)
+)
 def test_any_polygons_come_back_from_ply(polygons: list[list[int]], mode: str) -> None:
     import tempfile
 
@@ -405,7 +405,11 @@ def test_element_sets_of_an_inp_file_are_face_sets(tmp_path: Path, read: Read) -
 
 def test_quadratic_blocks_keep_their_kind(tmp_path: Path, read: Read) -> None:
     points = np.vstack([BOX_POINTS, [[1, 1, 1]]])
-    blocks = [("triangle6", np.array([[0, 1, 2, 3, 4, 5]])), ("quad8", np.arange(8)[None]), ("quad9", np.arange(9)[None])]
+    blocks = [
+        ("triangle6", np.array([[0, 1, 2, 3, 4, 5]])),
+        ("quad8", np.arange(8)[None]),
+        ("quad9", np.arange(9)[None]),
+    ]
     mesh = read(write_meshio(tmp_path / "curved.msh", blocks, points=points, file_format="gmsh22"))
     assert mesh.kinds is not None
     assert mesh.kinds.tolist() == [FaceKind.TRIANGLE6, FaceKind.QUAD8, FaceKind.QUAD9]

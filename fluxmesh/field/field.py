@@ -35,13 +35,16 @@ class Field:
     components : int
         1 or 3.
     where : ndarray, shape (n_groups,), int8
-        For each group ``ABSENT``, ``PER_GROUP``, ``AT_FACE`` or ``AT_NODE``
-        (see `fluxmesh.integral.layout`).
+        For each group ``ABSENT``, ``PER_GROUP``, ``AT_FACE``, ``AT_NODE`` or
+        ``AT_SAMPLE`` (see `fluxmesh.integral.layout`).
     node, face : ndarray, shape (n_points or n_faces, components) or 1-D, float64
         As exported; empty where no group uses them. NaN marks places without
         a value, and must not lie in a group that uses the array.
     group : ndarray, shape (n_groups, components) or 1-D, float64
         SI values of groups that have one value.
+    sample : ndarray, shape (n_samples, components) or 1-D, float64
+        Values at the quadrature points of sampled groups, in the order of
+        `fluxmesh.field.flow.Flow.sample_start`; empty where no group is sampled.
     scale : float
         Factor from the export's unit and sign to SI and ours.
     label : str
@@ -54,12 +57,13 @@ class Field:
     node: NDArray[np.float64]
     face: NDArray[np.float64]
     group: NDArray[np.float64]
+    sample: NDArray[np.float64]
     scale: float = 1.0
     label: str = ""
 
     def arrays(self) -> FieldArrays:
         """Return the same as the plain arrays that the kernels take."""
-        return FieldArrays(self.where, self.node, self.face, self.group, float(self.scale))
+        return FieldArrays(self.where, self.node, self.face, self.group, self.sample, float(self.scale))
 
     def present(self) -> NDArray[np.bool_]:
         """Return which groups have the quantity, shape (n_groups,)."""
@@ -78,7 +82,7 @@ def absent_field(surface: ControlSurface, name: str, components: int) -> Field:
     """Return a field that no group has."""
     groups = len(surface.groups)
     none = np.empty(_shape(0, components))
-    return Field(name, components, np.zeros(groups, np.int8), none, none, np.zeros(_shape(groups, components)))
+    return Field(name, components, np.zeros(groups, np.int8), none, none, np.zeros(_shape(groups, components)), none)
 
 
 def constant_field(surface: ControlSurface, name: str, components: int, value: float | Sequence[float]) -> Field:
@@ -182,7 +186,7 @@ def array_field(
     covered = np.ones(len(surface.groups), np.bool_) if groups is None else groups
     where = np.where(covered, AT_NODE if at == "nodes" else AT_FACE, ABSENT).astype(np.int8)
     node, face = (given, field.face) if at == "nodes" else (field.node, given)
-    return Field(name, components, where, node, face, field.group, scale, label)
+    return Field(name, components, where, node, face, field.group, field.sample, scale, label)
 
 
 def _place(surface: ControlSurface, count: int, what: str) -> str:

@@ -51,6 +51,8 @@ class Flow:
         Ambient absolute pressure, Pa.
     gravity : tuple of 3 floats
         m/s².
+    sample_start : ndarray, shape (n_faces + 1,), int64
+        Where the samples of each face start; empty when no field is sampled.
     """
 
     density: Field
@@ -61,6 +63,7 @@ class Flow:
     meaning: PressureMeaning = field(default_factory=PressureMeaning)
     ambient: float | None = None
     gravity: tuple[float, float, float] = (0.0, 0.0, 0.0)
+    sample_start: NDArray[np.int64] = field(default_factory=lambda: np.empty(0, np.int64))
 
     def fields(self) -> tuple[Field, ...]:
         """Return all fields."""
@@ -261,6 +264,7 @@ def integrate_flow(surface: ControlSurface, flow: Flow, *, threads: int | None =
         density=flow.density.arrays(),
         mass=flow.mass_flux.arrays(),
         terms=terms,
+        sample_start=flow.sample_start,
     )
     table = integrate(
         mesh=mesh,

@@ -10,7 +10,6 @@ in all but freak cases, and the same for any number of threads.
 
 from __future__ import annotations
 
-from math import sqrt
 from typing import Any, Final
 
 import numpy as np
@@ -32,19 +31,17 @@ from fluxmesh.integral.gather import (
 from fluxmesh.integral.lanes import (
     BUFFER_ROWS,
     LANES,
-    A,
     M,
-    N,
     P,
     R,
     S,
     T,
     V,
     X,
-    absorb_points,
     absorb_triangles,
 )
-from fluxmesh.integral.layout import AT_FACE, AT_NODE, PER_GROUP, FaceArrays, FlowArrays, Runs
+from fluxmesh.integral.layout import AT_FACE, AT_NODE, PER_GROUP, FaceArrays, FlowArrays, Runs, sampled_groups
+from fluxmesh.integral.pointwise import point_run
 from fluxmesh.integral.shapes import ShapeTables, shape_tables
 from fluxmesh.integral.table import WIDTH, IntegralTable
 
@@ -59,12 +56,12 @@ def _flat_run(
     b: Any, o: Any, high: Any, low: Any, nodes: Any, faces: Any, skip_still: bool,
 ) -> None:  # fmt: skip
     points, connectivity, offsets, _ = mesh
-    velocity, traction, pressure, density, mass, terms = flow
-    v_at, v_node, v_face, v_group, v_scale = velocity
-    t_at, t_node, t_face, t_group, t_scale = traction
-    p_at, p_node, p_face, p_group, p_scale = pressure
-    r_at, r_node, r_face, r_group, r_scale = density
-    m_at, _, m_face, _, m_scale = mass
+    velocity, traction, pressure, density, mass, terms, _ = flow
+    v_at, v_node, v_face, v_group, _, v_scale = velocity
+    t_at, t_node, t_face, t_group, _, t_scale = traction
+    p_at, p_node, p_face, p_group, _, p_scale = pressure
+    r_at, r_node, r_face, r_group, _, r_scale = density
+    m_at, _, m_face, _, _, m_scale = mass
     times_density, offset, hx, hy, hz = terms
     ox, oy, oz = origin[0], origin[1], origin[2]
     zero = np.zeros(3)
@@ -143,103 +140,8 @@ def _flat_run(
 
 
 @compiled
-def _value3(field: Any, group: int, node: int, face: int, k: int) -> Any:
-    where = field.where[group]
-    if where == AT_NODE:
-        return field.scale * field.node[node, k]
-    if where == AT_FACE:
-        return field.scale * field.face[face, k]
-    if where == PER_GROUP:
-        return field.group[group, k]
-    return 0.0
-
-
-@compiled
-def _value1(field: Any, group: int, node: int, face: int, absent: float) -> Any:
-    where = field.where[group]
-    if where == AT_NODE:
-        return field.scale * field.node[node]
-    if where == AT_FACE:
-        return field.scale * field.face[face]
-    if where == PER_GROUP:
-        return field.group[group]
-    return absent
-
-
-@compiled
-def _curved_run(
-    mesh: Any, flow: Any, order: Any, tables: Any, origin: Any, begin: int, end: int, group: int,
-    b: Any, o: Any, high: Any, low: Any,
-) -> None:  # fmt: skip
-    mass_given = flow.mass.where[group] == AT_FACE
-    # pieces of one face: area vector, area, and the point's own fields
-    for place in range(begin, end):
-        face = order[place] if order.size else place
-        first = mesh.offsets[face]
-        kind = mesh.kinds[face] - 1
-        size = tables.size[kind]
-        points = tables.weight.shape[1]
-        area = 0.0
-        for sweep in range(2 if mass_given else 1):
-            last_sweep = sweep == (1 if mass_given else 0)
-            for q0 in range(0, points, LANES):
-                clear(b)
-                filled = min(LANES, points - q0)
-                for i in range(filled):
-                    q = q0 + i
-                    _load_point(b, i, mesh, flow, origin, group, face, first, size, kind, q, tables)
-                    if not last_sweep:
-                        area += b[A + i]
-                    elif mass_given:
-                        b[M + i] = b[A + i] / area * flow.mass.scale * flow.mass.face[face] if area != 0.0 else 0.0
-                if last_sweep:
-                    absorb_points(b, o, high, low, mass_given)
-
-
-@compiled
-def _load_point(
-    b: Any, i: int, mesh: Any, flow: Any, origin: Any, group: int, face: int, first: int, size: int,
-    kind: int, q: int, tables: Any,
-) -> None:  # fmt: skip
-    ux, uy, uz, vx, vy, vz = 0.0, 0.0, 0.0, 0.0, 0.0, 0.0
-    pressure, density = 0.0, 0.0
-    for a in range(size):
-        node = mesh.connectivity[first + a]
-        f, fu, fv = tables.value[kind, q, a], tables.along_u[kind, q, a], tables.along_v[kind, q, a]
-        x = mesh.points[node, 0] - origin[0]
-        y = mesh.points[node, 1] - origin[1]
-        z = mesh.points[node, 2] - origin[2]
-        b[X + i] += f * x
-        b[X + LANES + i] += f * y
-        b[X + 2 * LANES + i] += f * z
-        ux, uy, uz = ux + fu * x, uy + fu * y, uz + fu * z
-        vx, vy, vz = vx + fv * x, vy + fv * y, vz + fv * z
-        for k in range(3):
-            b[V + k * LANES + i] += f * _value3(flow.velocity, group, node, face, k)
-            b[T + k * LANES + i] += f * _value3(flow.traction, group, node, face, k)
-        r = _value1(flow.density, group, node, face, 1.0)
-        p = _value1(flow.pressure, group, node, face, 0.0)
-        density += f * r
-        pressure += f * (p * r if flow.terms.times_density and flow.pressure.where[group] > PER_GROUP else p)
-    weight = tables.weight[kind, q]
-    nx, ny, nz = weight * (uy * vz - uz * vy), weight * (uz * vx - ux * vz), weight * (ux * vy - uy * vx)
-    b[N + i], b[N + LANES + i], b[N + 2 * LANES + i] = nx, ny, nz
-    b[A + i] = sqrt(nx * nx + ny * ny + nz * nz)
-    if flow.pressure.where[group] > PER_GROUP:
-        terms = flow.terms
-        pressure += (
-            terms.offset
-            + terms.head_x * b[X + i]
-            + terms.head_y * b[X + LANES + i]
-            + terms.head_z * b[X + 2 * LANES + i]
-        )
-    b[P + i] = pressure
-    b[R + i] = density
-
-
-@compiled
 def _integrate_runs(
-    mesh: Any, flow: Any, runs: Any, tables: Any, origin: Any, skip_still: Any, first: int, last: int,
+    mesh: Any, flow: Any, runs: Any, tables: Any, origin: Any, skip_still: Any, sampled: Any, first: int, last: int,
     out_high: Any, out_low: Any,
 ) -> None:  # fmt: skip
     b = np.zeros(BUFFER_ROWS * LANES)
@@ -253,8 +155,8 @@ def _integrate_runs(
         high[:] = 0.0
         low[:] = 0.0
         group = group_of_run[run]
-        if curved[run]:
-            _curved_run(mesh, flow, order, tables, origin, start[run], start[run + 1], group, b, o, high, low)
+        if curved[run] or sampled[group]:
+            point_run(mesh, flow, order, tables, origin, start[run], start[run + 1], group, b, o, high, low)
         else:
             _flat_run(
                 mesh, flow, order, origin, start[run], start[run + 1], group,
@@ -321,12 +223,13 @@ def integrate(
     """
     count = runs.group.size
     tables: ShapeTables = shape_tables()
+    sampled = sampled_groups(flow)
     high, low = np.zeros((count, WIDTH)), np.zeros((count, WIDTH))
     parts = -(-count // _SPAN)
 
     def work(part: int) -> None:
         first, last = part * _SPAN, min((part + 1) * _SPAN, count)
-        _integrate_runs(mesh, flow, runs, tables, origin, still_groups, first, last, high, low)
+        _integrate_runs(mesh, flow, runs, tables, origin, still_groups, sampled, first, last, high, low)
 
     work(0)  # compiles or loads the kernel once, before threads race for it
     run_parts(lambda part: work(part + 1), parts - 1, threads)

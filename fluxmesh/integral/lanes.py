@@ -327,7 +327,9 @@ def absorb_triangles(
 
 
 @compiled
-def absorb_points(b: Any, o: Any, high: Any, low: Any, mass_given: bool) -> None:
+def absorb_points(
+    b: Any, o: Any, high: Any, low: Any, pressure: bool, traction: bool, density: bool, flow: bool, mass_given: bool
+) -> None:
     """Add one batch of quadrature points, whose area vectors hold their weights, to the sums ``high + low``.
 
     A field that is not there must be zero in the buffer; density must be positive.
@@ -355,6 +357,15 @@ def absorb_points(b: Any, o: Any, high: Any, low: Any, mass_given: bool) -> None
         _spread(o, VISCOUS_FORCE, i, area, tx, ty, tz)
         _spread(o, MOMENT_OF_VISCOUS, i, area, y * tz - z * ty, z * tx - x * tz, x * ty - y * tx)
         o[DENSITY_AREA + i] = r * area
+    two_sum_into(high, low, o, _GEOMETRY[0], _GEOMETRY[1])
+    if pressure:
+        two_sum_into(high, low, o, _PRESSURE[0], _PRESSURE[1])
+    if traction:
+        two_sum_into(high, low, o, _TRACTION[0], _TRACTION[1])
+    if density:
+        two_sum_into(high, low, o, _DENSITY[0], _DENSITY[1])
+    if not flow:
+        return
     for i in range(_FLOW[0], _FLOW[1]):
         o[i] = 0.0
     for i in range(3 * LANES, 9 * LANES):
@@ -369,4 +380,4 @@ def absorb_points(b: Any, o: Any, high: Any, low: Any, mass_given: bool) -> None
             b[V + i], b[V + LANES + i], b[V + 2 * LANES + i], b[P + i], b[R + i],
             b[T + i], b[T + LANES + i], b[T + 2 * LANES + i],
         )  # fmt: skip
-    two_sum_into(high, low, o, 0, _FLOW[1])
+    two_sum_into(high, low, o, _FLOW[0], _FLOW[1])

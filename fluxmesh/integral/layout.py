@@ -11,6 +11,7 @@ __all__ = [
     "ABSENT",
     "AT_FACE",
     "AT_NODE",
+    "AT_SAMPLE",
     "PER_GROUP",
     "FaceArrays",
     "FieldArrays",
@@ -18,12 +19,14 @@ __all__ = [
     "PressureTerms",
     "Runs",
     "make_runs",
+    "sampled_groups",
 ]
 
 ABSENT: Final = 0
 PER_GROUP: Final = 1
 AT_FACE: Final = 2
 AT_NODE: Final = 3
+AT_SAMPLE: Final = 4
 
 _RUN_LENGTH: Final = 2048
 
@@ -34,11 +37,14 @@ class FieldArrays(NamedTuple):
     Attributes
     ----------
     where : ndarray, shape (n_groups,), int8
-        For each group `ABSENT`, `PER_GROUP`, `AT_FACE` or `AT_NODE`.
+        For each group `ABSENT`, `PER_GROUP`, `AT_FACE`, `AT_NODE` or `AT_SAMPLE`.
     node, face, group : ndarray, shape (n, k) or (n,), float64
         Values on points, faces and groups; empty where no group needs them.
+    sample : ndarray, shape (n_samples, k) or (n_samples,), float64
+        Values at quadrature points, in the order of
+        `fluxmesh.integral.samples.sample_places`; empty where no group needs them.
     scale : float
-        Factor that brings `node` and `face` to SI and to the sign wanted;
+        Factor that brings `node`, `face` and `sample` to SI and to the sign wanted;
         `group` holds SI values already.
     """
 
@@ -46,6 +52,7 @@ class FieldArrays(NamedTuple):
     node: NDArray[np.float64]
     face: NDArray[np.float64]
     group: NDArray[np.float64]
+    sample: NDArray[np.float64]
     scale: float
 
 
@@ -76,6 +83,8 @@ class FlowArrays(NamedTuple):
         Mass flow out through each face in kg/s; `AT_FACE` or `ABSENT`.
     terms : PressureTerms
         From exported to gauge pressure.
+    sample_start : ndarray, shape (n_faces + 1,), int64
+        Where the samples of each face start; empty when no field is sampled.
     """
 
     velocity: FieldArrays
@@ -84,6 +93,7 @@ class FlowArrays(NamedTuple):
     density: FieldArrays
     mass: FieldArrays
     terms: PressureTerms
+    sample_start: NDArray[np.int64]
 
 
 class FaceArrays(NamedTuple):
@@ -164,3 +174,20 @@ def make_runs(group_of_face: NDArray[np.int32], kinds: NDArray[np.int8] | None, 
     curved = (heads % 2 == 1) if kinds is not None else np.zeros(start.size, dtype=np.bool_)
     group = (heads // 2 if kinds is not None else heads).astype(np.int32)
     return Runs(order, np.append(start, count), group, curved)
+
+
+def sampled_groups(flow: FlowArrays) -> NDArray[np.bool_]:
+    """Return which groups have a field at quadrature points.
+
+    Parameters
+    ----------
+    flow : FlowArrays
+        The fields.
+
+    Returns
+    -------
+    ndarray, shape (n_groups,), bool
+        These groups are integrated point by point.
+    """
+    fields = (flow.velocity, flow.traction, flow.pressure, flow.density)
+    return np.logical_or.reduce([field.where == AT_SAMPLE for field in fields])

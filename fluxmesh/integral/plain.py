@@ -13,11 +13,13 @@ from fluxmesh.integral.layout import (
     ABSENT,
     AT_FACE,
     AT_NODE,
+    AT_SAMPLE,
     PER_GROUP,
     FaceArrays,
     FieldArrays,
     FlowArrays,
     Runs,
+    sampled_groups,
 )
 from fluxmesh.integral.rules import TRIANGLE_DEGREE4
 from fluxmesh.integral.shapes import shape_tables
@@ -74,12 +76,19 @@ def integrate_plainly(
 def _corner_values(field: FieldArrays, group: int, faces: Indices, corners: Indices) -> Array | None:
     """Values of one field at the corners of faces, shape (faces, corners, k) or (faces, corners)."""
     where = int(field.where[group])
-    if where == ABSENT:
+    if where in (ABSENT, AT_SAMPLE):
         return None
     if where == AT_NODE:
         return field.scale * field.node[corners]
     per_face = field.scale * field.face[faces] if where == AT_FACE else field.group[np.full(faces.size, group)]
     return np.repeat(per_face[:, None], corners.shape[1], axis=1)
+
+
+def _at_point(field: FieldArrays, group: int, corner: Array | None, weights: Array, sample: Indices) -> Array | None:
+    """Values of one field at one quadrature point of each triangle or face."""
+    if field.where[group] == AT_SAMPLE:
+        return field.scale * field.sample[sample]
+    return None if corner is None else np.einsum("c,fc...->f...", weights, corner)
 
 
 def _gauge(flow: FlowArrays, group: int, pressure: Array | None, density: Array | None, x: Array) -> Array | None:
@@ -105,10 +114,16 @@ def _triangles(
 ) -> Array:
     size = corners.shape[1]
     x = _fan(mesh.points[corners] - origin)
-    velocity = _corner_values(flow.velocity, group, faces, corners)
-    traction = _corner_values(flow.traction, group, faces, corners)
-    density = _corner_values(flow.density, group, faces, corners)
-    pressure = _corner_values(flow.pressure, group, faces, corners)
+    fields = (flow.velocity, flow.traction, flow.density, flow.pressure)
+    parts = [_corner_values(field, group, faces, corners) for field in fields]
+    parts = [None if f is None else _fan(f) for f in parts]
+    sampled = bool(sampled_groups(flow)[group])
+    if not sampled:
+        parts[3] = _gauge(flow, group, parts[3], parts[2], x)
+    pieces = 1 if size == 3 else size
+    first = np.zeros(faces.size * pieces, np.int64)
+    if sampled:
+        first = (flow.sample_start[faces][:, None] + len(TRIANGLE_DEGREE4) * np.arange(pieces)).ravel()
     normal = 0.5 * np.cross(x[:, 1] - x[:, 0], x[:, 2] - x[:, 0])
     area = np.linalg.norm(normal, axis=1)
     if size > 3:
@@ -120,16 +135,16 @@ def _triangles(
         if size > 3:
             pieces = area.reshape(-1, size)
             mass = (mass[:, None] * pieces / pieces.sum(axis=1, keepdims=True)).ravel()
-    parts = [None if f is None else _fan(f) for f in (velocity, traction, density, pressure)]
-    parts[3] = _gauge(flow, group, parts[3], parts[2], x)
     total = np.zeros(WIDTH)
-    for weights, weight in TRIANGLE_DEGREE4:
+    for q, (weights, weight) in enumerate(TRIANGLE_DEGREE4):
         point = np.array(weights)
-        at = [None if f is None else np.einsum("c,fc...->f...", point, f) for f in parts]
+        place = np.einsum("c,fck->fk", point, x)
+        at = [_at_point(field, group, part, point, first + q) for field, part in zip(fields, parts)]
+        if sampled:
+            at[3] = _gauge(flow, group, at[3], at[2], place)
         total += _points(
-            np.einsum("c,fck->fk", point, x), weight * normal, weight * area, at[0], at[1], at[2], at[3],
-            None if mass is None else weight * mass,
-        )  # fmt: skip
+            place, weight * normal, weight * area, at[0], at[1], at[2], at[3], None if mass is None else weight * mass
+        )
     return total
 
 
@@ -138,22 +153,22 @@ def _curved(mesh: FaceArrays, flow: FlowArrays, faces: Indices, kind: int, group
     size = int(tables.size[kind])
     corners = mesh.connectivity[mesh.offsets[faces][:, None] + np.arange(size)]
     x = mesh.points[corners] - origin
-    fields = [
-        _corner_values(field, group, faces, corners)
-        for field in (flow.velocity, flow.traction, flow.density, flow.pressure)
-    ]
-    fields[3] = _gauge(flow, group, fields[3], fields[2], x)
+    fields = (flow.velocity, flow.traction, flow.density, flow.pressure)
+    parts = [_corner_values(field, group, faces, corners) for field in fields]
+    first = flow.sample_start[faces] if flow.sample_start.size else np.zeros(faces.size, np.int64)
     shape, by_u, by_v = (table[kind][:, :size] for table in (tables.value, tables.along_u, tables.along_v))
     normals = np.cross(np.einsum("qa,fak->qfk", by_u, x), np.einsum("qa,fak->qfk", by_v, x))
     normals *= tables.weight[kind][:, None, None]
     areas = np.linalg.norm(normals, axis=2)
     total = np.zeros(WIDTH)
     for q in range(shape.shape[0]):
-        at = [None if f is None else np.einsum("a,fa...->f...", shape[q], f) for f in fields]
+        place = np.einsum("a,fak->fk", shape[q], x)
+        at = [_at_point(field, group, part, shape[q], first + q) for field, part in zip(fields, parts)]
+        at[3] = _gauge(flow, group, at[3], at[2], place)
         mass = None
         if flow.mass.where[group] == AT_FACE:
             mass = flow.mass.scale * flow.mass.face[faces] * areas[q] / areas.sum(axis=0)
-        total += _points(np.einsum("a,fak->fk", shape[q], x), normals[q], areas[q], at[0], at[1], at[2], at[3], mass)
+        total += _points(place, normals[q], areas[q], at[0], at[1], at[2], at[3], mass)
     return total
 
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from fluxmesh.case.model import Case
@@ -147,10 +149,10 @@ def _supplied(case: Case, shape: Shape, flow: Flow) -> Flow:
             )
         velocity = supply(velocity, k, vector)
         mass_flux = _without(mass_flux, k)
-    return Flow(density, velocity, pressure, flow.traction, mass_flux, flow.meaning, flow.ambient, flow.gravity)
+    return replace(flow, density=density, velocity=velocity, pressure=pressure, mass_flux=mass_flux)
 
 
 def _without(field: Field, group: int) -> Field:
     where = field.where.copy()
     where[group] = 0
-    return Field(field.name, field.components, where, field.node, field.face, field.group, field.scale, field.label)
+    return replace(field, where=where)

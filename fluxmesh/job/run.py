@@ -193,6 +193,4 @@ def run_case(case: Case, *, threads: int | None = None) -> Outcome:
     asked = case.reported
     if asked is None:
         return done
-    return replace(
-        done, comparison=compare_reported(done.balance, force=asked.force, moment=asked.moment, on=asked.on)
-    )
+    return replace(done, comparison=compare_reported(done.balance, force=asked.force, moment=asked.moment, on=asked.on))

@@ -266,13 +266,14 @@ def thin(scene: Scene, most: int = 400_000) -> Scene:
         # Slivers all the way down: show some of the triangles as they are.
         points, triangles = scene.points, scene.triangles
         kept = np.linspace(0, len(triangles) - 1, most).astype(np.int64)
+    used, numbered = np.unique(triangles[kept], return_inverse=True)
     extremes = scene.pressure_range
     if scene.pressure is not None and extremes is None and not np.isnan(scene.pressure).all():
         extremes = float(np.nanmin(scene.pressure)), float(np.nanmax(scene.pressure))
     return replace(
         scene,
-        points=points,
-        triangles=triangles[kept],
+        points=points[used],
+        triangles=numbered.reshape(-1, 3),
         group_of_triangle=scene.group_of_triangle[kept],
         pressure=None if scene.pressure is None else scene.pressure[kept],
         pressure_range=extremes,

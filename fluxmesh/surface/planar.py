@@ -140,19 +140,26 @@ def planar_region_around(
     entries, starts = corner_entries(offsets, faces)
     place = points[connectivity[entries]].astype(np.float64)
     start = int(np.searchsorted(faces, seed))
-    normal, origin = geometry.normals[seed], geometry.centroids[seed]
+    # A small face gives a poor normal: the first plane has the mean normal of all that hangs together
+    # with the seed, the following ones that of what the plane before caught.
+    label = region_of(pairs, faces.size)
+    normal, origin = _mean_plane(geometry, faces[label == label[start]])[0], geometry.centroids[seed]
     region = np.zeros(faces.size, dtype=bool)
     for _ in range(_REFITS):
-        # a small face gives a poor normal: the plane is fitted again to what it caught
         level = np.maximum.reduceat(np.abs((place - origin) @ normal), starts[:-1]) <= distance
         level[start] = True
         label = region_of(pairs[level[pairs].all(axis=1)], faces.size)
         before, region = region, label == label[start]
         if np.array_equal(before, region):
             break
-        normals, origins, _ = _means(geometry, faces[region], np.zeros(int(region.sum()), dtype=np.int64))
-        normal, origin = normals[0], origins[0]
+        normal, origin = _mean_plane(geometry, faces[region])
     return faces[region]
+
+
+def _mean_plane(geometry: FaceGeometry, faces: NDArray[np.int64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Return the mean normal and the centroid of some faces."""
+    normals, centroids, _ = _means(geometry, faces, np.zeros(faces.size, dtype=np.int64))
+    return normals[0], centroids[0]
 
 
 def _planar(

@@ -53,7 +53,9 @@ _DAMAGE = (
 _LEFT_OUT = {"svg", "tetgen", "wkt"}
 # Readers that take an open file. Many of them read on for ever at the end of one that was cut short,
 # so they get a file that does not let them.
-_TEXT = frozenset(".avs .bdf .dat .dato .fem .inp .mesh .nas .off .post .su2 .tec .vol".split())
+_TEXT = frozenset(
+    (".avs", ".bdf", ".dat", ".dato", ".fem", ".inp", ".mesh", ".nas", ".off", ".post", ".su2", ".tec", ".vol")
+)
 _BINARY = frozenset([".mdpa", ".msh"])
 # What it says aloud of files that it reads all the same, though they were cut short.
 _CUT = re.compile(r"(\$\w+)\s+not\s+closed|but\s+found\s+only")

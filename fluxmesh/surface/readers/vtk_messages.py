@@ -33,7 +33,8 @@ class MessageLog:
             if _WHERE.match(line):
                 error = line.startswith("ERROR")
             elif "InformationKey" in line:
-                # notes of VTK beside an array (its range, say) that it cannot read back, such as "inf"; the data are whole
+                # notes of VTK beside an array (its range, say) that it cannot read back, such as "inf";
+                # the data are whole
                 error = False
             elif line.strip() and (error or "error reading" in line.lower()):
                 return _WHO.sub("", line).strip().rstrip(".!")
