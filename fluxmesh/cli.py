@@ -77,9 +77,10 @@ def balance(
 
 def _draw(done: Any, folder: Path) -> None:
     from fluxmesh.report.pictures import draw_pressure, draw_vectors
+    from fluxmesh.report.scene import thin
     from fluxmesh.report.sketch import scene_of
 
-    scene = scene_of(done.title, done.surface, done.flow, done.balance, notes=done.assumptions)
+    scene = thin(scene_of(done.title, done.surface, done.flow, done.balance, notes=done.assumptions))
     try:
         draw_vectors(scene, folder / "vectors.png")
         typer.echo(f"Written: {folder / 'vectors.png'}")

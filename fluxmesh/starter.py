@@ -14,8 +14,10 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import OutputError
 from fluxmesh.surface.files import read_mesh
-from fluxmesh.surface.planar import corners, edge_neighbours, face_geometry, planar_regions
+from fluxmesh.surface.face_geometry import corners, face_geometry
+from fluxmesh.surface.planar import planar_regions
 from fluxmesh.surface.rawmesh import RawMesh
+from fluxmesh.surface.touching import edge_neighbours
 from fluxmesh.units import unit_factor
 
 __all__ = ["propose_case", "write_case"]
@@ -120,7 +122,7 @@ def _planes(mesh: RawMesh, factor: float) -> list[_Group]:
     size = float(np.linalg.norm(np.ptp(points, axis=0)))
     pairs = edge_neighbours(points, entries, offsets, every, 1e-6 * size)
     blunt = np.einsum("ij,ij->i", whole.normals[pairs[:, 0]], whole.normals[pairs[:, 1]]) > _SHARP
-    groups = []
+    groups: list[_Group] = []
     for region in found:
         inside = np.zeros(mesh.face_count, np.bool_)
         inside[region.faces] = True

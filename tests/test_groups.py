@@ -33,6 +33,8 @@ def test_unsigned_and_column_shaped_and_boolean_tags() -> None:
     assert by_array(np.array([[0], [200]], dtype=np.uint8), {"a": (0,), "b": (200,)}).tolist() == [0, 1]
     high = np.array([2**64 - 1, 5], dtype=np.uint64)
     assert by_array(high, {"a": (5,)}, rest=True).tolist() == [-1, 0]
+    with pytest.raises(GroupError, match="group 'b' has no faces: no face has the tag -1"):
+        by_array(high, {"a": (5,), "b": (-1,)}, rest=True)
     assert by_array(np.array([True, False]), {"a": (0,), "b": (1,)}).tolist() == [1, 0]
 
 
@@ -250,28 +252,25 @@ def test_one_file_a_group(tmp_path: Path) -> None:
         body.extract_cells(np.arange(4, 12)).extract_surface(algorithm="dataset_surface"), tmp_path / "shell.vtp"
     )
     write_ply(tmp_path / "drain.ply", BOX_POINTS, [[4, 5, 6, 7]], "ascii", np.arange(8.0), np.array([4]))
-    joined = read_meshes(
-        {name: tmp_path / f"{name}.{suffix}" for name, suffix in [("feed", "stl"), ("shell", "vtp"), ("drain", "ply")]}
-    )
+    suffixes = {"shell": "vtp", "feed": "stl", "drain": "ply"}
+    joined = read_meshes({name: tmp_path / f"{name}.{suffix}" for name, suffix in suffixes.items()})
     mesh = joined.mesh
-    assert joined.names == ("feed", "shell", "drain")
-    assert joined.group_of_face.tolist() == [0] * 2 + [1] * 8 + [2]
+    assert joined.names == ("shell", "feed", "drain")
+    assert joined.group_of_face.tolist() == [0] * 8 + [1] * 2 + [2]
     assert joined.group_of_face.dtype == np.int32
-    assert np.bincount(joined.group_of_point).tolist() == [6, 8, 8]
+    assert np.bincount(joined.group_of_point).tolist() == [8, 6, 8]
     assert mesh.offsets is not None
     assert np.diff(mesh.offsets).tolist() == [3] * 10 + [4]
     # the same corners as the box, triangle by triangle and then the quad
-    assert_array_equal(
-        mesh.points[mesh.connectivity[:30]].reshape(-1, 3, 3), np.concatenate([corners[:2], corners[4:]])
-    )
+    assert_array_equal(mesh.points[mesh.connectivity[:30]].reshape(-1, 3, 3), np.roll(corners, -4, axis=0)[:10])
     assert_array_equal(mesh.points[mesh.connectivity[30:]], BOX_POINTS[[4, 5, 6, 7]])
-    assert {name: faces.tolist() for name, faces in mesh.face_sets.items()} == {"inner": [0, 1]}
+    assert {name: faces.tolist() for name, faces in mesh.face_sets.items()} == {"inner": [8, 9]}
     assert joined.node_arrays["feed"] == frozenset()
     assert {"p", "U", "n"} <= joined.node_arrays["shell"]
     assert joined.node_arrays["drain"] == {"pressure"}
     assert joined.face_arrays["drain"] == {"part"}
-    assert np.isnan(mesh.node_arrays["n"][:6]).all()
-    assert sorted(mesh.node_arrays["n"][6:14]) == list(range(8))
+    assert sorted(mesh.node_arrays["n"][:8]) == list(range(8))
+    assert np.isnan(mesh.node_arrays["n"][8:]).all()
     assert mesh.node_arrays["U"].shape == (22, 3)
     assert mesh.node_arrays["pressure"].dtype == np.float32
     assert_array_equal(mesh.node_arrays["pressure"][14:], np.arange(8))

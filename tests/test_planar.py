@@ -17,6 +17,7 @@ from fluxmesh.surface.face_geometry import (
 )
 from fluxmesh.surface.planar import planar_regions
 from fluxmesh.surface.surface import FaceKind
+from fluxmesh.surface.touching import edge_neighbours
 from tests.mesh_writing import BOX_POINTS, BOX_QUADS, BOX_TRIANGLES
 
 QUADS, QUAD_STARTS = BOX_QUADS.ravel(), np.arange(0, 25, 4)
@@ -123,8 +124,9 @@ def stadium(segments: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     points = np.concatenate([np.column_stack([outline, np.full(count, z)]) for z in (0.0, 4.0)])
     ring = np.arange(count)
     sides = np.column_stack([ring, np.roll(ring, -1), np.roll(ring, -1) + count, ring + count])
+    sides = sides[:, [0, 1, 2, 0, 2, 3]]
     faces = np.concatenate([sides.ravel(), ring[::-1], ring + count])
-    offsets = np.concatenate([np.arange(0, sides.size + 1, 4), sides.size + count * np.arange(1, 3)])
+    offsets = np.concatenate([np.arange(0, sides.size + 1, 3), sides.size + count * np.arange(1, 3)])
     return points, faces, offsets
 
 
@@ -135,6 +137,27 @@ def test_flat_sides_that_run_smoothly_into_a_bend_are_found() -> None:
     assert [round(region.area, 3) for region in regions[:4]] == [8.0, 8.0, 7.142, 7.142]
     assert sorted(np.round(region.normal, 6).tolist() for region in regions[:2]) == [[0, -1, 0], [0, 1, 0]]
     assert regions[4].area < 0.05
+
+
+def test_small_curl_at_the_rim_is_no_part_of_the_plane() -> None:
+    # steps of 0.8 degrees, each within the angle of the one before, rising by far less than the tolerance
+    turn = np.radians(0.8 * np.arange(6))
+    along = np.concatenate([[0, 1], 1 + np.cumsum(1e-5 * np.cos(turn[1:]))])
+    rise = np.concatenate([[0, 0], np.cumsum(1e-5 * np.sin(turn[1:]))])
+    points = np.concatenate([np.column_stack([along, np.full(7, y), rise]) for y in (0.0, 1.0)])
+    rows = np.array([[k, k + 1, k + 8, k + 7] for k in range(6)])
+    regions = planar_regions(points, rows.ravel(), np.arange(0, 25, 4))
+    assert regions[0].faces.tolist() == [0]
+
+
+def test_copies_of_points_count_as_one_without_any_tolerance() -> None:
+    points = BOX_POINTS[BOX_TRIANGLES.ravel()]
+    points[points == 0.0] = -0.0
+    points[:18][points[:18] == 0.0] = 0.0
+    pairs = edge_neighbours(points, np.arange(36), None, np.arange(12), 0.0)
+    # a closed surface of 12 triangles has 18 edges
+    assert len(pairs) == 18
+    assert len(np.unique(np.sort(pairs, axis=1), axis=0)) == 18
 
 
 def test_every_face_with_area_is_in_one_region_at_most() -> None:

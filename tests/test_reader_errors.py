@@ -169,6 +169,7 @@ def test_legacy_vtk_cut_short(tmp_path: Path, refuse: Refuse, binary: bool) -> N
             "'LOOKUP_TABLE default' holds 5 values of 6",
         ),
         ("POINT_DATA 3\nVECTORS U double\n1 2 3 4 5 6 7 8\n", "'VECTORS U double' holds 8 values of 9"),
+        ("POINT_DATA 3\nVECTORS U double\n1 2 3\nnan 5 6\n7 8\n", "'VECTORS U double' holds 8 values of 9"),
         ("CELL_DATA 1\nFIELD FieldData 1\nS 9 1 double\n1 2 3\n", "'S 9 1 double' holds 3 values of 9"),
         ("CELL_DATA 1\nTENSORS S double\n1 2 3 4 -inf\n", "'TENSORS S double' holds 5 values of 9"),
         ("", "'POLYGONS 1 4' holds 3 values of 4"),

@@ -380,7 +380,7 @@ def test_version_4_msh_file_with_named_entities_and_node_data(tmp_path: Path, re
     path = tmp_path / "plate.msh"
     path.write_text(
         '$MeshFormat\n4.1 0 8\n$EndMeshFormat\n$PhysicalNames\n2\n2 1 "feed"\n2 2 "shell"\n$EndPhysicalNames\n'
-        "$Entities\n0 0 2 0\n1 0 0 0 1 1 0 1 1 0\n2 0 0 0 1 1 1 1 2 0\n$EndEntities\n"
+        "$Entities\n0 1 2 0\n1 0 0 0 1 0 0 0 0\n1 0 0 0 1 1 0 1 1 1 1\n2 0 0 0 1 1 1 1 2 1 1\n$EndEntities\n"
         "$Nodes\n1 4 1 4\n2 1 0 4\n1\n2\n3\n4\n0 0 0\n1 0 0\n1 1 0\n0 1 0\n$EndNodes\n"
         "$Elements\n2 2 1 2\n2 1 2 1\n1 1 2 3\n2 2 2 1\n2 1 3 4\n$EndElements\n"
         '$NodeData\n1\n"p"\n1\n0.0\n3\n0\n1\n4\n1 0.5\n2 1.5\n3 2.5\n4 3.5\n$EndNodeData\n'

@@ -220,8 +220,8 @@ def _pressure_doubts(flow: Flow, balance: Balance) -> list[Doubt]:
     spread = float(np.linalg.norm(balance.momentum.pressure()))
     flux = float(np.linalg.norm(balance.momentum.flux()))
     density = flow.uniform_density()
-    kinematic = flow.meaning.kind is PressureKind.GAUGE and density is not None and density > 50.0
-    if kinematic and balance.complete and balance.setting.walls().any() and flux > 0 and moving > 0 and dynamic > 0:
+    gauge = flow.meaning.kind is PressureKind.GAUGE
+    if gauge and density is not None and density > 50.0 and balance.complete and balance.setting.walls().any() and flux > 0 and moving > 0 and dynamic > 0:
         need = balance.momentum.flux() - balance.momentum.weight - balance.momentum.viscous()
         as_is = float(np.linalg.norm(balance.momentum.pressure() - need))
         times = float(np.linalg.norm(density * balance.momentum.pressure() - need))

@@ -3,12 +3,16 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Final
 
 import numpy as np
 
 from fluxmesh.balance.balance import Balance
 
 __all__ = ["Verdict", "relative_without_mean_pressure", "verdict_of"]
+
+# far above the rounding of a single-precision export (6e-8), far below any load worth anchoring
+_SMALLEST_SHARE: Final = 1e-4
 
 
 @dataclass(frozen=True)
@@ -64,6 +68,23 @@ def relative_without_mean_pressure(balance: Balance) -> float | None:
     return float(np.linalg.norm(ledger.residual())) / size if size > 0 else None
 
 
+def _judged(balance: Balance) -> list[tuple[str, float]]:
+    """Momentum laws with the measure that they are judged by.
+
+    Where all entries of a law vanish (no force on a tank under one pressure, no
+    moment about the axis of a straight pipe), what is left of them is round-off or noise of
+    the data on both sides of the fraction. Forces are therefore compared with no
+    less than a ten-thousandth of pressure times area, moments with no less than
+    the forces at the arm of a sphere of the same area.
+    """
+    table, linear, angular = balance.table, balance.momentum, balance.angular
+    acting = np.abs(table.column("pressure_area")) + 2 * np.abs(table.column("dynamic_pressure_area"))
+    forces = max(linear.size(), _SMALLEST_SHARE * float(acting.sum()))
+    arm = (float(table.total("area")) / (4 * np.pi)) ** 0.5
+    laws = (("Linear momentum", linear, forces), ("Angular momentum", angular, max(angular.size(), arm * forces)))
+    return [(law, float(np.linalg.norm(ledger.residual())) / size) for law, ledger, size in laws if size > 0]
+
+
 def _compare(law: str, relative: float, tolerance: float) -> str:
     word = "within" if relative <= tolerance else "MORE than"
     return f"{law}: residual {relative:.3g} of the entries, {word} the tolerance {tolerance:g}"
@@ -106,14 +127,9 @@ def verdict_of(balance: Balance, *, tolerance: float = 0.01, encloses_hardware: 
     walls = setting.walls()
     compared = balance.complete and (bool(walls.any()) or not encloses_hardware)
     if compared:
-        for law, ledger in (
-            ("Linear momentum", balance.momentum),
-            ("Angular momentum about the anchor", balance.angular),
-        ):
-            relative = ledger.relative()
-            if relative is not None:
-                measures.append(relative)
-                reasons.append(_compare(law, relative, tolerance))
+        for law, relative in _judged(balance):
+            measures.append(relative)
+            reasons.append(_compare(law, relative, tolerance))
         reasons += _momentum_doubts(balance, tolerance)
     elif balance.complete:
         reasons.append("Momentum: no wall group, so its residual is the load on whatever the surface encloses")

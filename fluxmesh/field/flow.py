@@ -172,7 +172,10 @@ def lay_flow(
     if len(down) != 3 or not np.isfinite(down).all():
         raise FieldError(f"gravity is {gravity!r}", remedy="Three finite numbers in m/s² are needed")
     flow = Flow(
-        **fields,
+        density=fields["density"],
+        velocity=fields["velocity"],
+        pressure=fields["pressure"],
+        traction=fields["traction"],
         mass_flux=lay("mass flux", 1, mass_flux),
         meaning=meaning or PressureMeaning(),
         ambient=ambient,

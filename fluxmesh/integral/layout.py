@@ -190,4 +190,4 @@ def sampled_groups(flow: FlowArrays) -> NDArray[np.bool_]:
         These groups are integrated point by point.
     """
     fields = (flow.velocity, flow.traction, flow.pressure, flow.density)
-    return np.logical_or.reduce([field.where == AT_SAMPLE for field in fields])
+    return np.asarray(np.logical_or.reduce([field.where == AT_SAMPLE for field in fields]))

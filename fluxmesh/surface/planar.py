@@ -147,7 +147,6 @@ def planar_region_around(
     region = np.zeros(faces.size, dtype=bool)
     for _ in range(_REFITS):
         level = np.maximum.reduceat(np.abs((place - origin) @ normal), starts[:-1]) <= distance
-        level[start] = True
         label = region_of(pairs[level[pairs].all(axis=1)], faces.size)
         before, region = region, label == label[start]
         if np.array_equal(before, region):
