@@ -79,6 +79,17 @@ def test_vtp_gives_points_faces_and_arrays_exactly(tmp_path: Path, read: Read, m
     assert_arrays(mesh.face_arrays, {"region": REGION, "p": np.arange(12, dtype=np.float32)})
 
 
+@pytest.mark.parametrize("mode", VTP_MODES)
+def test_values_that_are_not_finite_are_read_as_they_are(tmp_path: Path, read: Read, mode: str) -> None:
+    # telling where they stand is for the one who uses the array
+    data = box_polydata()
+    data.point_data["p"] = values = np.array([1, np.nan, np.inf, 2, 3, 4, 5, 6])
+    data.cell_data["only_nan"] = np.full(12, np.nan)
+    mesh = read(write_vtk_xml(data, tmp_path / "box.vtp", mode))
+    np.testing.assert_array_equal(mesh.node_arrays["p"], values)
+    assert np.isnan(mesh.face_arrays["only_nan"]).all()
+
+
 def test_vtp_arrays_are_views_that_outlive_the_reader(tmp_path: Path, read: Read) -> None:
     mesh = read(write_vtk_xml(box_polydata(), tmp_path / "box.vtp"))
     gc.collect()

@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from fluxmesh.surface.compiling import compiled
+from fluxmesh.compiling import compiled
 from fluxmesh.surface.edge_kernels import corner_count, edge_end, join
 
 __all__ = ["join_sheets", "list_edges", "list_midside_gaps", "relate_faces"]

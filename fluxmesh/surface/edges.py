@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import SurfaceError
 from fluxmesh.surface import edge_kernels, edge_passes
-from fluxmesh.surface.compiling import run_parts, thread_count
+from fluxmesh.compiling import run_parts, thread_count
 
 __all__ = ["EdgePairing", "FaceRelation", "pair_edges", "relate_faces"]
 

@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from fluxmesh.surface.compiling import compiled
+from fluxmesh.compiling import compiled
 
 __all__ = [
     "cell_numbers",

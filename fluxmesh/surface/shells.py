@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import SurfaceError
 from fluxmesh.surface import facet_kernels
-from fluxmesh.surface.compiling import run_parts
+from fluxmesh.compiling import run_parts
 from fluxmesh.surface.wording import counted
 
 __all__ = ["Facets", "ShellMeasures", "measure_shells", "nesting_depths"]

@@ -7,7 +7,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from fluxmesh.surface.compiling import compiled, run_parts, thread_count
+from fluxmesh.compiling import compiled, run_parts, thread_count
 
 __all__ = ["join_equal_points", "join_near_points", "with_midsides"]
 

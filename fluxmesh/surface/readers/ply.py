@@ -76,11 +76,12 @@ class _Source:
 
     def values(self, at: NDArray[np.int64], kind: np.dtype[Any]) -> NDArray[Any]:
         """Return the values that start at some slots."""
-        if not self.binary:
-            values: NDArray[Any] = self.slots[at].astype(kind)
-            return values
-        bytes_ = self.slots[at[:, None] + np.arange(kind.itemsize)]
-        return bytes_.reshape(-1).view(kind)
+        values: NDArray[Any]
+        if self.binary:
+            values = self.slots[at[:, None] + np.arange(kind.itemsize)].reshape(-1).view(kind)
+        else:
+            values = self.slots[at].astype(kind)
+        return values
 
     def strided(self, first: int, stride: int, rows: int, columns: int, kind: np.dtype[Any]) -> NDArray[Any]:
         """Return `columns` neighbouring values from each of `rows` rows of equal length."""
