@@ -46,18 +46,19 @@ def balance(
 
     Exit code 0: done; 1: done, and a balance does not close within the tolerance; 2: the input is at fault.
     """
-    from fluxmesh.job.warm import warmed
+    from fluxmesh.case.read import read_case
+    from fluxmesh.job.ahead import load_ahead
 
-    with warmed():
-        from fluxmesh.case.read import read_case
-        from fluxmesh.job.run import run_case
-        from fluxmesh.report.result import require_writable, write_json
-        from fluxmesh.report.terminal import print_balance
+    read = read_case(case)
+    loaded = load_ahead(read)
 
-        read = read_case(case)
-        folder = out or Path("results") / read.name
-        require_writable(folder)
-        done = run_case(read)
+    from fluxmesh.job.run import run_case
+    from fluxmesh.report.result import require_writable, write_json
+    from fluxmesh.report.terminal import print_balance
+
+    folder = out or Path("results") / read.name
+    require_writable(folder)
+    done = run_case(read, loaded=loaded)
     data = done.data()
     write_json(data, folder / "balance.json")
     console = _console()

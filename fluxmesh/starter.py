@@ -13,8 +13,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fluxmesh.errors import OutputError
-from fluxmesh.surface.files import read_mesh
 from fluxmesh.surface.face_geometry import corners, face_geometry
+from fluxmesh.surface.files import read_mesh
 from fluxmesh.surface.planar import planar_regions
 from fluxmesh.surface.rawmesh import RawMesh
 from fluxmesh.surface.touching import edge_neighbours

@@ -84,7 +84,8 @@ def main() -> None:
     FOLDER.mkdir(parents=True, exist_ok=True)
     path = FOLDER / "rotor.vtp"
     make().save(path, compression="zlib")
-    print(f"{path.name}: {path.stat().st_size / 1e3:.0f} kB; lift of one metre {DENSITY * WIND * CIRCULATION * LENGTH} N")
+    lift = DENSITY * WIND * CIRCULATION * LENGTH
+    print(f"{path.name}: {path.stat().st_size / 1e3:.0f} kB; lift of one metre {lift:.4f} N")
 
 
 if __name__ == "__main__":

@@ -101,7 +101,8 @@ def block_arrays(cells: int = 2) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     box = pyvista.Box(bounds=(0, 1, 0, 1, 0, 1), level=cells - 1, quads=False).clean()
     points = np.array(box.points, dtype=np.float64)
     triangles = box.faces.reshape(-1, 4)[:, 1:].astype(np.int64)
-    normals = np.cross(points[triangles[:, 1]] - points[triangles[:, 0]], points[triangles[:, 2]] - points[triangles[:, 0]])
+    a, b, c = (points[triangles[:, k]] for k in range(3))
+    normals = np.cross(b - a, c - a)
     centre = points[triangles].mean(axis=1)
     inward = np.einsum("ij,ij->i", normals, centre - 0.5) < 0
     triangles[inward] = triangles[inward][:, ::-1]

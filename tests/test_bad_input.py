@@ -102,7 +102,8 @@ def test_array_of_wrong_length(refused, block) -> None:
     lines = [
         "# vtk DataFile Version 3.0", "short", "ASCII", "DATASET POLYDATA", f"POINTS {mesh.n_points} double",
         *(" ".join(map(str, p)) for p in mesh.points.tolist()),
-        f"POLYGONS {mesh.n_cells} {4 * mesh.n_cells}", *("3 " + " ".join(map(str, f)) for f in mesh.regular_faces.tolist()),
+        f"POLYGONS {mesh.n_cells} {4 * mesh.n_cells}",
+        *("3 " + " ".join(map(str, f)) for f in mesh.regular_faces.tolist()),
         f"CELL_DATA {mesh.n_cells - 1}", "SCALARS region int 1", "LOOKUP_TABLE default",
         *(str(r) for r in mesh.cell_data["region"][:-1].tolist()),
     ]  # fmt: skip
@@ -167,7 +168,8 @@ def test_both_flow_rate_and_speed(refused, block) -> None:
 
 def test_open_surface(refused, block) -> None:
     mesh = block.mesh()
-    block.save(mesh.extract_cells(np.flatnonzero(mesh.cell_data["region"] != 2)).extract_surface(algorithm="dataset_surface"))
+    rest = mesh.extract_cells(np.flatnonzero(mesh.cell_data["region"] != 2))
+    block.save(rest.extract_surface(algorithm="dataset_surface"))
     block.write(CASE.replace('[groups.drain]\nrole = "outlet"\ntag = 2\n', ""))
     has(refused(), "open", "8 ", "4 m", "shell", "closed = false")
 

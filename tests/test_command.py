@@ -88,8 +88,8 @@ def test_planted_faults_are_seen(result, block) -> None:
 
 def test_an_open_piece_gives_group_integrals_and_says_so(fluxmesh, block) -> None:
     mesh = block.mesh()
-    walls = mesh.extract_cells(np.flatnonzero(mesh.cell_data["region"] == 3)).extract_surface(algorithm="dataset_surface")
-    block.save(walls)
+    walls = mesh.extract_cells(np.flatnonzero(mesh.cell_data["region"] == 3))
+    block.save(walls.extract_surface(algorithm="dataset_surface"))
     text = CASE.replace("[fluid]", "closed = false\n[fluid]").replace('groups = { array = "region" }\n', "")
     text = text.replace('[groups.feed]\nrole = "inlet"\ntag = 1\n[groups.drain]\nrole = "outlet"\ntag = 2\n', "")
     text = text.replace("tag = 3", "rest = true")
@@ -109,8 +109,10 @@ def test_an_open_piece_gives_group_integrals_and_says_so(fluxmesh, block) -> Non
 
 def test_every_load_is_printed_with_who_acts_on_whom_and_its_assumptions(fluxmesh, block) -> None:
     ran = fluxmesh("balance", block.case, "--out", "out", "--no-pictures")
-    for words in ("flow on hardware (walls)", "flow on hardware (balance)", "ANCHOR ON HARDWARE", "Assumed:", "Caution:"):
+    for words in ("flow on hardware (walls)", "flow on hardware (balance)", "ANCHOR ON HARDWARE"):
         assert words in ran.out
+    assert "Assumed:" in ran.out
+    assert "Caution:" in ran.out
     assert "water hammer" in ran.out
     assert "licensed engineer" in ran.out
 

@@ -19,6 +19,7 @@ from fluxmesh.field.flow import Flow, integrate_flow
 from fluxmesh.field.pressure import Head
 from fluxmesh.integral.table import IntegralTable
 from fluxmesh.job.laid import lay_case
+from fluxmesh.job.mesh import Loaded
 from fluxmesh.job.shape import read_shape
 from fluxmesh.report.result import result_data
 from fluxmesh.surface.surface import ControlSurface
@@ -158,13 +159,15 @@ def hardware_of(case: Case) -> Hardware | None:
     return Hardware(float(case.hardware.mass), case.hardware.centre or (0.0, 0.0, 0.0))
 
 
-def run_case(case: Case, *, threads: int | None = None) -> Outcome:
+def run_case(case: Case, *, loaded: Loaded | None = None, threads: int | None = None) -> Outcome:
     """Do the main job for a case.
 
     Parameters
     ----------
     case : Case
         A case that was read.
+    loaded : Loaded, optional
+        Its mesh, if it was read before.
     threads : int, optional
         Threads; all cores by default.
 
@@ -178,7 +181,7 @@ def run_case(case: Case, *, threads: int | None = None) -> Outcome:
     InputError
         The input is at fault; the message says where.
     """
-    shape = read_shape(case)
+    shape = read_shape(case, loaded)
     flow = lay_case(case, shape)
     done = balance_of(
         shape.surface,

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from fluxmesh.case.model import Case
 from fluxmesh.errors import FieldError, GroupError, InputError
 from fluxmesh.job.exported import ExportedArrays
-from fluxmesh.surface.files import read_mesh, read_meshes
+from fluxmesh.job.mesh import Loaded, load_mesh
 from fluxmesh.surface.groups import Pick, by_array, by_pick, by_sets
 from fluxmesh.surface.mend import mend
 from fluxmesh.surface.rawmesh import RawMesh
@@ -38,13 +38,15 @@ class Shape:
     turned: NDArray[np.bool_] | None
 
 
-def read_shape(case: Case) -> Shape:
+def read_shape(case: Case, loaded: Loaded | None = None) -> Shape:
     """Read the mesh of a case and make its control surface.
 
     Parameters
     ----------
     case : Case
         The case.
+    loaded : Loaded, optional
+        Its mesh, if it was read before.
 
     Returns
     -------
@@ -56,20 +58,8 @@ def read_shape(case: Case) -> Shape:
     InputError
         Files, groups or the surface are at fault; the message names them.
     """
-    has = None
-    joined_groups = None
-    if case.surface.files is not None:
-        joined = read_meshes(case.surface.files)
-        mesh = joined.mesh
-        has = {name: joined.node_arrays[name] | joined.face_arrays[name] for name in joined.names}
-        order = list(case.groups)
-        to_case = np.array([order.index(name) for name in joined.names], dtype=np.int32)
-        joined_groups = to_case[joined.group_of_face]
-        where = case.path.name
-    else:
-        assert case.surface.file is not None
-        mesh = read_mesh(case.surface.file)
-        where = case.surface.file.name
+    loaded = loaded or load_mesh(case)
+    mesh, where, joined_groups, has = loaded.mesh, loaded.where, loaded.owner, loaded.has
     points = np.ascontiguousarray(mesh.points, dtype=np.float64)
     factor = case.surface.length_unit.factor
     if factor != 1.0:

@@ -199,8 +199,8 @@ def _comparison_lines(comparison: Comparison | None) -> list[str]:
     if comparison.reported_force is not None:
         apart = "" if comparison.relative is None else f", {comparison.relative:.2%} apart"
         lines.append(
-            f"Reported by the solver on {on}: force {_row(comparison.reported_force)} N, here {_row(comparison.force)} N"
-            f"{apart} (compared, not used)."
+            f"Reported by the solver on {on}: force {_row(comparison.reported_force)} N, "
+            f"here {_row(comparison.force)} N{apart} (compared, not used)."
         )
     if comparison.reported_moment is not None:
         lines.append(

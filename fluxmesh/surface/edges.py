@@ -13,9 +13,9 @@ from typing import Any, NamedTuple, TypeAlias
 import numpy as np
 from numpy.typing import NDArray
 
+from fluxmesh.compiling import run_parts, thread_count
 from fluxmesh.errors import SurfaceError
 from fluxmesh.surface import edge_kernels, edge_passes
-from fluxmesh.compiling import run_parts, thread_count
 
 __all__ = ["EdgePairing", "FaceRelation", "pair_edges", "relate_faces"]
 

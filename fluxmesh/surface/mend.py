@@ -320,23 +320,32 @@ def _tell_turned(
 
 def _tell_open(piece: Workpiece, require_closed: bool) -> None:
     pairing = piece.pair(listing=True)
-    crowded = pairing.crowded_edges
-    keys = [edges[:, :2].min(axis=1) * piece.points.shape[0] + edges[:, :2].max(axis=1)
-            for edges in (pairing.open_edges, crowded)]  # fmt: skip
-    single = ~np.isin(*keys)
+    rows = pairing.open_edges
+    single = ~np.isin(_edge_keys(piece, rows), _edge_keys(piece, pairing.crowded_edges))
+    crowded = ""
+    if pairing.unbalanced_crowded_count:
+        crowded = _crowded_text(piece, pairing.unbalanced_crowded_count, rows[~single][0])
     if single.any():
-        openings = find_holes(piece.points, pairing.open_edges[single], piece.group_of_face, piece.group_names)
+        openings = find_holes(piece.points, rows[single], piece.group_of_face, piece.group_names)
         found = f"the surface is open: {describe_openings(openings)}"
         remedy = "Add the missing faces (a port that was not exported?)"
-        if pairing.crowded_count:
-            found += f"; {_crowded_text(piece, pairing.crowded_count, crowded[0])}"
+        if openings.slits == openings.count:
+            remedy = (
+                "Export it so that neighbours share the points of their edge, "
+                "or raise weld, the distance within which points are joined"
+            )
+        if crowded:
+            found += f"; {crowded}"
     else:
-        count = pairing.unbalanced_crowded_count
-        found = f"{_crowded_text(piece, count, pairing.open_edges[0])} without a balance"
+        found = f"{crowded} without a balance"
         remedy = "Leave out inner walls and overlapping faces: export the wetted surface only"
     if require_closed:
         raise SurfaceError(found, remedy=f"{remedy}, or set closed = false to get the integrals of each group only")
     piece.note(found)
+
+
+def _edge_keys(piece: Workpiece, rows: NDArray[np.int64]) -> NDArray[np.int64]:
+    return np.asarray(rows[:, :2].min(axis=1) * piece.points.shape[0] + rows[:, :2].max(axis=1))
 
 
 def _crowded_text(piece: Workpiece, count: int, edge: NDArray[np.int64]) -> str:

@@ -15,9 +15,9 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
+from fluxmesh.compiling import run_parts
 from fluxmesh.errors import SurfaceError
 from fluxmesh.surface import facet_kernels
-from fluxmesh.compiling import run_parts
 from fluxmesh.surface.wording import counted
 
 __all__ = ["Facets", "ShellMeasures", "measure_shells", "nesting_depths"]

@@ -144,7 +144,8 @@ def _require_points(points: NDArray[Any]) -> None:
         bad = np.flatnonzero(~np.isfinite(points).all(axis=1))
         if bad.size:
             raise SurfaceError(
-                f"{bad.size} of {points.shape[0]} points have coordinates that are not finite, the first is point {bad[0]}",
+                f"{bad.size} of {points.shape[0]} points have coordinates that are not finite, "
+                f"the first is point {bad[0]}",
                 remedy="Export the mesh again",
             )
 
