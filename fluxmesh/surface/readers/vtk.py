@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import FieldError, FileError
 from fluxmesh.surface.rawmesh import RawMesh
-from fluxmesh.surface.readers.faces import Faces, require_faces
+from fluxmesh.surface.readers.faces import Faces, gather, require_faces
 from fluxmesh.surface.readers.vtk_cells import faces_of_grid, faces_of_polydata
 from fluxmesh.surface.readers.vtk_legacy import check_vtk_legacy
 from fluxmesh.surface.readers.vtk_messages import captured_messages
@@ -165,8 +165,6 @@ def _without_ghosts(faces: Faces, ghosts: NDArray[Any] | None, cell_count: int) 
     """Leave out cells that a partitioned export marks as copies, and count them."""
     if ghosts is None or not ghosts.any():
         return faces, {}
-    from fluxmesh.surface.readers.faces import gather
-
     cells = np.arange(cell_count) if faces.cell_of_face is None else faces.cell_of_face
     kept = np.flatnonzero((ghosts[cells] & _GHOST_BITS) == 0)
     dropped = cells.size - kept.size
