@@ -75,6 +75,7 @@ def measure_shells(
     shell_of_face: Array,
     origins: Array,
     thinness: float,
+    boxed: bool,
     lows: Array,
     highs: Array,
     sums: Array,
@@ -94,6 +95,8 @@ def measure_shells(
         A point near each shell, m; its volume is taken about it.
     thinness : float
         A face whose area is at most this times its longest side squared has none.
+    boxed : bool
+        Whether boxes are wanted: finding them costs more than all the rest.
     lows, highs : ndarray, shape (n_parts, n_shells, 3), float64
         Corners of the boxes, m; to be given as +inf and -inf.
     sums : ndarray, shape (n_parts, n_shells, 2), float64
@@ -122,8 +125,9 @@ def measure_shells(
                 ax, ay, az = points[i, 0], points[i, 1], points[i, 2]
                 bx, by, bz = points[j, 0], points[j, 1], points[j, 2]
                 cx, cy, cz = points[k, 0], points[k, 1], points[k, 2]
-                x0, y0, z0 = min(x0, ax, bx, cx), min(y0, ay, by, cy), min(z0, az, bz, cz)
-                x1, y1, z1 = max(x1, ax, bx, cx), max(y1, ay, by, cy), max(z1, az, bz, cz)
+                if boxed:
+                    x0, y0, z0 = min(x0, ax, bx, cx), min(y0, ay, by, cy), min(z0, az, bz, cz)
+                    x1, y1, z1 = max(x1, ax, bx, cx), max(y1, ay, by, cy), max(z1, az, bz, cz)
                 ux, uy, uz, vx, vy, vz = bx - ax, by - ay, bz - az, cx - ax, cy - ay, cz - az
                 nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
                 area += 0.5 * np.sqrt(nx * nx + ny * ny + nz * nz)
@@ -133,7 +137,8 @@ def measure_shells(
             if area <= thinness * longest:
                 flat[face] = True
         if shell >= 0:
-            _add_run(lows[part, shell], highs[part, shell], x0, y0, z0, x1, y1, z1)
+            if boxed:
+                _add_run(lows[part, shell], highs[part, shell], x0, y0, z0, x1, y1, z1)
             sums[part, shell, 0] += volume / 6.0
             sums[part, shell, 1] += total
         begin = stop

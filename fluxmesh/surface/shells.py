@@ -108,6 +108,7 @@ def measure_shells(facets: Facets, shell_of_face: NDArray[np.int32], shell_count
         choice of origin.
     """
     parts = _PARTS if shell_count <= _MANY_SHELLS else 1
+    boxed = shell_count != 1
     lows = np.full((parts, shell_count, 3), np.inf)
     highs = np.full((parts, shell_count, 3), -np.inf)
     sums = np.zeros((parts, shell_count, 2))
@@ -117,12 +118,20 @@ def measure_shells(facets: Facets, shell_of_face: NDArray[np.int32], shell_count
     origins = facets.first_points(first)
     run_parts(
         lambda part: facet_kernels.measure_shells(
-            part, *facets, shell_of_face, origins, _THINNESS, lows, highs, sums, flat
+            part, *facets, shell_of_face, origins, _THINNESS, boxed, lows, highs, sums, flat
         ),
         parts,
     )
     total = sums.sum(axis=0)
+    if not boxed:
+        return ShellMeasures(total[:, 0], total[:, 1], *_box_of_points(facets), flat)
     return ShellMeasures(total[:, 0], total[:, 1], lows.min(axis=0), highs.max(axis=0), flat)
+
+
+def _box_of_points(facets: Facets) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    # of a single shell the box serves as a length only, so points that no face uses do no harm
+    columns = facets.points.T
+    return np.array([[c.min() for c in columns]]), np.array([[c.max() for c in columns]])
 
 
 def nesting_depths(facets: Facets, shell_of_face: NDArray[np.int32], measures: ShellMeasures) -> NDArray[np.int64]:
