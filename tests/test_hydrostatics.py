@@ -78,14 +78,16 @@ def test_gravity_may_point_anywhere(seed: int) -> None:
 
 
 # Every way to say the same pressure: an array as exported, what it means, and the ambient pressure.
+ASLANT = GRAVITY * np.array([0.48, -0.6, -0.64])
+FAR = (5.0, 1.0, 7.0)
 SAME = {
-    "gauge with head": (lambda x: 3e4 + DENSITY * x @ DOWN, PressureMeaning(), None),
+    "gauge with head": (lambda x: 3e4 + DENSITY * x @ ASLANT, PressureMeaning(), None),
     "absolute with head": (
-        lambda x: AMBIENT + 3e4 + DENSITY * x @ DOWN,
+        lambda x: AMBIENT + 3e4 + DENSITY * x @ ASLANT,
         PressureMeaning(PressureKind.ABSOLUTE),
         AMBIENT,
     ),
-    "kinematic with head": (lambda x: 3e4 / DENSITY + x @ DOWN, PressureMeaning(PressureKind.KINEMATIC), None),
+    "kinematic with head": (lambda x: 3e4 / DENSITY + x @ ASLANT, PressureMeaning(PressureKind.KINEMATIC), None),
     "gauge, head removed": (lambda x: np.full(len(x), 3e4), PressureMeaning(head=Head.REMOVED), None),
     "absolute, head removed": (
         lambda x: np.full(len(x), AMBIENT + 3e4),
@@ -93,32 +95,44 @@ SAME = {
         AMBIENT,
     ),
     "kinematic, head removed about a far datum": (
-        lambda x: np.full(len(x), 3e4 / DENSITY + 7 * -GRAVITY),
-        PressureMeaning(PressureKind.KINEMATIC, Head.REMOVED, (5.0, 1.0, 7.0)),
+        lambda x: np.full(len(x), 3e4 / DENSITY + np.dot(FAR, ASLANT)),
+        PressureMeaning(PressureKind.KINEMATIC, Head.REMOVED, FAR),
         None,
     ),
 }
+KINDS = {f"polyhedron {seed}": any_polyhedron(seed) for seed in range(5)}
+ALIKE = {name: (body, body) for name, body in KINDS.items()}
+ALIKE["quadratic faces"] = (quadratic(KINDS["polyhedron 0"]), KINDS["polyhedron 0"])
 
 
 @pytest.mark.parametrize("name", SAME)
-@pytest.mark.parametrize("seed", range(5))
-def test_every_kind_of_pressure_gives_the_same_load(name: str, seed: int) -> None:
+@pytest.mark.parametrize("shape", ALIKE)
+def test_every_kind_of_pressure_gives_the_same_load(name: str, shape: str) -> None:
     pressure, meaning, ambient = SAME[name]
-    body = any_polyhedron(seed)
-    load = load_of(body, pressure, gravity=DOWN, meaning=meaning, ambient=ambient)
-    assert_weight(load, moments(body), size_of(body, 2e5))
+    body, straight = ALIKE[shape]
+    load = load_of(body, pressure, gravity=ASLANT, meaning=meaning, ambient=ambient)
+    assert_weight(load, moments(straight), size_of(body, 2e5), ASLANT)
 
 
 @pytest.mark.parametrize("name", SAME)
-def test_every_kind_of_pressure_gives_the_same_force_on_an_open_wall(name: str) -> None:
-    # on a wall alone the level counts: force (3e4 + rho g·x_c) A on the unit square x = 1, 0 < y, z < 1
+@pytest.mark.parametrize("at", ["points", "faces"])
+def test_every_kind_of_pressure_gives_the_same_force_on_an_open_wall(name: str, at: str) -> None:
+    # on a wall alone the level counts: force (3e4 + rho g·x_c) A on the unit square x = 1, 0 < y, z < 1; a head that is
+    # put back varies over the face also where the export has one value a face
     pressure, meaning, ambient = SAME[name]
     points = np.array([[1, 0, 0], [1, 1, 0], [1, 1, 1], [1, 0, 1.0]])
     surface = one_group(points, [[0, 1, 2, 3]]).surface(rest="wall", closed=False)
-    flow = lay_flow(surface, density=DENSITY, pressure=pressure(points), gravity=DOWN, meaning=meaning, ambient=ambient)
-    load = balance_of(surface, flow).balance.load
+    centre = np.array([[1, 0.5, 0.5]])
+    exported = pressure(points if at == "points" else centre)
+    flow = lay_flow(surface, density=DENSITY, pressure=exported, gravity=ASLANT, meaning=meaning, ambient=ambient)
+    load = balance_of(surface, flow, anchor=centre[0]).balance.load
     assert load.from_balance is None
-    assert_allclose(load.from_walls.force, [3e4 - DENSITY * GRAVITY / 2, 0, 0], rtol=1e-13, atol=1e-10)
+    size = 3e4 + DENSITY * (centre @ ASLANT)[0]
+    assert_allclose(load.from_walls.force, [size, 0, 0], rtol=1e-13, atol=1e-10)
+    if at == "points" or meaning.head is Head.REMOVED:
+        # moment about the middle of ∫ (x - c) rho g·(x - c) dA with ∫ y² = 1/12
+        expected = DENSITY / 12 * np.array([0, ASLANT[2], -ASLANT[1]])
+        assert_allclose(load.from_walls.moment, expected, rtol=1e-9, atol=1e-9)
 
 
 @settings(max_examples=25, deadline=None)

@@ -287,6 +287,10 @@ def test_moments_shift_with_the_anchor(seed: int) -> None:
     apart = np.cross(lines[1].point - lines[0].point, lines[0].direction)
     force = np.linalg.norm(before.forces[2])
     assert_allclose(apart * force, 0, rtol=0, atol=limit)
+    # the force on that line and the couple along it are the reaction (Poinsot 1803, from memory)
+    wrench, line = one.outcome().balance.reaction.wrench, lines[0]
+    again = np.cross(line.point - wrench.at, wrench.force) + line.couple * line.direction
+    assert_allclose(again, wrench.moment, rtol=0, atol=limit)
 
 
 @quick

@@ -67,7 +67,7 @@ def random_flow(
     mass: bool,
     codes: tuple[int, ...] = CODES,
 ) -> FlowArrays:
-    places, start = sample_places(mesh, np.ones(owner.size, np.bool_))
+    places, _, _, start = sample_places(mesh, np.ones(owner.size, np.bool_))
 
     def field(components: int, base: float, codes: tuple[int, ...]) -> FieldArrays:
         def values(count: int) -> np.ndarray:
@@ -134,7 +134,7 @@ def test_sampling_a_linear_field_equals_the_field_on_points(seed: int, family: s
     mesh = random_mesh(rng, sizes, kinds)
     owner = np.zeros(5, np.int32)
     slope, level = rng.standard_normal((3, 3)), rng.standard_normal(3)
-    places, start = sample_places(mesh, np.ones(5, np.bool_))
+    places, vectors, face, start = sample_places(mesh, np.ones(5, np.bool_))
     on_points = random_flow(rng, mesh, owner, 1, mass=False, codes=(AT_NODE,))
     # one density: products of two interpolated fields are not the same as those of point values
     on_points = on_points._replace(
@@ -156,6 +156,12 @@ def test_sampling_a_linear_field_equals_the_field_on_points(seed: int, family: s
     # round-off of sums of some hundred point values of size up to about a hundred
     assert_allclose(two, one, rtol=1e-12, atol=1e-11)
     assert start[-1] == len(places)
+    # places and area vectors are those of the kernel: they add up to its integrals, face by face
+    whole = integrate(flow=sampled, **shared)
+    assert_allclose(vectors.sum(axis=0), whole.column("area_vector")[0], rtol=0, atol=1e-13)
+    moments = np.einsum("si,sj->ij", places, vectors).ravel()
+    assert_allclose(moments, whole.column("position_normal")[0], rtol=0, atol=1e-13)
+    assert_array_equal(np.bincount(face, minlength=5), np.diff(start))
 
 
 def test_the_bits_do_not_depend_on_threads_nor_on_still_groups() -> None:

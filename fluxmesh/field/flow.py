@@ -24,7 +24,7 @@ from fluxmesh.integral.layout import ABSENT, PER_GROUP, FaceArrays, FlowArrays, 
 from fluxmesh.integral.table import IntegralTable
 from fluxmesh.surface.surface import ControlSurface, Role
 
-__all__ = ["Flow", "integrate_flow", "lay_flow", "near_origin", "require_flow", "still_flow"]
+__all__ = ["Flow", "face_arrays_of", "integrate_flow", "lay_flow", "near_origin", "require_flow", "still_flow"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -222,6 +222,22 @@ def near_origin(surface: ControlSurface) -> NDArray[np.float64]:
     return np.asarray(low + (high - low) / 2)
 
 
+def face_arrays_of(surface: ControlSurface) -> FaceArrays:
+    """Return the faces of a surface as the plain arrays that the kernels take.
+
+    Parameters
+    ----------
+    surface : ControlSurface
+        The surface.
+    """
+    return FaceArrays(
+        surface.points,
+        surface.connectivity,
+        np.empty(0, np.int64) if surface.offsets is None else surface.offsets,
+        np.empty(0, np.int8) if surface.kinds is None else surface.kinds,
+    )
+
+
 def integrate_flow(surface: ControlSurface, flow: Flow, *, threads: int | None = None) -> IntegralTable:
     """Return the table of basis integrals of a flow on a surface.
 
@@ -254,12 +270,7 @@ def integrate_flow(surface: ControlSurface, flow: Flow, *, threads: int | None =
             gravity=np.asarray(flow.gravity),
             origin=origin,
         )
-    mesh = FaceArrays(
-        surface.points,
-        surface.connectivity,
-        np.empty(0, np.int64) if surface.offsets is None else surface.offsets,
-        np.empty(0, np.int8) if surface.kinds is None else surface.kinds,
-    )
+    mesh = face_arrays_of(surface)
     arrays = FlowArrays(
         velocity=flow.velocity.arrays(),
         traction=flow.traction.arrays(),

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import NamedTuple
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -9,13 +11,36 @@ from fluxmesh.integral.layout import FaceArrays
 from fluxmesh.integral.rules import TRIANGLE_DEGREE4
 from fluxmesh.integral.shapes import shape_tables
 
-__all__ = ["sample_places"]
+__all__ = ["Samples", "sample_places"]
 
 _BARYCENTRIC = np.array([point for point, _ in TRIANGLE_DEGREE4])
+_RULE_WEIGHTS = np.array([weight for _, weight in TRIANGLE_DEGREE4])
 
 
-def sample_places(mesh: FaceArrays, chosen: NDArray[np.bool_]) -> tuple[NDArray[np.float64], NDArray[np.int64]]:
-    """Return the quadrature points of some faces.
+class Samples(NamedTuple):
+    """The quadrature points of some faces.
+
+    Attributes
+    ----------
+    places : ndarray, shape (n_samples, 3), float64
+        Points, face by face, m: six for each triangle of a straight face (a
+        polygon is a fan about the mean of its corners), 36 for a curved face.
+    area_vectors : ndarray, shape (n_samples, 3), float64
+        Normal times weighted area, m²: summed over a face they give its area vector.
+    face : ndarray, shape (n_samples,), int64
+        Face of each sample.
+    start : ndarray, shape (n_faces + 1,), int64
+        Where the samples of each face start; faces that are not chosen have none.
+    """
+
+    places: NDArray[np.float64]
+    area_vectors: NDArray[np.float64]
+    face: NDArray[np.int64]
+    start: NDArray[np.int64]
+
+
+def sample_places(mesh: FaceArrays, chosen: NDArray[np.bool_]) -> Samples:
+    """Return the quadrature points of some faces, in the order of the kernel.
 
     Parameters
     ----------
@@ -26,28 +51,26 @@ def sample_places(mesh: FaceArrays, chosen: NDArray[np.bool_]) -> tuple[NDArray[
 
     Returns
     -------
-    places : ndarray, shape (n_samples, 3), float64
-        Points, face by face, m: six for each triangle of a straight face (a
-        polygon is a fan about the mean of its corners), 36 for a curved face.
-    start : ndarray, shape (n_faces + 1,), int64
-        Where the samples of each face start; faces that are not chosen have none.
+    Samples
+        Their quadrature points.
     """
     count = chosen.size
     offsets = mesh.offsets if mesh.offsets.size else np.arange(0, 3 * count + 1, 3)
     sizes = np.diff(offsets)
     kinds = mesh.kinds if mesh.kinds.size else np.zeros(count, np.int8)
     curved_count = shape_tables().weight.shape[1]
-    each = np.where(kinds > 0, curved_count, np.where(sizes == 3, 1, sizes) * len(_BARYCENTRIC))
-    start = np.concatenate([[0], np.cumsum(np.where(chosen, each, 0))]).astype(np.int64)
-    places = np.empty((int(start[-1]), 3))
-    for kind in np.unique(kinds[chosen]) if chosen.any() else ():
+    each = np.where(chosen, np.where(kinds > 0, curved_count, np.where(sizes == 3, 1, sizes) * len(_BARYCENTRIC)), 0)
+    start = np.concatenate([[0], np.cumsum(each)]).astype(np.int64)
+    places, vectors = np.empty((int(start[-1]), 3)), np.empty((int(start[-1]), 3))
+    for kind in np.unique(kinds[chosen]):
         for size in np.unique(sizes[chosen & (kinds == kind)]):
             faces = np.flatnonzero(chosen & (kinds == kind) & (sizes == size))
             corners = mesh.points[mesh.connectivity[offsets[faces][:, None] + np.arange(size)]]
             weights = _weights(int(kind), int(size))
             rows = start[faces][:, None] + np.arange(weights.shape[0])
             places[rows] = np.einsum("qa,fak->fqk", weights, corners)
-    return places, start
+            vectors[rows] = _area_vectors(corners, int(kind))
+    return Samples(places, vectors, np.repeat(np.arange(count), each), start)
 
 
 def _weights(kind: int, size: int) -> NDArray[np.float64]:
@@ -62,3 +85,20 @@ def _weights(kind: int, size: int) -> NDArray[np.float64]:
         weights[piece, :, piece] += _BARYCENTRIC[:, 0]
         weights[piece, :, (piece + 1) % size] += _BARYCENTRIC[:, 1]
     return weights.reshape(-1, size)
+
+
+def _area_vectors(corners: NDArray[np.float64], kind: int) -> NDArray[np.float64]:
+    """Weighted area vectors at the quadrature points of faces, shape (faces, points, 3)."""
+    size = corners.shape[1]
+    if kind > 0:
+        tables = shape_tables()
+        along_u = np.einsum("qa,fak->fqk", tables.along_u[kind - 1, :, :size], corners)
+        along_v = np.einsum("qa,fak->fqk", tables.along_v[kind - 1, :, :size], corners)
+        return np.asarray(np.cross(along_u, along_v) * tables.weight[kind - 1][:, None])
+    pieces = corners[:, None]
+    if size > 3:
+        centre = np.broadcast_to(corners.mean(axis=1, keepdims=True), corners.shape)
+        pieces = np.stack([corners, np.roll(corners, -1, axis=1), centre], axis=2)
+    normal = 0.5 * np.cross(pieces[:, :, 1] - pieces[:, :, 0], pieces[:, :, 2] - pieces[:, :, 0])
+    weighted = normal[:, :, None] * _RULE_WEIGHTS[:, None]
+    return np.asarray(weighted.reshape(corners.shape[0], -1, 3))
