@@ -223,3 +223,23 @@ def test_an_older_result_stays_when_the_input_is_at_fault(fluxmesh, block) -> No
     assert result.read_bytes() == before
     assert [path.name for path in result.parent.iterdir()] == ["balance.json"]
     assert stat.S_IMODE(result.stat().st_mode) & 0o400
+
+
+def test_point_data_on_as_many_points_as_faces_needs_a_word() -> None:
+    import fluxmesh
+    from fluxmesh.errors import FieldError
+
+    faces = np.array([[0, 2, 1], [0, 1, 3], [0, 3, 2], [1, 2, 3]])
+    surface = fluxmesh.control_surface(np.vstack([np.zeros(3), np.eye(3)]), faces, {"a": ("wall", np.arange(4))})
+    with pytest.raises(FieldError, match='Say where it sits: at = "nodes" or "faces"'):
+        fluxmesh.lay_flow(surface, pressure=np.arange(4.0))
+    with pytest.raises(FieldError, match='Give "nodes" or "faces"'):
+        fluxmesh.lay_flow(surface, pressure=np.arange(4.0), at="corners")
+    loads = [
+        fluxmesh.balance_of(surface, fluxmesh.lay_flow(surface, pressure=np.arange(4.0), at=at)).balance.load
+        for at in ("nodes", {"pressure": "faces"})
+    ]
+    # linear from 0 at the origin to 1, 2, 3 on the axes: grad p times the volume, on the fluid
+    np.testing.assert_allclose(loads[0].from_walls.force, np.array([1, 2, 3]) / 6, rtol=1e-14)
+    # by hand: pressures 0, 1, 2, 3 on the faces z=0, y=0, x=0 and the slanted one
+    np.testing.assert_allclose(loads[1].from_walls.force, np.array([3 - 2, 3 - 1, 3 - 0]) / 2, rtol=1e-14)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from math import sqrt
 
 from fluxmesh.balance.setting import Setting
 from fluxmesh.integral.table import IntegralTable
@@ -30,6 +31,9 @@ class PortFigures:
         ``∫rho V² (V·n) dA (∫rho dA)² / (∫rho V·n dA)³``; 1 uniform, 2 laminar.
     reversed_share : float or None
         Mass that flows against the port's net flow, over all that passes.
+    mach_number : float or None
+        Mean speed over the speed of sound ``sqrt(heat_ratio p / rho)`` at the
+        mean absolute pressure and density, for an ideal gas.
     """
 
     mean_pressure_area: float | None
@@ -40,10 +44,22 @@ class PortFigures:
     momentum_factor: float | None
     kinetic_energy_factor: float | None
     reversed_share: float | None
+    mach_number: float | None
 
 
 def _over(numerator: float, denominator: float) -> float | None:
     return numerator / denominator if denominator != 0.0 else None
+
+
+def _mach_number(
+    setting: Setting, pressure_area: float, volume_flow: float, density_area: float, area: float
+) -> float | None:
+    if setting.heat_ratio is None or setting.ambient is None or area <= 0.0 or density_area <= 0.0:
+        return None
+    pressure = pressure_area / area + setting.ambient
+    if pressure <= 0.0:
+        return None
+    return abs(volume_flow) / area / sqrt(setting.heat_ratio * pressure / (density_area / area))
 
 
 def port_figures(table: IntegralTable, setting: Setting) -> dict[str, PortFigures]:
@@ -90,5 +106,8 @@ def port_figures(table: IntegralTable, setting: Setting) -> dict[str, PortFigure
             momentum_factor=_over(at("normal_momentum", k) * density, flow**2) if through else None,
             kinetic_energy_factor=_over(2 * at("kinetic_energy_flux", k) * density**2, flow**3) if through else None,
             reversed_share=_over(min(forward, backward), forward + backward) if flux else None,
+            mach_number=_mach_number(setting, at("pressure_area", k), at("volume_flow", k), density, area)
+            if both
+            else None,
         )
     return figures

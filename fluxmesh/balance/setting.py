@@ -64,6 +64,8 @@ class Setting:
         Point that moments and the reaction are about, m.
     hardware : Hardware or None
         None when its mass is not given.
+    heat_ratio, ambient : float or None
+        Of an ideal gas, and the ambient absolute pressure in Pa: for Mach numbers.
     """
 
     groups: tuple[Group, ...]
@@ -73,6 +75,8 @@ class Setting:
     fluid_density: float | None = None
     anchor: tuple[float, float, float] = (0.0, 0.0, 0.0)
     hardware: Hardware | None = field(default=None)
+    heat_ratio: float | None = None
+    ambient: float | None = None
 
     def walls(self) -> NDArray[np.bool_]:
         """Return which groups are hardware, shape (n_groups,)."""

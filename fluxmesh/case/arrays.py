@@ -4,17 +4,22 @@ from __future__ import annotations
 
 from typing import Annotated, Literal
 
-from pydantic import Field, ValidationInfo
+from pydantic import BeforeValidator, Field, ValidationInfo
 from pydantic_core import CoreSchema, core_schema
 
 from fluxmesh.case.values import (
     ArrayNames,
     DensityUnit,
+    FilePath,
+    Length,
+    LengthUnit,
     MassFlowUnit,
     Place,
+    RateUnit,
     SpeedUnit,
     StressUnit,
     Table,
+    TemperatureUnit,
     Text,
     UnitScale,
 )
@@ -22,7 +27,19 @@ from fluxmesh.errors import UnitError
 from fluxmesh.units import unit_factor
 from fluxmesh.units.wording import described
 
-__all__ = ["DensityArray", "FlowSection", "MassFluxArray", "PressureArray", "TractionArray", "VelocityArray"]
+__all__ = [
+    "DensityArray",
+    "FlowSection",
+    "GradientArray",
+    "MassFluxArray",
+    "PointSource",
+    "PressureArray",
+    "StressArray",
+    "TemperatureArray",
+    "TractionArray",
+    "VelocityArray",
+    "VolumeSource",
+]
 
 _KINEMATIC_UNIT = "m^2/s^2"
 _ARRAY = Field(description='the name of an array in the file, such as "U"')
@@ -143,6 +160,106 @@ class DensityArray(Table):
     at: Literal["nodes", "faces"] | None = None
 
 
+class TemperatureArray(Table):
+    """Where the temperature is.
+
+    Attributes
+    ----------
+    array : str
+        Name of a scalar array.
+    unit : UnitScale
+        Its unit: of an absolute temperature.
+    at : {"nodes", "faces"} or None
+        Where to look when the name occurs on both.
+    """
+
+    array: Text = _ARRAY
+    unit: TemperatureUnit = UnitScale("K", 1.0)
+    at: Literal["nodes", "faces"] | None = None
+
+
+class StressArray(Table):
+    """Where the viscous stress tensor is.
+
+    Attributes
+    ----------
+    array : str
+        An array of 6 or 9 components: the viscous part, without pressure.
+    unit : UnitScale
+        Its unit.
+    order : {"xx yy zz xy yz xz", "xx yy zz yz xz xy"}
+        Order of 6 components; 9 are row by row.
+    at : {"nodes", "faces"} or None
+        Where to look when the name occurs on both.
+    """
+
+    array: Text = _ARRAY
+    unit: StressUnit = UnitScale("Pa", 1.0)
+    order: Literal["xx yy zz xy yz xz", "xx yy zz yz xz xy"] = "xx yy zz xy yz xz"
+    at: Literal["nodes", "faces"] | None = None
+
+
+class GradientArray(Table):
+    """Where the velocity gradient is.
+
+    Attributes
+    ----------
+    array : str
+        An array of 9 components, row by row.
+    unit : UnitScale
+        Its unit.
+    rows : {"components", "directions"}
+        Whether a row holds the three derivatives of one velocity component,
+        or the derivatives of all along one direction.
+    at : {"nodes", "faces"} or None
+        Where to look when the name occurs on both.
+    """
+
+    array: Text = _ARRAY
+    unit: RateUnit = UnitScale("1/s", 1.0)
+    rows: Literal["components", "directions"] = "components"
+    at: Literal["nodes", "faces"] | None = None
+
+
+class VolumeSource(Table):
+    """A volume file that the fields are sampled from.
+
+    Attributes
+    ----------
+    file : Path
+        The file.
+    unit : UnitScale
+        Length unit of its coordinates.
+    reach : Measured or None
+        How far outside all cells a place may lie, m.
+    """
+
+    file: FilePath = Field(description='the name of a file, such as "flow.vtu"')
+    unit: LengthUnit = UnitScale("m", 1.0)
+    reach: Length | None = None
+
+
+class PointSource(Table):
+    """A file of scattered points that the fields are interpolated from.
+
+    Attributes
+    ----------
+    file : Path
+        The file.
+    coordinates : tuple of str, or None
+        Names of the three columns; found by their names where not given.
+    unit : UnitScale
+        Length unit of the coordinates.
+    reach : Measured or None
+        How far from the points a place may lie, m.
+    """
+
+    file: FilePath = Field(description='the name of a file, such as "cloud.csv"')
+    coordinates: ArrayNames | None = None
+    unit: LengthUnit = UnitScale("m", 1.0)
+    reach: Length | None = None
+
+
 class MassFluxArray(Table):
     """The mass flow through each face.
 
@@ -162,6 +279,11 @@ class MassFluxArray(Table):
     positive: Literal["out", "face-normal"] = "out"
 
 
+def _file_alone(value: object) -> object:
+    """Let a bare file name stand for a table that holds nothing else."""
+    return {"file": value} if isinstance(value, str) else value
+
+
 class FlowSection(Table):
     """Which exported array is what; each may be left out.
 
@@ -177,6 +299,14 @@ class FlowSection(Table):
         Density.
     mass_flux : MassFluxArray or None
         Mass flow through each face.
+    temperature : TemperatureArray or None
+        Temperature, for an ideal gas.
+    stress, velocity_gradient : StressArray or GradientArray, or None
+        What the viscous traction is made of, in place of `traction`.
+    volume : VolumeSource or None
+        Where the arrays are: in a volume file. By default in the file of the surface.
+    points : PointSource or None
+        Or at scattered points.
     """
 
     velocity: VelocityArray | None = None
@@ -184,3 +314,8 @@ class FlowSection(Table):
     traction: TractionArray | None = None
     density: DensityArray | None = None
     mass_flux: MassFluxArray | None = None
+    temperature: TemperatureArray | None = None
+    stress: StressArray | None = None
+    velocity_gradient: GradientArray | None = None
+    volume: Annotated[VolumeSource, BeforeValidator(_file_alone)] | None = None
+    points: Annotated[PointSource, BeforeValidator(_file_alone)] | None = None

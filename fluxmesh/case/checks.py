@@ -47,6 +47,14 @@ def group_problems(fluid: FluidSection, flow: FlowSection, groups: Groups) -> It
         else:
             yield from _not_a_port(name, group)
         yield from _supplied_pressure(name, group, fluid)
+    solved = [name for name, group in groups.items() if group.from_continuity]
+    if len(solved) > 1:
+        yield Problem(
+            "groups",
+            f"under-determined: {either(map(quoted, solved), 'and')} are all to be solved from continuity",
+            "One mass balance gives the flow of one group; supply the others",
+        )
+    yield from _gas(fluid, flow, groups)
     without = [name for name, group in groups.items() if group.role.is_port and _lacks_density(group, fluid, flow)]
     if without:
         yield Problem(
@@ -79,13 +87,39 @@ def _port(name: str, group: GroupSection, flow: FlowSection) -> Iterator[Problem
                     f"{_called(name, group)} but its {key} is negative, so it would {way}",
                     "Give the magnitude, or change the role",
                 )
-    if not given and flow.velocity is None and flow.mass_flux is None:
+    if group.from_continuity and given:
+        yield Problem(
+            dotted("groups", name),
+            f"over-determined: the flow is to be solved from continuity, and {either(given, 'and')} is given",
+            "Keep one of them",
+        )
+    solved = group.from_continuity
+    if not given and not solved and flow.velocity is None and flow.mass_flux is None:
         yield Problem(
             dotted("groups", name),
             f"{_called(name, group)} but nothing says how much flow passes",
-            "Give flow_rate, mass_flow, speed or velocity here, or a velocity array in [flow]",
+            "Give flow_rate, mass_flow, speed or velocity here, a velocity array in [flow], "
+            "or from_continuity = true in one group",
         )
-    if "profile" in group.model_fields_set and not given:
+    yield from _profile(name, group, bool(given) or solved)
+
+
+def _profile(name: str, group: GroupSection, flows: bool) -> Iterator[Problem]:
+    if group.velocity is not None and group.profile != "uniform":
+        yield Problem(
+            dotted("groups", name, "profile"),
+            f"the velocity is a vector, and the profile {quoted(group.profile)} lies along the normal",
+            "Give flow_rate, mass_flow or speed in place of velocity",
+        )
+    if group.exponent is not None and group.profile != "power-law":
+        yield Problem(dotted("groups", name, "exponent"), "only a power law has one", 'Add profile = "power-law"')
+    if (group.profile_table is None) != (group.profile != "table"):
+        yield Problem(
+            dotted("groups", name, "profile_table"),
+            'missing, and profile is "table"' if group.profile_table is None else 'profile is not "table"',
+            'Give both profile = "table" and profile_table = { radius = [..], speed = [..] }',
+        )
+    if "profile" in group.model_fields_set and not flows:
         yield Problem(
             dotted("groups", name, "profile"),
             "no flow is supplied that it could spread",
@@ -97,6 +131,7 @@ def _not_a_port(name: str, group: GroupSection) -> Iterator[Problem]:
     given = list(group.supplied_flow())
     given += ["profile"] if "profile" in group.model_fields_set else []
     given += ["density"] if group.density is not None else []
+    given += ["from_continuity"] if group.from_continuity else []
     for key in given:
         yield Problem(
             dotted("groups", name, key),
@@ -130,10 +165,43 @@ def _supplied_pressure(name: str, group: GroupSection, fluid: FluidSection) -> I
         )
 
 
+def _gas(fluid: FluidSection, flow: FlowSection, groups: Groups) -> Iterator[Problem]:
+    if fluid.law is None:
+        for key in ("gas_constant", "heat_ratio", "temperature"):
+            if getattr(fluid, key) is not None:
+                yield Problem(dotted("fluid", key), "only a gas has it", 'Add law = "ideal-gas", or leave it out')
+        if flow.temperature is not None:
+            yield Problem("flow.temperature", "only a gas has it", 'Add law = "ideal-gas" to [fluid]')
+        for name, group in groups.items():
+            if group.temperature is not None:
+                yield Problem(
+                    dotted("groups", name, "temperature"), "only a gas has it", 'Add law = "ideal-gas" to [fluid]'
+                )
+        return
+    if fluid.density is not None or flow.density is not None:
+        where = "fluid.density" if fluid.density is not None else "flow.density"
+        yield Problem(where, "a density is given, and the law of ideal gases too", "Keep one")
+    for key, example in (("gas_constant", "287.05 J/(kg K)"), ("ambient_pressure", "101325 Pa")):
+        if getattr(fluid, key) is None:
+            yield Problem(
+                dotted("fluid", key), "missing, and the law of ideal gases needs it", f'Give such as "{example}"'
+            )
+    if fluid.temperature is None and flow.temperature is None:
+        for name, group in groups.items():
+            if group.role.is_port and group.temperature is None and group.density is None:
+                yield Problem(
+                    dotted("groups", name, "temperature"),
+                    "missing, and the law of ideal gases needs it",
+                    "Give it here, in [fluid], or as an array in [flow]",
+                )
+
+
 def _lacks_density(group: GroupSection, fluid: FluidSection, flow: FlowSection) -> bool:
+    if fluid.law is not None:
+        return False
     if fluid.density is not None or flow.density is not None or group.density is not None:
         return False
-    if group.supplied_flow():
+    if group.supplied_flow() or group.from_continuity:
         return True
     # an exported mass flux carries mass and momentum by itself, given the velocity
     return flow.velocity is not None if flow.mass_flux is None else flow.velocity is None
@@ -154,6 +222,7 @@ def flow_problems(fluid: FluidSection, flow: FlowSection) -> Iterator[Problem]:
     Problem
         One for each fault.
     """
+    yield from _sources(fluid, flow)
     pressure = flow.pressure
     if pressure is None:
         return
@@ -184,6 +253,25 @@ def flow_problems(fluid: FluidSection, flow: FlowSection) -> Iterator[Problem]:
             "flow.pressure.head",
             "the head was removed, but there is no constant density to put it back with",
             'Add density to [fluid], or export the pressure with its head and write head = "included"',
+        )
+
+
+def _sources(fluid: FluidSection, flow: FlowSection) -> Iterator[Problem]:
+    if flow.volume is not None and flow.points is not None:
+        yield Problem("flow", "both volume and points are given", "Keep one: the arrays are in one of them")
+    sampled = flow.volume is not None or flow.points is not None
+    if sampled and flow.mass_flux is not None:
+        yield Problem(
+            "flow.mass_flux", "a mass flux belongs to faces, and the arrays are sampled", "Leave one of them out"
+        )
+    given = [key for key in ("traction", "stress", "velocity_gradient") if getattr(flow, key) is not None]
+    if len(given) > 1:
+        yield Problem("flow", f"{either(given, 'and')} are given", "Keep one: each gives the traction")
+    if flow.velocity_gradient is not None and fluid.viscosity is None:
+        yield Problem(
+            "fluid.viscosity",
+            "missing, and the traction is to be made from the velocity gradient",
+            'Give it, such as "1.0 mPa s"',
         )
 
 

@@ -11,18 +11,23 @@ from fluxmesh.case.values import (
     Angle,
     Density,
     Direction,
+    Exponent,
+    LengthUnit,
     MassRate,
+    Numbers,
     Place,
     Pressure,
     Speed,
     Table,
     Tags,
+    Temperature,
+    UnitScale,
     Velocity,
     VolumeRate,
 )
 from fluxmesh.surface.surface import Role
 
-__all__ = ["SUPPLIED_FLOW", "GroupSection", "Pick"]
+__all__ = ["SUPPLIED_FLOW", "GroupSection", "Pick", "ProfileTable"]
 
 SUPPLIED_FLOW = ("flow_rate", "mass_flow", "speed", "velocity")
 """Keys that say how much flow passes; a group may have one of them."""
@@ -47,6 +52,25 @@ class Pick(Table):
     angle: Angle = math.radians(1.0)
 
 
+class ProfileTable(Table):
+    """A measured or computed profile across a port.
+
+    Attributes
+    ----------
+    radius, wall_distance : tuple of float, or None
+        One of them, rising: distance from the middle of the port, or from its wall.
+    unit : UnitScale
+        Unit of these distances.
+    speed : tuple of float
+        Speed at each distance, in any unit: the profile is scaled to the flow.
+    """
+
+    radius: Numbers | None = None
+    wall_distance: Numbers | None = None
+    unit: LengthUnit = UnitScale("m", 1.0)
+    speed: Numbers = Field(description="a list of speeds, such as [2.0, 1.8, 0.9]")
+
+
 class GroupSection(Table):
     """A named set of faces.
 
@@ -67,14 +91,22 @@ class GroupSection(Table):
         where the flow leaves.
     velocity : tuple of 3 float, or None
         Absolute velocity in m/s instead.
-    profile : {"uniform"}
+    from_continuity : bool
+        Whether the flow is solved from the mass balance; one group at most.
+    profile : {"uniform", "laminar", "power-law", "table"}
         How the supplied flow is spread over the group.
+    exponent : Measured or None
+        n of the power law, speed ~ (distance from the wall)^(1/n); default 7.
+    profile_table : ProfileTable or None
+        The table, for profile = "table".
     pressure : Measured or None
         Static pressure in Pa.
     pressure_kind : {"gauge", "absolute"}
         What `pressure` is.
     density : Measured or None
         Density in kg/m³ where it differs from that of the fluid.
+    temperature : Measured or None
+        In K, for an ideal gas.
     """
 
     role: Role = Field(strict=False, description="a role: inlet, outlet, open, wall or symmetry")
@@ -85,10 +117,14 @@ class GroupSection(Table):
     mass_flow: MassRate | None = None
     speed: Speed | None = None
     velocity: Velocity | None = None
-    profile: Literal["uniform"] = "uniform"
+    from_continuity: bool = False
+    profile: Literal["uniform", "laminar", "power-law", "table"] = "uniform"
+    exponent: Exponent | None = None
+    profile_table: ProfileTable | None = None
     pressure: Pressure | None = None
     pressure_kind: Literal["gauge", "absolute"] = "gauge"
     density: Density | None = None
+    temperature: Temperature | None = None
 
     def supplied_flow(self) -> tuple[str, ...]:
         """Return the keys of the supplied flow that are given.

@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+from typing import Literal
+
 from fluxmesh.case.values import (
     AbsolutePressure,
     Acceleration,
     Density,
     FilePath,
     Force,
+    GasConstant,
+    HeatRatio,
     Length,
     LengthUnit,
     Mass,
@@ -15,9 +19,11 @@ from fluxmesh.case.values import (
     Place,
     Share,
     Table,
+    Temperature,
     Text,
     Texts,
     UnitScale,
+    Viscosity,
 )
 
 __all__ = [
@@ -63,6 +69,10 @@ class SurfaceSection(Table):
         How the file tells the groups apart; None where it does not.
     weld : Measured or None
         Points closer than this, in metres, may be joined to close gaps.
+    skin : bool
+        Whether the skin of the file's volume cells is the surface.
+    mirror : bool
+        Whether a part model cut at its symmetry groups is reported whole.
     """
 
     file: FilePath | None = None
@@ -71,6 +81,8 @@ class SurfaceSection(Table):
     closed: bool = True
     groups: GroupNames | None = None
     weld: Length | None = None
+    skin: bool = False
+    mirror: bool = False
 
 
 class FluidSection(Table):
@@ -85,11 +97,24 @@ class FluidSection(Table):
         In Pa, absolute.
     gravity : tuple of 3 float
         Acceleration of gravity in m/s²; default none.
+    law : {"ideal-gas"} or None
+        Density from absolute pressure and temperature; None for a density
+        that is given.
+    gas_constant, temperature, heat_ratio : Measured or None
+        Of the gas: J/(kg K), K where an array or a group does not have it, and
+        the ratio of the heats, which the Mach number needs.
+    viscosity : Measured or None
+        In Pa s; for a traction from the velocity gradient.
     """
 
     density: Density | None = None
     ambient_pressure: AbsolutePressure | None = None
     gravity: Acceleration = (0.0, 0.0, 0.0)
+    law: Literal["ideal-gas"] | None = None
+    gas_constant: GasConstant | None = None
+    temperature: Temperature | None = None
+    heat_ratio: HeatRatio | None = None
+    viscosity: Viscosity | None = None
 
 
 class HardwareSection(Table):

@@ -182,6 +182,15 @@ def _read_angle(value: object) -> float:
     return angle
 
 
+def _read_numbers(value: object) -> tuple[float, ...]:
+    if not isinstance(value, (list, tuple)) or len(value) < 2:
+        raise CaseError(f"found {described(value)}, not a list of numbers", remedy="Write such as [0, 5, 10]")
+    for entry in value:
+        if isinstance(entry, bool) or not isinstance(entry, (int, float)) or not math.isfinite(entry):
+            raise CaseError(f"found {described(entry)} in a list of numbers")
+    return tuple(float(entry) for entry in value)
+
+
 def _read_share(value: object) -> float:
     share = parse_quantity(value, "", "").value
     if not 0.0 < share < 1.0:
@@ -209,6 +218,7 @@ Tags = Annotated[tuple[int | str, ...], _Read(_read_tags)]
 FilePath = Annotated[Path, _ReadPath()]
 Share = Annotated[float, _Read(_read_share)]
 Angle = Annotated[float, _Read(_read_angle)]
+Numbers = Annotated[tuple[float, ...], _Read(_read_numbers)]
 
 Length = Annotated[Measured, _Quantity("m", above=0.0)]
 Mass = Annotated[Measured, _Quantity("kg", least=0.0)]
@@ -216,6 +226,11 @@ Density = Annotated[Measured, _Quantity("kg/m^3", above=0.0)]
 Pressure = Annotated[Measured, _Quantity("Pa")]
 AbsolutePressure = Annotated[Measured, _Quantity("Pa", least=0.0)]
 Speed = Annotated[Measured, _Quantity("m/s")]
+Temperature = Annotated[Measured, _Quantity("K", above=0.0)]
+GasConstant = Annotated[Measured, _Quantity("J/(kg K)", above=0.0)]
+Viscosity = Annotated[Measured, _Quantity("Pa s", least=0.0)]
+HeatRatio = Annotated[Measured, _Quantity("", above=1.0)]
+Exponent = Annotated[Measured, _Quantity("", above=0.0)]
 VolumeRate = Annotated[Measured, _Quantity("m^3/s")]
 MassRate = Annotated[Measured, _Quantity("kg/s")]
 
@@ -230,4 +245,6 @@ LengthUnit = Annotated[UnitScale, _scale("m")]
 SpeedUnit = Annotated[UnitScale, _scale("m/s")]
 StressUnit = Annotated[UnitScale, _scale("Pa")]
 DensityUnit = Annotated[UnitScale, _scale("kg/m^3")]
+TemperatureUnit = Annotated[UnitScale, _scale("K")]
+RateUnit = Annotated[UnitScale, _scale("1/s")]
 MassFlowUnit = Annotated[UnitScale, _scale("kg/s")]

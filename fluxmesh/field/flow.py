@@ -53,6 +53,8 @@ class Flow:
         m/s².
     sample_start : ndarray, shape (n_faces + 1,), int64
         Where the samples of each face start; empty when no field is sampled.
+    notes : tuple of str
+        What was solved, sampled or restored on the way, one sentence each.
     """
 
     density: Field
@@ -64,6 +66,7 @@ class Flow:
     ambient: float | None = None
     gravity: tuple[float, float, float] = (0.0, 0.0, 0.0)
     sample_start: NDArray[np.int64] = field(default_factory=lambda: np.empty(0, np.int64))
+    notes: tuple[str, ...] = ()
 
     def fields(self) -> tuple[Field, ...]:
         """Return all fields."""
@@ -99,6 +102,7 @@ def lay_flow(
     pressure: Value = None,
     traction: Value = None,
     mass_flux: Value = None,
+    at: str | Mapping[str, str] | None = None,
     supplied: Mapping[str, Mapping[str, float | Sequence[float]]] | None = None,
     meaning: PressureMeaning | None = None,
     ambient: float | None = None,
@@ -116,6 +120,10 @@ def lay_flow(
         m/s, and viscous traction on the FLUID in Pa.
     mass_flux : array_like, shape (n_faces,), optional
         Mass flow out through each face, kg/s.
+    at : {"nodes", "faces"} or mapping of str to these, optional
+        Where arrays sit, for all or by quantity (``{"pressure": "faces"}``);
+        by default told from their length, which needs it where there are as
+        many points as faces.
     supplied : mapping, optional
         ``{group: {"velocity": (..), "pressure": .., "density": .., "traction": (..)}}``:
         one value for a group, in place of the arrays; pressure is gauge.
@@ -140,6 +148,10 @@ def lay_flow(
         A supplied group that the surface does not have.
     """
 
+    places = [at] if isinstance(at, str) else list((at or {}).values())
+    if any(place not in ("nodes", "faces") for place in places):
+        raise FieldError(f"at is {at!r}", remedy='Give "nodes" or "faces", for all arrays or by quantity')
+
     def lay(name: str, components: int, value: Value) -> Field:
         if value is None:
             return absent_field(surface, name, components)
@@ -147,7 +159,8 @@ def lay_flow(
         if given.ndim == 0 or (components == 3 and given.shape == (3,)):
             constant = float(given) if components == 1 else [float(x) for x in given]
             return constant_field(surface, name, components, constant)
-        return array_field(surface, name, components, given, at="faces" if name == "mass flux" else None)
+        place = at if isinstance(at, str) or at is None else at.get(name)
+        return array_field(surface, name, components, given, at="faces" if name == "mass flux" else place)
 
     fields = {
         "density": lay("density", 1, density),

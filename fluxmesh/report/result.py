@@ -93,6 +93,7 @@ def _ports(balance: Balance) -> dict[str, Any]:
             "momentum_factor": port.momentum_factor,
             "kinetic_energy_factor": port.kinetic_energy_factor,
             "reversed_share": port.reversed_share,
+            "mach_number": port.mach_number,
         }
         for name, port in balance.ports.items()
     }

@@ -211,32 +211,29 @@ def _comparison_lines(comparison: Comparison | None) -> list[str]:
 
 
 def _ports(balance: Balance) -> Any:
+    gas = any(port.mach_number is not None for port in balance.ports.values())
     rows = []
     for name, port in balance.ports.items():
-        rows.append(
-            [
-                name,
-                figure(port.mean_speed),
-                figure(port.mean_pressure_area),
-                figure(port.mean_total_pressure_mass_flow),
-                figure(port.momentum_factor),
-                figure(port.kinetic_energy_factor),
-                "–" if port.reversed_share is None else f"{port.reversed_share:.2%}",
-            ]
-        )
-    return _table(
-        "Ports",
-        [
-            ("port", "left"),
-            ("speed, m/s", "right"),
-            ("pressure, Pa", "right"),
-            ("total pressure, Pa", "right"),
-            ("momentum factor", "right"),
-            ("energy factor", "right"),
-            ("reversed", "right"),
-        ],
-        rows,
-    )
+        row = [
+            name,
+            figure(port.mean_speed),
+            figure(port.mean_pressure_area),
+            figure(port.mean_total_pressure_mass_flow),
+            figure(port.momentum_factor),
+            figure(port.kinetic_energy_factor),
+            "–" if port.reversed_share is None else f"{port.reversed_share:.2%}",
+        ]
+        rows.append([*row, figure(port.mach_number)] if gas else row)
+    columns = [
+        ("port", "left"),
+        ("speed, m/s", "right"),
+        ("pressure, Pa", "right"),
+        ("total pressure, Pa", "right"),
+        ("momentum factor", "right"),
+        ("energy factor", "right"),
+        ("reversed", "right"),
+    ]
+    return _table("Ports", [*columns, ("Mach", "right")] if gas else columns, rows)
 
 
 def _verdict_line(verdict: Verdict) -> tuple[str, str]:

@@ -1,0 +1,1 @@
+"""Velocity profiles for ports whose flow is supplied."""
