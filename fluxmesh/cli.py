@@ -53,8 +53,9 @@ def balance(
     loaded = load_ahead(read)
 
     from fluxmesh.job.run import run_case
-    from fluxmesh.report.result import require_writable, write_json
+    from fluxmesh.report.result import write_json
     from fluxmesh.report.terminal import print_balance
+    from fluxmesh.report.whole import require_writable
 
     folder = out or Path("results") / read.name
     require_writable(folder)

@@ -180,3 +180,13 @@ def test_the_bits_of_a_run_do_not_depend_on_threads() -> None:
         )  # fmt: skip
         results.append(out.stdout)
     assert results[0] == results[1] == results[2]
+
+
+def test_without_a_gl_library_the_numbers_still_come(fluxmesh, block, monkeypatch) -> None:
+    monkeypatch.setattr("fluxmesh.report.picture_surface.offscreen_problem", lambda *_: "no GL library was found")
+    ran = fluxmesh("balance", block.case, "--out", "out")
+    assert ran.code == 0
+    assert "VERDICT: closes" in ran.out
+    assert "No pictures" in ran.err
+    assert len(ran.err.strip().splitlines()) == 1
+    assert [path.name for path in (block.folder.parent / "out").iterdir()] == ["balance.json"]

@@ -263,7 +263,7 @@ def test_a_folder_that_is_not_there_and_a_name_that_is_a_folder(tmp_path: Path) 
         draw_vectors(box_scene(2), tmp_path / "none" / "a.png", SMALL)
     (tmp_path / "taken.png").mkdir()
     (tmp_path / "taken.png" / "keep").touch()
-    with pytest.raises(OutputError, match=r"taken\.png: the picture cannot be written"):
+    with pytest.raises(OutputError, match=r"taken\.png: cannot be written"):
         draw_vectors(box_scene(2), tmp_path / "taken.png", SMALL)
     # no temporary file stays behind
     assert [path.name for path in tmp_path.iterdir()] == ["taken.png"]

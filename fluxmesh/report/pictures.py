@@ -6,8 +6,6 @@ Distances and forces are to stated scales, and the caution stands on the sheet.
 
 from __future__ import annotations
 
-import os
-import tempfile
 from pathlib import Path
 
 import numpy as np
@@ -24,6 +22,7 @@ from fluxmesh.report.picture_surface import Layer, draw_surface, require_offscre
 from fluxmesh.report.picture_text import engineering, nice_step
 from fluxmesh.report.picture_view import View, axes_for, choose_direction, fit
 from fluxmesh.report.scene import Scene, area_vectors, thin
+from fluxmesh.report.whole import write_whole
 
 __all__ = ["draw_pressure", "draw_vectors"]
 
@@ -120,7 +119,7 @@ def _draw(scene: Scene, path: Path, size: tuple[int, int], with_pressure: bool) 
         draw_bar(sheet, bands, (left, scales, right, base))
     column = (size[0] - panel - margin, bottom, size[0] - margin, top)
     draw_legend(sheet, scene, arrows, column, bands, window, bool(hidden.any()))
-    _write(sheet.png(), path)
+    write_whole(sheet.png(), path)
 
 
 def _draw_heading(sheet: Sheet, title: str, with_pressure: bool, margin: float) -> None:
@@ -229,26 +228,3 @@ def _draw_scales(sheet: Sheet, view: View, reach: Reach, corner: tuple[float, fl
             engineering(newtons, "N", 1),
             "force, by length of arrow in space",
         )
-
-
-def _write(content: bytes, path: Path) -> None:
-    """Write a file whole or not at all."""
-    try:
-        handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.", suffix=".part")
-        try:
-            with os.fdopen(handle, "wb") as stream:
-                stream.write(content)
-            # a temporary file is private to its owner; a picture is as readable as any new file
-            mask = os.umask(0)
-            os.umask(mask)
-            os.chmod(name, 0o666 & ~mask)
-            os.replace(name, path)
-        except BaseException:
-            Path(name).unlink(missing_ok=True)
-            raise
-    except OSError as error:
-        raise OutputError(
-            f"the picture cannot be written ({error.strerror or error})",
-            where=str(path),
-            remedy="Choose a folder that can be written",
-        ) from error

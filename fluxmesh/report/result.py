@@ -3,8 +3,6 @@
 from __future__ import annotations
 
 import json
-import os
-import tempfile
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any, Final
@@ -17,9 +15,9 @@ from fluxmesh.assess.verdict import Verdict, relative_without_mean_pressure
 from fluxmesh.balance.balance import Balance
 from fluxmesh.balance.momentum import Ledger
 from fluxmesh.balance.wrench import Wrench
-from fluxmesh.errors import OutputError
+from fluxmesh.report.whole import write_whole
 
-__all__ = ["SCHEMA", "require_writable", "result_data", "write_json"]
+__all__ = ["SCHEMA", "result_data", "write_json"]
 
 SCHEMA: Final = "fluxmesh-balance/1"
 
@@ -207,53 +205,4 @@ def write_json(data: dict[str, Any], path: Path) -> None:
         The folder or file cannot be written.
     """
     text = json.dumps(data, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
-    try:
-        path.parent.mkdir(parents=True, exist_ok=True)
-        handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.", suffix=".part")
-        try:
-            with os.fdopen(handle, "w", encoding="utf-8") as stream:
-                stream.write(text)
-                stream.flush()
-                os.fsync(stream.fileno())
-            os.chmod(name, 0o666 & ~_umask())
-            os.replace(name, path)
-        except BaseException:
-            Path(name).unlink(missing_ok=True)
-            raise
-    except OSError as error:
-        raise OutputError(
-            f"cannot be written ({error.strerror or error})",
-            where=str(path),
-            remedy="Choose another folder with --out",
-        ) from error
-
-
-def require_writable(folder: Path) -> None:
-    """Raise before the work if a folder cannot take the results.
-
-    Parameters
-    ----------
-    folder : pathlib.Path
-        The folder; it is made if it is not there.
-
-    Raises
-    ------
-    OutputError
-        It cannot be made or written to.
-    """
-    try:
-        folder.mkdir(parents=True, exist_ok=True)
-        with tempfile.TemporaryFile(dir=folder):
-            pass
-    except OSError as error:
-        raise OutputError(
-            f"the folder cannot be written to ({error.strerror or error})",
-            where=str(folder),
-            remedy="Choose another with --out",
-        ) from error
-
-
-def _umask() -> int:
-    current = os.umask(0)
-    os.umask(current)
-    return current
+    write_whole(text.encode("utf-8"), path)
