@@ -311,3 +311,9 @@ def test_files_that_do_not_fit_together(tmp_path: Path) -> None:
         read_meshes({})
     with pytest.raises(FileError, match="no such file"):
         read_meshes({"feed": tmp_path / "a.vtp", "shell": tmp_path / "c.vtp"})
+
+
+def test_a_place_in_the_wrong_unit_is_refused() -> None:
+    points, faces = np.array([[0, 0, 0], [1, 0, 0], [0, 1, 0]], dtype=float), np.array([0, 1, 2])
+    with pytest.raises(GroupError, match=r"near is in metres unless it says otherwise"):
+        by_pick(points, faces, None, {"a": Pick((0, 0, 1), (300.0, 200.0, 0.0))})

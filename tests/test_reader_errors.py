@@ -316,20 +316,20 @@ def test_package_that_is_not_installed_is_named(
 
 
 @pytest.mark.parametrize("suffix", [".vtu", ".vtk"])
-def test_volume_cells_alone_are_no_faces(tmp_path: Path, refuse: Refuse, suffix: str) -> None:
+def test_lines_alone_are_no_faces(tmp_path: Path, refuse: Refuse, suffix: str) -> None:
     import pyvista as pv
 
-    path = tmp_path / f"volume{suffix}"
-    pv.UnstructuredGrid([4, 0, 1, 2, 4, 2, 0, 1], [10, 3], BOX_POINTS).save(path)
-    refuse(path, "holds no faces, only cells of other kinds: 1 of type line, 1 of type tetra. Export the surface")
+    path = tmp_path / f"lines{suffix}"
+    pv.UnstructuredGrid([2, 0, 1], [3], BOX_POINTS).save(path)
+    refuse(path, "holds no faces, only cells of other kinds: 1 of type line")
 
 
 def test_polydata_without_any_cell(tmp_path: Path, refuse: Refuse) -> None:
     import pyvista as pv
 
     refuse(write_vtk_xml(pv.PolyData(), tmp_path / "none.vtp"), "holds no faces")
-    path = write_meshio(tmp_path / "volume.msh", [("tetra", np.array([[0, 1, 2, 4]]))], file_format="gmsh22")
-    refuse(path, "holds no faces, only cells of other kinds: 1 of type tetra")
+    path = write_meshio(tmp_path / "lines.msh", [("line", np.array([[0, 1]]))], file_format="gmsh22")
+    refuse(path, "holds no faces, only cells of other kinds: 1 of type line")
 
 
 def test_faces_of_unsupported_shape_are_refused_not_dropped(tmp_path: Path, refuse: Refuse) -> None:

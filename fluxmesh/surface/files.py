@@ -8,22 +8,52 @@ from pathlib import Path
 
 from fluxmesh.errors import FileError, GroupError
 from fluxmesh.surface.rawmesh import RawMesh
+from fluxmesh.surface.readers.cgns import read_cgns
+from fluxmesh.surface.readers.exodus import read_exodus
 from fluxmesh.surface.readers.joining import JoinedMeshes, join_meshes
 from fluxmesh.surface.readers.meshio_formats import meshio_suffixes, read_meshio
 from fluxmesh.surface.readers.obj import read_obj
 from fluxmesh.surface.readers.ply import read_ply
 from fluxmesh.surface.readers.stl import read_stl
 from fluxmesh.surface.readers.vtk import read_vtk_legacy, read_vtk_xml
+from fluxmesh.surface.readers.vtk_blocks import read_vtk_blocks, read_vtk_pieces
 
 __all__ = ["known_suffixes", "read_mesh", "read_meshes"]
 
+_Reader = Callable[[Path, bool | None], RawMesh]
+
+
+def _faces_only(reader: Callable[[Path], RawMesh]) -> _Reader:
+    """Wrap the reader of a format that has no volume cells."""
+
+    def reading(path: Path, skin: bool | None) -> RawMesh:
+        if skin:
+            raise FileError(f"a {path.suffix} file has no volume cells", str(path), "Leave out skin = true")
+        return reader(path)
+
+    return reading
+
+
 # A new reader is one line here; every other suffix goes to meshio's own table.
-_READERS: dict[str, Callable[[Path], RawMesh]] = {
-    ".obj": read_obj,
-    ".ply": read_ply,
-    ".stl": read_stl,
+_READERS: dict[str, _Reader] = {
+    ".cgns": read_cgns,
+    ".e": read_exodus,
+    ".ex2": read_exodus,
+    ".exii": read_exodus,
+    ".exo": read_exodus,
+    ".exodus": read_exodus,
+    ".g": read_exodus,
+    ".gen": read_exodus,
+    ".obj": _faces_only(read_obj),
+    ".ply": _faces_only(read_ply),
+    ".pvtp": read_vtk_pieces,
+    ".pvtu": read_vtk_pieces,
+    ".stl": _faces_only(read_stl),
     ".vtk": read_vtk_legacy,
+    ".vtm": read_vtk_blocks,
+    ".vtmb": read_vtk_blocks,
     ".vtp": read_vtk_xml,
+    ".vtpc": read_vtk_blocks,
     ".vtu": read_vtk_xml,
 }
 
@@ -39,24 +69,32 @@ def known_suffixes() -> tuple[str, ...]:
     return tuple(sorted(meshio_suffixes() | _READERS.keys()))
 
 
-def read_mesh(path: Path) -> RawMesh:
-    """Read the faces of a mesh file.
+def read_mesh(path: Path, *, skin: bool | None = None) -> RawMesh:
+    """Read the faces of a mesh file, or the skin of its volume cells.
 
     Parameters
     ----------
     path : Path
         File with one of `known_suffixes`.
+    skin : bool, optional
+        True: the skin of the volume cells, that is the faces that belong to
+        one cell only, normals out of the volume; where the file lists faces
+        too, they leave their arrays and sets on those of the skin that have
+        the same corners. False: the listed faces. Default: the listed faces,
+        and the skin only where the file has none.
 
     Returns
     -------
     RawMesh
-        Faces, arrays and named sets, in the file's own units.
+        Faces, arrays and named sets, in the file's own units. On a skin, the
+        arrays on cells are those of the cell behind each face, and
+        `RawMesh.derived` says so.
 
     Raises
     ------
     FileError
         No such file, a folder, unreadable, empty, of unknown suffix, cut
-        short, damaged, or without faces.
+        short, damaged, or without faces (`skin`: without volume cells).
     FieldError
         An array has the wrong length.
     """
@@ -66,20 +104,22 @@ def read_mesh(path: Path) -> RawMesh:
             empty = not stream.read(1)
         if empty:
             raise FileError("is empty", str(path), "Export it again")
-        return reader(path)
+        return reader(path, skin)
     except OSError as error:
         raise FileError(
             f"cannot be read ({error.strerror or error})", str(path), "Check that you may read it"
         ) from error
 
 
-def read_meshes(files: Mapping[str, Path]) -> JoinedMeshes:
+def read_meshes(files: Mapping[str, Path], *, skin: bool | None = None) -> JoinedMeshes:
     """Read one file a group and put them into one mesh.
 
     Parameters
     ----------
     files : mapping of str to Path
         Group name -> file, at least one.
+    skin : bool, optional
+        As `read_mesh`.
 
     Returns
     -------
@@ -106,10 +146,10 @@ def read_meshes(files: Mapping[str, Path]) -> JoinedMeshes:
                 f"groups {other!r} and {name!r} are the same file {path.name}",
                 remedy="Give each group a file of its own",
             )
-    return join_meshes({name: read_mesh(path) for name, path in files.items()})
+    return join_meshes({name: read_mesh(path, skin=skin) for name, path in files.items()})
 
 
-def _reader_of(path: Path) -> Callable[[Path], RawMesh]:
+def _reader_of(path: Path) -> _Reader:
     where = str(path)
     if not path.exists():
         raise FileError("there is no such file", where, _nearest(path))

@@ -275,6 +275,13 @@ def _seed(
     asked, opposite = reach
     wanted = f"normal {_direction(normal / length)}"
     if asked is not None:
+        nearest = min(side[1] for side in reach if side is not None)
+        if nearest > 10.0 * diagonal:
+            raise GroupError(
+                f"the place {place_text(near)} of group '{name}' is {length_text(nearest)} from the nearest face that "
+                f"faces {_direction(normal / length)}, on a surface {length_text(diagonal)} across",
+                remedy='near is in metres unless it says otherwise: { value = [..], unit = "mm" }',
+            )
         far = asked[1] > _FAR * diagonal
         if far and opposite is not None and opposite[1] < 0.1 * asked[1]:
             # most likely the normal was given into the fluid: the place tells

@@ -8,6 +8,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from fluxmesh.surface.surface import Role
+
 __all__ = ["RawMesh"]
 
 
@@ -38,6 +40,19 @@ class RawMesh:
     skipped : dict of str to int
         Cells that are no faces (lines, vertices, volume cells), counted by
         their type's name.
+    volume_cells : int
+        How many of those skipped are volume cells, whose skin could be taken
+        instead of the faces.
+    sets_have : dict of str to frozenset of str, or None
+        Names of the arrays that each of `face_sets` has values of, on faces or
+        nodes: elsewhere they are NaN (text: empty). None: all have all.
+    roles : dict of str to Role
+        What the file says that a face set is to the flow, as far as it does.
+    derived : str
+        How the faces were made where the file does not list them, such as
+        "the skin of 1200 tetrahedra"; "" where it does.
+    notes : tuple of str
+        What else was chosen on the way, one sentence each.
     """
 
     source: str
@@ -49,6 +64,11 @@ class RawMesh:
     face_arrays: dict[str, NDArray[Any]] = field(default_factory=dict)
     face_sets: dict[str, NDArray[np.int64]] = field(default_factory=dict)
     skipped: dict[str, int] = field(default_factory=dict)
+    volume_cells: int = 0
+    sets_have: dict[str, frozenset[str]] | None = None
+    roles: dict[str, Role] = field(default_factory=dict)
+    derived: str = ""
+    notes: tuple[str, ...] = ()
 
     @property
     def face_count(self) -> int:

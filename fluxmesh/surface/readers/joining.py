@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -11,8 +11,10 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import FieldError
 from fluxmesh.surface.rawmesh import RawMesh
+from fluxmesh.surface.readers.faces import gather
+from fluxmesh.surface.surface import Role
 
-__all__ = ["JoinedMeshes", "join_meshes"]
+__all__ = ["JoinedMeshes", "join_meshes", "keep_faces"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -53,8 +55,9 @@ def join_meshes(meshes: Mapping[str, RawMesh]) -> JoinedMeshes:
     Returns
     -------
     JoinedMeshes
-        Face sets of one name are united. Integer arrays become float64 only
-        where a mesh lacks them or another one has floats.
+        Face sets of one name are united: such a set has the arrays that all
+        its parts have, and the role that they agree on. Integer arrays become
+        float64 only where a mesh lacks them or another one has floats.
 
     Raises
     ------
@@ -73,6 +76,7 @@ def join_meshes(meshes: Mapping[str, RawMesh]) -> JoinedMeshes:
             sets.setdefault(name, []).append(faces + first)
         for name, count in part.skipped.items():
             skipped[name] = skipped.get(name, 0) + count
+    has = [frozenset(part.node_arrays) | frozenset(part.face_arrays) for part in parts]
     index = np.arange(len(parts), dtype=np.int32)
     mesh = RawMesh(
         source=", ".join(part.source for part in parts),
@@ -84,6 +88,11 @@ def join_meshes(meshes: Mapping[str, RawMesh]) -> JoinedMeshes:
         face_arrays=_join_arrays([part.face_arrays for part in parts], face_counts, list(meshes)),
         face_sets={name: np.concatenate(faces) for name, faces in sets.items()},
         skipped=skipped,
+        volume_cells=sum(part.volume_cells for part in parts),
+        sets_have=_join_haves(parts, has),
+        roles=_join_roles(parts),
+        derived=" and ".join(f"{part.derived} of {part.source}" for part in parts if part.derived),
+        notes=tuple(dict.fromkeys(note for part in parts for note in part.notes)),
     )
     return JoinedMeshes(
         mesh=mesh,
@@ -93,6 +102,71 @@ def join_meshes(meshes: Mapping[str, RawMesh]) -> JoinedMeshes:
         node_arrays={name: frozenset(part.node_arrays) for name, part in meshes.items()},
         face_arrays={name: frozenset(part.face_arrays) for name, part in meshes.items()},
     )
+
+
+def keep_faces(mesh: RawMesh, kept: NDArray[np.int64]) -> RawMesh:
+    """Take some faces of a mesh, and the points that they use.
+
+    Parameters
+    ----------
+    mesh : RawMesh
+        All faces.
+    kept : ndarray, shape (k,), int64
+        Faces to keep, each once, in this order.
+
+    Returns
+    -------
+    RawMesh
+        Those faces, with arrays and sets to match; sets that lose all their
+        faces are gone. Points keep their order.
+    """
+    offsets = mesh.offsets
+    if offsets is None:
+        connectivity = mesh.connectivity.reshape(-1, 3)[kept].ravel()
+    else:
+        connectivity, offsets = gather(mesh.connectivity, offsets, kept)
+    used = np.zeros(mesh.points.shape[0], dtype=np.bool_)
+    used[connectivity] = True
+    points = np.flatnonzero(used)
+    place = np.zeros(used.size, dtype=np.int64)
+    place[points] = np.arange(points.size)
+    position = np.full(mesh.face_count, -1, dtype=np.int64)
+    position[kept] = np.arange(kept.size)
+    sets = {name: position[faces][position[faces] >= 0] for name, faces in mesh.face_sets.items()}
+    sets = {name: faces for name, faces in sets.items() if faces.size}
+    return replace(
+        mesh,
+        points=mesh.points[points],
+        connectivity=place[connectivity],
+        offsets=offsets,
+        kinds=None if mesh.kinds is None else mesh.kinds[kept],
+        node_arrays={name: values[points] for name, values in mesh.node_arrays.items()},
+        face_arrays={name: values[kept] for name, values in mesh.face_arrays.items()},
+        face_sets=sets,
+        sets_have=None if mesh.sets_have is None else {name: mesh.sets_have[name] for name in sets},
+        roles={name: role for name, role in mesh.roles.items() if name in sets},
+    )
+
+
+def _join_haves(parts: Sequence[RawMesh], has: Sequence[frozenset[str]]) -> dict[str, frozenset[str]] | None:
+    """Return what each set has, or None when every set has all arrays."""
+    if len(set(has)) == 1 and all(part.sets_have is None for part in parts):
+        return None
+    joined: dict[str, frozenset[str]] = {}
+    for part, arrays in zip(parts, has):
+        for name in part.face_sets:
+            own = arrays if part.sets_have is None else part.sets_have[name]
+            joined[name] = joined[name] & own if name in joined else own
+    return joined
+
+
+def _join_roles(parts: Sequence[RawMesh]) -> dict[str, Role]:
+    """Return the role of each set, unless two parts of it differ."""
+    said: dict[str, set[Role | None]] = {}
+    for part in parts:
+        for name in part.face_sets:
+            said.setdefault(name, set()).add(part.roles.get(name))
+    return {name: role for name, roles in said.items() if len(roles) == 1 and (role := next(iter(roles))) is not None}
 
 
 def _firsts(counts: Sequence[int]) -> NDArray[np.int64]:

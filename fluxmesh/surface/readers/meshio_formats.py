@@ -17,7 +17,10 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import FieldError, FileError
 from fluxmesh.surface.rawmesh import RawMesh
-from fluxmesh.surface.readers.faces import join_blocks, require_faces
+from fluxmesh.surface.readers.cell_shapes import SHAPES
+from fluxmesh.surface.readers.content import FileContent, surface_of
+from fluxmesh.surface.readers.faces import Faces, join_blocks
+from fluxmesh.surface.readers.volume import CellBlock, Volume
 from fluxmesh.surface.surface import FaceKind
 
 __all__ = ["meshio_suffixes", "read_meshio"]
@@ -30,6 +33,11 @@ _KINDS = {
     "quad8": FaceKind.QUAD8,
     "quad9": FaceKind.QUAD9,
 }
+_FLAT = ("triangle", "quad", "polygon", "VTK_LAGRANGE_TRIANGLE", "VTK_LAGRANGE_QUADRILATERAL")
+_SOLID = (
+    *("tetra", "hexahedron", "wedge", "pyramid", "penta_prism", "hexa_prism", "polyhedron"),
+    *("VTK_LAGRANGE_TETRAHEDRON", "VTK_LAGRANGE_HEXAHEDRON", "VTK_LAGRANGE_WEDGE", "VTK_LAGRANGE_PYRAMID"),
+)
 # What its readers are seen to raise on files that are damaged or not of their format.
 _DAMAGE = (
     ArithmeticError,
@@ -76,19 +84,22 @@ def meshio_suffixes() -> frozenset[str]:
     return frozenset(suffix for suffix, formats in table.items() if not _LEFT_OUT.issuperset(formats))
 
 
-def read_meshio(path: Path) -> RawMesh:
+def read_meshio(path: Path, skin: bool | None = None) -> RawMesh:
     """Read a mesh file of any format meshio knows.
 
     Parameters
     ----------
     path : Path
         An existing file, not empty.
+    skin : bool, optional
+        As `fluxmesh.surface.files.read_mesh`.
 
     Returns
     -------
     RawMesh
-        Its two-dimensional cells; cell sets, named physical groups and named
-        families become `RawMesh.face_sets`.
+        Its two-dimensional cells, or the skin of the three-dimensional ones;
+        cell sets, named physical groups and named families become
+        `RawMesh.face_sets`.
 
     Raises
     ------
@@ -98,16 +109,20 @@ def read_meshio(path: Path) -> RawMesh:
     FieldError
         An array has the wrong length.
     """
-    mesh = _read(path)
-    where = str(path)
+    return surface_of(_content(_read(path), path.name, str(path)), str(path), skin)
+
+
+def _content(mesh: Any, source: str, where: str) -> FileContent:
+    """Sort the blocks of a mesh."""
     blocks: list[tuple[FaceKind, NDArray[Any]]] = []
     kept: list[int] = []
+    solid: list[int] = []
     skipped: dict[str, int] = {}
     for index, block in enumerate(mesh.cells):
         if block.type in _KINDS and len(block.data):
             blocks.append((_KINDS[block.type], _rows(block, where)))
             kept.append(index)
-        elif len(block.data) and not block.type.startswith("polyhedron") and block.dim == 2:
+        elif len(block.data) and block.type.startswith(_FLAT):
             raise FileError(
                 f"has {len(block.data)} faces of type {block.type}, which cannot be read",
                 where,
@@ -115,26 +130,55 @@ def read_meshio(path: Path) -> RawMesh:
             )
         elif len(block.data):
             skipped[block.type] = skipped.get(block.type, 0) + len(block.data)
+            if block.type.startswith(_SOLID):
+                solid.append(index)
     connectivity, offsets, kinds = join_blocks(blocks)
-    face_arrays = {
-        name: np.concatenate([np.asarray(values[index]) for index in kept]) if kept else np.zeros(0)
+    face_arrays = _on_cells(mesh, kept)
+    starts = np.concatenate([[0], np.cumsum([rows.shape[0] for _, rows in blocks])]).astype(np.int64)
+    return FileContent(
+        source=source,
+        points=_three_columns(np.asarray(mesh.points), where),
+        faces=Faces(connectivity, offsets, kinds, None, skipped),
+        volume=lambda: _volume(mesh, solid, where),
+        volume_cells=sum(len(mesh.cells[index].data) for index in solid),
+        node_arrays=dict(mesh.point_data),
+        face_arrays=face_arrays,
+        cell_arrays=_on_cells(mesh, solid),
+        face_sets=_named_by_tag(mesh, face_arrays) | _cell_sets(mesh, kept, starts),
+    )
+
+
+def _on_cells(mesh: Any, blocks: list[int]) -> dict[str, NDArray[Any]]:
+    """Return the cell arrays of some blocks, one block after the other."""
+    return {
+        name: np.concatenate([np.asarray(values[index]) for index in blocks]) if blocks else np.zeros(0)
         for name, values in mesh.cell_data.items()
     }
-    starts = np.concatenate([[0], np.cumsum([rows.shape[0] for _, rows in blocks])]).astype(np.int64)
-    return require_faces(
-        RawMesh(
-            source=path.name,
-            points=_three_columns(np.asarray(mesh.points), where),
-            connectivity=connectivity,
-            offsets=offsets,
-            kinds=kinds,
-            node_arrays=dict(mesh.point_data),
-            face_arrays=face_arrays,
-            face_sets=_named_by_tag(mesh, face_arrays) | _cell_sets(mesh, kept, starts),
-            skipped=skipped,
-        ),
-        where,
-    )
+
+
+def _volume(mesh: Any, solid: list[int], where: str) -> Volume:
+    """Return the volume cells, numbered from 0 in the order of their blocks."""
+    blocks: list[CellBlock] = []
+    unknown: dict[str, int] = {}
+    first = 0
+    for index in solid:
+        block = mesh.cells[index]
+        count = len(block.data)
+        shape = SHAPES.get(block.type)
+        if shape is None:
+            unknown[block.type] = unknown.get(block.type, 0) + count
+            continue
+        rows = _rows(block, where)
+        if rows.shape[1] != shape.size:
+            raise FileError(
+                f"has a block of {block.type} cells with {rows.shape[1]} points each, where {shape.size} are needed",
+                where,
+                "The file is damaged or cut short; export it again",
+            )
+        cells = np.arange(first, first + count, dtype=np.int64)
+        blocks.append(CellBlock(block.type, rows.astype(np.int64), cells))
+        first += count
+    return Volume(tuple(blocks), None, frozenset(mesh.cells[index].type for index in solid), unknown)
 
 
 def _read(path: Path) -> Any:

@@ -12,7 +12,7 @@ from fluxmesh.errors import FileError
 from fluxmesh.surface.readers.faces import Faces, gather, strip_triangles
 from fluxmesh.surface.surface import FaceKind
 
-__all__ = ["faces_of_grid", "faces_of_polydata"]
+__all__ = ["cell_arrays", "cell_type_name", "cell_types", "faces_of_grid", "faces_of_polydata"]
 
 _TRIANGLE, _STRIP, _POLYGON, _PIXEL = 5, 6, 7, 8
 # Cell type -> number of points (0: three or more) -> kind of face.
@@ -52,7 +52,7 @@ def faces_of_polydata(data: Any, where: str) -> Faces:
     before = sum(skipped.values())
     skipped = {name: count for name, count in skipped.items() if count}
     count = int(data.GetNumberOfPolys())
-    connectivity, offsets = _cell_arrays(polygons)
+    connectivity, offsets = cell_arrays(polygons)
     sound = offsets is None or bool((offsets[1:] - offsets[:-1]).min(initial=3) >= 3)
     if before == 0 and sound and data.GetNumberOfStrips() == 0:
         return Faces(connectivity, offsets, None, None, skipped)
@@ -64,7 +64,7 @@ def faces_of_polydata(data: Any, where: str) -> Faces:
         connectivity, offsets = gather(connectivity, offsets, rows)
     cells = before + rows
     if data.GetNumberOfStrips():
-        triangles, strip = strip_triangles(*_with_offsets(*_cell_arrays(strips)))
+        triangles, strip = strip_triangles(*_with_offsets(*cell_arrays(strips)))
         sizes = np.full(rows.size, 3) if offsets is None else np.diff(offsets)
         connectivity = np.concatenate([connectivity, triangles.ravel()])
         offsets = _starts(np.concatenate([sizes, np.full(strip.size, 3)]))
@@ -93,8 +93,8 @@ def faces_of_grid(data: Any, where: str) -> Faces:
         A cell is a face of a shape that is not supported, or does not have
         the points of its type.
     """
-    types = _cell_types(data)
-    connectivity, offsets = _cell_arrays(data.GetCells())
+    types = cell_types(data)
+    connectivity, offsets = cell_arrays(data.GetCells())
     counts = np.bincount(types, minlength=256)
     if offsets is None and counts[_TRIANGLE] == types.size:
         return Faces(connectivity, None, None)
@@ -106,7 +106,7 @@ def faces_of_grid(data: Any, where: str) -> Faces:
         if number in _FACE_SHAPES:
             _sort_in(int(number), types, sizes, kind_of_cell, skipped, where)
         elif number != _STRIP:
-            name, dimension = _type_name(int(number))
+            name, dimension = cell_type_name(int(number))
             if dimension == 2:
                 raise _unsupported(name, int(counts[number]), where)
             skipped[name] = int(counts[number])
@@ -149,7 +149,7 @@ def _sort_in(
         return
     for size in np.unique(sizes[cells]):
         if int(size) not in shapes:
-            name = _type_name(number)[0]
+            name = cell_type_name(number)[0]
             fits = " or ".join(str(allowed) for allowed in shapes)
             raise FileError(
                 f"has a {name} of {size} points, where {fits} can be read",
@@ -159,8 +159,21 @@ def _sort_in(
         kind_of_cell[cells[sizes[cells] == size]] = shapes[int(size)]
 
 
-def _cell_arrays(cells: Any) -> tuple[NDArray[np.int64], NDArray[np.int64] | None]:
-    """Return connectivity and offsets of a VTK cell array; offsets None when all cells are triangles."""
+def cell_arrays(cells: Any) -> tuple[NDArray[np.int64], NDArray[np.int64] | None]:
+    """View a VTK cell array.
+
+    Parameters
+    ----------
+    cells : vtkCellArray or None
+        Cells of any size.
+
+    Returns
+    -------
+    connectivity : ndarray, shape (n_entries,), int64
+        Points of the cells, one after the other.
+    offsets : ndarray, shape (n_cells + 1,), int64, or None
+        Where each cell starts; None when all cells have three points, or there is none.
+    """
     from vtkmodules.util.numpy_support import vtk_to_numpy
 
     if cells is None or cells.GetNumberOfCells() == 0:
@@ -194,7 +207,19 @@ def _or_none(offsets: NDArray[np.int64] | None) -> NDArray[np.int64] | None:
     return offsets
 
 
-def _cell_types(data: Any) -> NDArray[Any]:
+def cell_types(data: Any) -> NDArray[Any]:
+    """View the type numbers of the cells of a grid.
+
+    Parameters
+    ----------
+    data : vtkUnstructuredGrid
+        Cells of any type.
+
+    Returns
+    -------
+    ndarray, shape (n_cells,), uint8
+        Numbers of the open VTK file format.
+    """
     from vtkmodules.util.numpy_support import vtk_to_numpy
 
     if data.GetNumberOfCells() == 0:
@@ -211,8 +236,21 @@ def _before_9_6() -> bool:
     return (vtkVersion.GetVTKMajorVersion(), vtkVersion.GetVTKMinorVersion()) < (9, 6)
 
 
-def _type_name(number: int) -> tuple[str, int]:
-    """Return the plain name of a VTK cell type and its dimension."""
+def cell_type_name(number: int) -> tuple[str, int]:
+    """Name a VTK cell type.
+
+    Parameters
+    ----------
+    number : int
+        Number of the open VTK file format.
+
+    Returns
+    -------
+    name : str
+        In plain words.
+    dimension : int
+        0 to 3.
+    """
     if _before_9_6():
         from vtkmodules.vtkCommonDataModel import vtkCellTypes as types
     else:

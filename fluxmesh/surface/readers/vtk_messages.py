@@ -63,4 +63,6 @@ def captured_messages() -> Iterator[MessageLog]:
     finally:
         vtkLogger.SetStderrVerbosity(verbosity)
         vtkOutputWindow.SetInstance(before)
-        log.text = window.GetOutput() or ""
+        said = window.GetOutput() or ""
+        # VTK quotes the file, and what is no UTF-8 comes as bytes
+        log.text = said.decode("utf-8", "replace") if isinstance(said, bytes) else said

@@ -20,7 +20,7 @@ import numpy as np
 
 from fluxmesh.errors import FieldError, FileError
 
-__all__ = ["check_vtk_xml"]
+__all__ = ["check_vtk_xml", "vtk_xml_kind"]
 
 _TAG = re.compile(rb"<(/?)(Piece|PointData|CellData|Points|Polys|Cells|DataArray)\b([^>]*)>")
 _ATTRIBUTE = re.compile(r"""(\w+)\s*=\s*(?:"([^"]*)"|'([^']*)')""")
@@ -83,15 +83,11 @@ def check_vtk_xml(path: Path) -> str:
         An array on points or cells has the wrong length.
     """
     with path.open("rb") as stream, mmap.mmap(stream.fileno(), 0, access=mmap.ACCESS_READ) as data:
-        start = data.find(b"<VTKFile", 0, 65536)
-        if start < 0:
-            raise FileError("is no VTK XML file", str(path), "Check that the suffix tells what the file is")
+        head = _head(data, path)
         if data.rfind(b"</VTKFile", max(0, len(data) - 65536)) < 0:
             raise FileError(
                 f"the closing tag </VTKFile> is missing at its end ({len(data)} bytes)", str(path), _CUT_SHORT
             )
-        opening = data[start : data.find(b">", start)].decode("utf-8", "replace")
-        head = _attributes(opening)
         try:
             layout = _layout(data, head)
             for declared in _arrays(data, layout):
@@ -101,6 +97,36 @@ def check_vtk_xml(path: Path) -> str:
                 raise
             raise FileError(f"its XML is damaged ({error})", str(path), "Export it again") from error
     return head.get("type", "nothing")
+
+
+def vtk_xml_kind(path: Path) -> str:
+    """Return the kind of data set that a VTK XML file declares.
+
+    Parameters
+    ----------
+    path : Path
+        An existing file, not empty.
+
+    Returns
+    -------
+    str
+        Such as "PolyData".
+
+    Raises
+    ------
+    FileError
+        The file is no VTK XML file.
+    """
+    with path.open("rb") as stream, mmap.mmap(stream.fileno(), 0, access=mmap.ACCESS_READ) as data:
+        return _head(data, path).get("type", "nothing")
+
+
+def _head(data: mmap.mmap, path: Path) -> dict[str, str]:
+    """Return the attributes of the tag that opens the file."""
+    start = data.find(b"<VTKFile", 0, 65536)
+    if start < 0:
+        raise FileError("is no VTK XML file", str(path), "Check that the suffix tells what the file is")
+    return _attributes(data[start : data.find(b">", start)].decode("utf-8", "replace"))
 
 
 def _find(data: mmap.mmap, mark: bytes, start: int) -> int:
