@@ -10,12 +10,14 @@ from numpy.typing import NDArray
 
 from fluxmesh.integral.rules import TRIANGLE_DEGREE4, collapsed_triangle, gauss_square
 from fluxmesh.integral.samples import Samples
-from fluxmesh.integral.shapes import quadratic_quad8, quadratic_quad9
+from fluxmesh.integral.shapes import quadratic_quad8, quadratic_quad9, quadratic_triangle
 from fluxmesh.surface.surface import ControlSurface, FaceKind
 
 __all__ = ["Pieces", "cut_faces"]
 
 _DEGREE4 = np.array([point for point, _ in TRIANGLE_DEGREE4])
+_NEWTON_STEPS = 4  # the guess is off by a small share of the face already, and steps square what is left
+_FARTHEST = 0.2
 _MID_OF = np.array([[0.5, 0.5, 0.0], [0.0, 0.5, 0.5], [0.5, 0.0, 0.5]])
 
 
@@ -25,12 +27,10 @@ class Pieces(NamedTuple):
     Attributes
     ----------
     corners : ndarray, shape (n_pieces, 3), int64
-        Vertex of each corner; vertices from `first_centre` on are the middles of
-        faces, the others are points of the surface.
+        Vertex of each corner: a point of the surface or, with higher numbers, the
+        middle of a face.
     places : ndarray, shape (n_pieces, 6, 3), float64
         Corners, then mid-side points 0-1, 1-2, 2-0, m.
-    first_centre : int
-        Number of points of the surface.
     sample_piece : ndarray, shape (n_samples,), int64
         Piece that holds each quadrature point; -1 for one that lies outside its
         face, as happens in a polygon that its middle does not see all of.
@@ -40,7 +40,6 @@ class Pieces(NamedTuple):
 
     corners: NDArray[np.int64]
     places: NDArray[np.float64]
-    first_centre: int
     sample_piece: NDArray[np.int64]
     sample_weights: NDArray[np.float64]
 
@@ -49,7 +48,6 @@ class _Cut(NamedTuple):
     """How one kind of face is cut: `corner` −1 is the middle of the face."""
 
     corner: NDArray[np.int64]  # (pieces, 3)
-    weights: NDArray[np.float64]  # (pieces, 6, points of the face)
     piece: NDArray[np.int64]  # (samples,)
     at: NDArray[np.float64]  # (samples, 3)
 
@@ -93,34 +91,52 @@ def cut_faces(
         those = np.flatnonzero((kinds == kind) & (sizes == size))
         entries = surface.connectivity[first[those][:, None] + np.arange(size)]
         own = surface.points[entries]
-        rows = samples.start[faces[those]][:, None] + np.arange(samples.start[faces[those[0]] + 1] - samples.start[faces[those[0]]])
         cut = _cutting(int(kind), int(size))
+        rows = samples.start[faces[those]][:, None] + np.arange(cut.piece.size)
         middles = surface.point_count + faces[those]
-        nodes = np.einsum("pna,fak->fpnk", cut.weights, own)
+        nodes = _nodes(own, int(kind))
         owner = np.where(cut.corner < 0, middles[:, None, None], entries[:, np.maximum(cut.corner, 0)])
         folded = np.zeros(those.size, np.bool_)
         if kind == FaceKind.POLYGON and size > 3:
-            folded = (_signed_areas(nodes, normal) < 0.0).any(axis=1)
-        plain = np.flatnonzero(~folded)
+            folded |= (_signed_areas(nodes, normal) < 0.0).any(axis=1)
+        ears = {k: found for k in np.flatnonzero(folded).tolist() if len(found := _ears(own[k], normal)) == size - 2}
+        plain = np.setdiff1d(np.arange(those.size), list(ears))
         numbers = count + len(cut.corner) * np.arange(plain.size)
         corners.append(owner[plain].reshape(-1, 3))
         places.append(nodes[plain].reshape(-1, 6, 3))
         sample_piece[rows[plain]] = numbers[:, None] + cut.piece
         sample_weights[rows[plain]] = cut.at
+        if kind in (FaceKind.QUAD8, FaceKind.QUAD9):
+            held = nodes[plain][:, cut.piece].reshape(-1, 6, 3)
+            start = sample_weights[rows].reshape(-1, 3)
+            settled = _settled(held, start, samples.places[rows].reshape(-1, 3), normal)
+            sample_weights[rows] = settled.reshape(*rows.shape, 3)
         count += len(cut.corner) * plain.size
-        for k in np.flatnonzero(folded).tolist():
-            ears = _ears(own[k], normal)
-            corners.append(entries[k][ears])
-            places.append(_straight(own[k][ears]))
-            inside, sample_weights[rows[k]] = _found_in(own[k][ears], samples.places[rows[k]], normal)
+        for k, rows_of in ears.items():
+            corners.append(entries[k][rows_of])
+            places.append(_straight(own[k][rows_of]))
+            inside, sample_weights[rows[k]] = _found_in(own[k][rows_of], samples.places[rows[k]], normal)
             sample_piece[rows[k]] = np.where(inside < 0, -1, count + inside)
-            count += len(ears)
-    return Pieces(np.concatenate(corners), np.concatenate(places), surface.point_count, sample_piece, sample_weights)
+            count += len(rows_of)
+    return Pieces(np.concatenate(corners), np.concatenate(places), sample_piece, sample_weights)
 
 
 def _straight(corners: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Return corners and halfway points of triangles, shape (n, 6, 3)."""
-    return np.concatenate([corners, np.einsum("ma,fak->fmk", _MID_OF, corners)], axis=1)
+    """Return corners and halfway points of triangles, shape (..., 6, 3)."""
+    return np.concatenate([corners, _MID_OF @ corners], axis=-2)
+
+
+def _nodes(own: NDArray[np.float64], kind: int) -> NDArray[np.float64]:
+    """Return the corners and mid-side points of the pieces of faces, shape (faces, pieces, 6, 3)."""
+    size = own.shape[1]
+    if kind == FaceKind.TRIANGLE6:
+        return own[:, None]
+    if kind != FaceKind.POLYGON:
+        return np.asarray(np.einsum("pna,fak->fpnk", _quadrilateral_weights(size), own))
+    if size == 3:
+        return _straight(own[:, None])
+    middle = np.broadcast_to(own.mean(axis=1, keepdims=True), own.shape)
+    return _straight(np.stack([own, np.roll(own, -1, axis=1), middle], axis=2))
 
 
 def _signed_areas(nodes: NDArray[np.float64], normal: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -131,46 +147,74 @@ def _signed_areas(nodes: NDArray[np.float64], normal: NDArray[np.float64]) -> ND
 @lru_cache(maxsize=64)
 def _cutting(kind: int, size: int) -> _Cut:
     """Return the fan of a face with its samples in the order of `sample_places`."""
-    if kind == FaceKind.POLYGON:
-        return _polygon_cut(size)
+    here = np.arange(4 if kind in (FaceKind.QUAD8, FaceKind.QUAD9) else size)
+    fan = np.column_stack([here, np.roll(here, -1), np.full(here.size, -1)])
     if kind == FaceKind.TRIANGLE6:
         uv, _ = collapsed_triangle(6)
         at = np.column_stack([1 - uv.sum(axis=1), uv])
-        return _Cut(np.arange(3)[None], np.eye(6)[None], np.zeros(len(at), np.int64), at)
-    return _quadrilateral_cut(size)
-
-
-def _polygon_cut(size: int) -> _Cut:
+        return _Cut(np.arange(3)[None], np.zeros(len(at), np.int64), at)
+    if kind != FaceKind.POLYGON:
+        return _Cut(fan, *_quadrilateral_samples())
     if size == 3:
-        weights = np.concatenate([np.eye(3), _MID_OF])[None]
-        return _Cut(np.arange(3)[None], weights, np.zeros(len(_DEGREE4), np.int64), _DEGREE4)
-    here = np.arange(size)
-    corner = np.column_stack([here, np.roll(here, -1), np.full(size, -1)])
-    of_corner = np.stack([np.eye(size), np.roll(np.eye(size), -1, axis=0), np.full((size, size), 1 / size)], axis=1)
-    weights = np.concatenate([of_corner, np.einsum("ma,pai->pmi", _MID_OF, of_corner)], axis=1)
-    return _Cut(corner, weights, np.repeat(here, len(_DEGREE4)), np.tile(_DEGREE4, (size, 1)))
+        return _Cut(np.arange(3)[None], np.zeros(len(_DEGREE4), np.int64), _DEGREE4)
+    return _Cut(fan, np.repeat(here, len(_DEGREE4)), np.tile(_DEGREE4, (size, 1)))
 
 
-def _quadrilateral_cut(size: int) -> _Cut:
+# the fan of the square [-1, 1]² about its middle
+_SQUARE = np.array([[-1, -1], [1, -1], [1, 1], [-1, 1]], dtype=np.float64)
+_FAN = np.stack([_SQUARE, np.roll(_SQUARE, -1, axis=0), np.zeros((4, 2))], axis=1)
+
+
+@lru_cache(maxsize=2)
+def _quadrilateral_weights(size: int) -> NDArray[np.float64]:
+    """Return weights over a curved quadrilateral's points at the nodes of its fan, shape (4, 6, size)."""
     shape = quadratic_quad8 if size == 8 else quadratic_quad9
-    square = np.array([[-1, -1], [1, -1], [1, 1], [-1, 1]], dtype=np.float64)
-    triangles = np.stack([square, np.roll(square, -1, axis=0), np.zeros((4, 2))], axis=1)
-    nodes = np.concatenate([triangles, np.einsum("ma,pak->pmk", _MID_OF, triangles)], axis=1)
-    weights = shape(nodes[..., 0].ravel(), nodes[..., 1].ravel())[0].reshape(4, 6, size)
-    here = np.arange(4)
-    corner = np.column_stack([here, np.roll(here, -1), np.full(4, -1)])
+    nodes = np.concatenate([_FAN, _MID_OF @ _FAN], axis=1)
+    return np.asarray(shape(nodes[..., 0].ravel(), nodes[..., 1].ravel())[0].reshape(4, 6, size))
+
+
+def _quadrilateral_samples() -> tuple[NDArray[np.int64], NDArray[np.float64]]:
+    """Return the piece of each sample of a curved quadrilateral, and its barycentric coordinates there."""
     samples, _ = gauss_square(6)
-    # the side of the square a sample is nearest to owns it
-    piece = np.argmin(np.stack([samples[:, 1], -samples[:, 0], -samples[:, 1], samples[:, 0]], axis=1), axis=1)
-    a, b = triangles[piece, 0], triangles[piece, 1]
-    # the middle is the origin: samples = l0 a + l1 b
-    l0 = (samples[:, 0] * b[:, 1] - samples[:, 1] * b[:, 0]) / (a[:, 0] * b[:, 1] - a[:, 1] * b[:, 0])
-    l1 = (a[:, 0] * samples[:, 1] - a[:, 1] * samples[:, 0]) / (a[:, 0] * b[:, 1] - a[:, 1] * b[:, 0])
-    return _Cut(corner, weights, piece, np.column_stack([l0, l1, 1 - l0 - l1]))
+    x, y = samples.T
+    # the side of the square that a sample is nearest to owns it
+    piece = np.argmin(np.stack([y, -x, -y, x], axis=1), axis=1)
+    a, b = _FAN[piece, 0], _FAN[piece, 1]
+    # the middle is the origin: sample = l0 a + l1 b
+    turn = a[:, 0] * b[:, 1] - a[:, 1] * b[:, 0]
+    l0 = (x * b[:, 1] - y * b[:, 0]) / turn
+    l1 = (a[:, 0] * y - a[:, 1] * x) / turn
+    return piece, np.column_stack([l0, l1, 1 - l0 - l1])
+
+
+def _settled(
+    nodes: NDArray[np.float64],
+    weights: NDArray[np.float64],
+    places: NDArray[np.float64],
+    normal: NDArray[np.float64],
+) -> NDArray[np.float64]:
+    """Return where places lie in quadratic triangles, by Newton steps from a near guess.
+
+    A quadratic triangle follows the map of a curved quadrilateral on its sides and
+    nearly, not exactly, within.
+    """
+    guess = weights
+    for _ in range(_NEWTON_STEPS):
+        value, by_u, by_v = quadratic_triangle(weights[:, 1], weights[:, 2])
+        at, along_u, along_v = (np.einsum("ni,nik->nk", table, nodes) for table in (value, by_u, by_v))
+        twice = np.cross(along_u, along_v) @ normal
+        off = places - at
+        u = np.cross(off, along_v) @ normal / np.where(twice == 0.0, 1.0, twice)
+        v = np.cross(along_u, off) @ normal / np.where(twice == 0.0, 1.0, twice)
+        weights = weights + np.column_stack([-u - v, u, v])
+    # on a face bent so far that the steps lead away, the guess stands
+    led_away = ~(np.abs(weights - guess).max(axis=1) < _FARTHEST)
+    weights[led_away] = guess[led_away]
+    return weights
 
 
 def _ears(corners: NDArray[np.float64], normal: NDArray[np.float64]) -> NDArray[np.int64]:
-    """Cut a polygon into triangles without new points, shape (n - 2, 3); it may be any simple polygon."""
+    """Cut any simple polygon into triangles without new points, shape (n - 2, 3); fewer if it crosses itself."""
     from vtkmodules.vtkCommonCore import vtkIdList
     from vtkmodules.vtkCommonDataModel import vtkPolygon
 
