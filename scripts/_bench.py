@@ -15,6 +15,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 import numpy as np
+from _bench_volume import measure_volume
 
 from fluxmesh.field.flow import Flow, integrate_flow, lay_flow, near_origin
 from fluxmesh.integral.layout import FaceArrays, FlowArrays, PressureTerms, make_runs
@@ -191,7 +192,7 @@ def whole(path: Path, folder: Path, times: int) -> tuple[float, float, float]:
 
 
 def line(what: str, value: str, aim: str = "") -> None:
-    print(f"{what:<74}{value:>16}   {aim}")
+    print(f"{what:<90}{value:>16}   {aim}")
 
 
 def main() -> None:
@@ -228,6 +229,8 @@ def main() -> None:
         line("time a face at this size over that at a tenth, checks and integrals", f"{growth:.2f}", "aim <= 1.10")
         slope = (run - small[4]) / (made - small[0]) * made / run
         line("share of the process time that grows with the faces", f"{slope:.2f}", "(the rest is start-up)")
+    for row in measure_volume(max(faces // 5, 1000), max(faces // 25, 1000)):
+        line(*row)
 
 
 if __name__ == "__main__":
