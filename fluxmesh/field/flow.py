@@ -20,7 +20,7 @@ from fluxmesh.field.field import (
 )
 from fluxmesh.field.pressure import PressureMeaning, pressure_terms
 from fluxmesh.integral.kernel import integrate
-from fluxmesh.integral.layout import ABSENT, PER_GROUP, FaceArrays, FlowArrays, PressureTerms, make_runs
+from fluxmesh.integral.layout import ABSENT, AT_SAMPLE, PER_GROUP, FaceArrays, FlowArrays, PressureTerms, make_runs
 from fluxmesh.integral.table import IntegralTable
 from fluxmesh.surface.surface import ControlSurface, Role
 
@@ -53,6 +53,8 @@ class Flow:
         m/s².
     sample_start : ndarray, shape (n_faces + 1,), int64
         Where the samples of each face start; empty when no field is sampled.
+    viscosity : float or None
+        Dynamic viscosity, Pa s, where it is known: for estimates.
     notes : tuple of str
         What was solved, sampled or restored on the way, one sentence each.
     """
@@ -66,6 +68,7 @@ class Flow:
     ambient: float | None = None
     gravity: tuple[float, float, float] = (0.0, 0.0, 0.0)
     sample_start: NDArray[np.int64] = field(default_factory=lambda: np.empty(0, np.int64))
+    viscosity: float | None = None
     notes: tuple[str, ...] = ()
 
     def fields(self) -> tuple[Field, ...]:
@@ -107,6 +110,7 @@ def lay_flow(
     meaning: PressureMeaning | None = None,
     ambient: float | None = None,
     gravity: Sequence[float] = (0.0, 0.0, 0.0),
+    viscosity: float | None = None,
 ) -> Flow:
     """Lay flow data on a surface.
 
@@ -133,6 +137,8 @@ def lay_flow(
         Ambient absolute pressure, Pa.
     gravity : sequence of 3 floats, optional
         m/s².
+    viscosity : float, optional
+        Dynamic viscosity, Pa s: for an estimate of what a missing traction leaves out.
 
     Returns
     -------
@@ -193,6 +199,7 @@ def lay_flow(
         meaning=meaning or PressureMeaning(),
         ambient=ambient,
         gravity=(down[0], down[1], down[2]),
+        viscosity=viscosity,
     )
     require_flow(surface, flow)
     return flow
@@ -216,6 +223,7 @@ def require_flow(surface: ControlSurface, flow: Flow) -> None:
     """
     for each in flow.fields():
         require_finite(surface, each)
+        _require_samples(surface, flow, each, positive=each is flow.density)
     require_positive(surface, flow.density)
     moving = flow.velocity.present() | flow.mass_flux.present()
     for k, group in enumerate(surface.groups):
@@ -225,6 +233,26 @@ def require_flow(surface: ControlSurface, flow: Flow) -> None:
                 where=f"group '{group.name}'",
                 remedy="Give the density",
             )
+
+
+def _require_samples(surface: ControlSurface, flow: Flow, each: Field, *, positive: bool) -> None:
+    """Look at values at quadrature points, where a group takes the field from there."""
+    sampled = each.where == AT_SAMPLE
+    if not sampled.any():
+        return
+    used = sampled[np.repeat(surface.group_of_face, np.diff(flow.sample_start))]
+    values = each.sample.reshape(used.size, -1)
+    bad = used & ~np.isfinite(values).all(axis=1)
+    what = "are not finite"
+    if positive and not bad.any():
+        bad = used & ~(values * each.scale > 0).all(axis=1)
+        what = "are zero or negative"
+    if bad.any():
+        raise FieldError(
+            f"{np.count_nonzero(bad)} of {np.count_nonzero(used)} values at quadrature points {what}",
+            where=each.label or each.name,
+            remedy="Check the source of the field",
+        )
 
 
 def near_origin(surface: ControlSurface) -> NDArray[np.float64]:

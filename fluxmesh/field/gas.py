@@ -77,7 +77,9 @@ def ideal_density(
         kinematic pressure, or an absolute pressure or temperature that is not positive.
     """
     if meaning.kind is PressureKind.KINEMATIC:
-        raise FieldError("a kinematic pressure has no gas law", where="flow.pressure.kind", remedy="Export the pressure")
+        raise FieldError(
+            "a kinematic pressure has no gas law", where="flow.pressure.kind", remedy="Export the pressure"
+        )
     field = absent_field(surface, "density", 1)
     where = field.where.copy()
     one_temperature = _shared_temperature(pressure, temperature)

@@ -43,11 +43,27 @@ class PressureMeaning:
         flow computed without gravity; the head is put back.
     datum : tuple of 3 floats
         Point where the removed head is zero, m.
+
+    Raises
+    ------
+    FieldError
+        A kind or head that is not known; their words may be given as text.
     """
 
     kind: PressureKind = PressureKind.GAUGE
     head: Head = Head.INCLUDED
     datum: tuple[float, float, float] = (0.0, 0.0, 0.0)
+
+    def __post_init__(self) -> None:
+        """Take the words of kind and head for what they mean."""
+        for name, words in (("kind", PressureKind), ("head", Head)):
+            try:
+                object.__setattr__(self, name, words(getattr(self, name)))
+            except ValueError as error:
+                raise FieldError(
+                    f"the {name} of the pressure is {getattr(self, name)!r}",
+                    remedy=f"Allowed: {', '.join(word.value for word in words)}",
+                ) from error
 
 
 def pressure_terms(

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from math import prod
 from typing import NamedTuple
 
 import numpy as np
@@ -86,12 +87,14 @@ def interpolate_at_samples(
         In the order of `sample_places` for the same faces.
     """
     start = _starts(mesh, chosen)
-    found = np.empty((int(start[-1]), *node_values.shape[1:]))
+    tail = node_values.shape[1:]
+    values = np.ascontiguousarray(node_values.reshape(node_values.shape[0], prod(tail)))
+    found = np.empty((int(start[-1]), values.shape[1]))
     for kind, faces, entries in _families(mesh, chosen):
         weights = _weights(kind, entries.shape[1])
         rows = start[faces][:, None] + np.arange(weights.shape[0])
-        found[rows] = np.einsum("qa,fa...->fq...", weights, node_values[entries])
-    return found
+        found[rows] = np.matmul(weights, values[entries])
+    return found.reshape(found.shape[0], *tail)
 
 
 def sample_normals(mesh: FaceArrays, samples: Samples) -> NDArray[np.float64]:
