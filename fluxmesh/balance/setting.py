@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
+from fluxmesh.errors import FieldError
 from fluxmesh.surface.surface import Group, Role
 
 __all__ = ["GroupData", "Hardware", "Setting"]
@@ -37,10 +38,26 @@ class Hardware:
         kg.
     centre : tuple of 3 floats
         Centre of mass, m.
+
+    Raises
+    ------
+    FieldError
+        A mass that is negative or no number, or a centre that is no point.
     """
 
     mass: float
     centre: tuple[float, float, float]
+
+    def __post_init__(self) -> None:
+        """Check mass and centre at the door."""
+        centre = self.centre if isinstance(self.centre, (tuple, list, np.ndarray)) else ()
+        numbers = [self.mass, *centre]
+        sound = len(numbers) == 4 and all(isinstance(x, (int, float)) and np.isfinite(x) for x in numbers)
+        if not sound or self.mass < 0:
+            raise FieldError(
+                f"hardware has mass {self.mass!r} and centre {self.centre!r}",
+                remedy="Give a mass in kg, not negative, and three coordinates in metres",
+            )
 
 
 @dataclass(frozen=True, eq=False)
@@ -64,6 +81,8 @@ class Setting:
         Point that moments and the reaction are about, m.
     hardware : Hardware or None
         None when its mass is not given.
+    supplied : tuple of str
+        Groups whose pressure or flow was supplied as one value, not exported.
     heat_ratio, ambient : float or None
         Of an ideal gas, and the ambient absolute pressure in Pa: for Mach numbers.
     """
@@ -75,6 +94,7 @@ class Setting:
     fluid_density: float | None = None
     anchor: tuple[float, float, float] = (0.0, 0.0, 0.0)
     hardware: Hardware | None = field(default=None)
+    supplied: tuple[str, ...] = ()
     heat_ratio: float | None = None
     ambient: float | None = None
 
