@@ -52,7 +52,7 @@ def balance(
     read = read_case(case)
     loaded = load_ahead(read)
 
-    from fluxmesh.job.run import run_case
+    from fluxmesh.job.run import REVIEWED_FACES, run_case
     from fluxmesh.report.result import write_json
     from fluxmesh.report.terminal import print_balance
     from fluxmesh.report.whole import require_writable
@@ -60,7 +60,14 @@ def balance(
     folder = out or Path("results") / read.name
     require_writable(folder)
     done = run_case(read, loaded=loaded)
+    if done.surface.face_count <= REVIEWED_FACES:
+        from fluxmesh.job.check import with_doubts
+
+        done = with_doubts(read, done, loaded=loaded)
     data = done.data()
+    for old in ("vectors.png", "pressure.png"):
+        # pictures of an earlier run would not belong to the figures beside them
+        (folder / old).unlink(missing_ok=True)
     write_json(data, folder / "balance.json")
     console = _console()
     print_balance(
@@ -70,7 +77,9 @@ def balance(
         title=done.title,
         surface=done.surface,
         assumptions=done.assumptions,
+        notes=done.notes,
         comparison=done.comparison,
+        doubts=done.doubts,
     )
     typer.echo(f"\nWritten: {folder / 'balance.json'}")
     if pictures:
@@ -83,7 +92,7 @@ def _draw(done: Any, folder: Path) -> None:
     from fluxmesh.report.scene import thin
     from fluxmesh.report.sketch import scene_of
 
-    scene = thin(scene_of(done.title, done.surface, done.flow, done.balance, notes=done.assumptions))
+    scene = thin(scene_of(done.title, done.surface, done.flow, done.balance, notes=done.picture_notes()))
     try:
         draw_vectors(scene, folder / "vectors.png")
         typer.echo(f"Written: {folder / 'vectors.png'}")
@@ -112,24 +121,37 @@ def check(
     raise typer.Exit(1 if strict and review.doubts else 0)
 
 
-@app.command(epilog="Example: fluxmesh start header.stl --unit mm > header.toml")
+@app.command(epilog='Example: fluxmesh start export.vtp --density "880 kg/m^3" --to case.toml')
 def start(
     mesh: Annotated[Path, typer.Argument(metavar="MESH", help="Mesh file with the surface.", show_default=False)],
-    unit: Annotated[str, typer.Option(help="Length unit of the file.")] = "m",
+    unit: Annotated[
+        str | None, typer.Option(help="Length unit of the file.", show_default="guessed from the size")
+    ] = None,
+    density: Annotated[
+        str | None, typer.Option(help='Density of the fluid, such as "998.2 kg/m^3".', show_default="from the file")
+    ] = None,
+    gravity: Annotated[
+        tuple[float, float, float] | None,
+        typer.Option(help="Gravity in m/s², three numbers: 0 0 -9.80665.", metavar="X Y Z", show_default="none"),
+    ] = None,
     to: Annotated[
         Path | None,
         typer.Option("--to", help="Case file to write; prints to the terminal by default.", show_default=False),
     ] = None,
 ) -> None:
-    """Propose a commented case for a mesh: groups, arrays and planar port candidates found in it."""
+    """Propose a commented case for a mesh: groups with roles, arrays with their meaning, what is left to fill in."""
     from fluxmesh.starter import propose_case, write_case
 
-    text = propose_case(mesh, unit=unit, beside=to)
+    proposal = propose_case(mesh, unit=unit, density=density, gravity=gravity, beside=to)
     if to is None:
-        typer.echo(text, nl=False)
-    else:
-        write_case(text, to)
-        typer.echo(f"Written: {to}")
+        typer.echo(proposal.text, nl=False)
+        return
+    write_case(proposal.text, to)
+    typer.echo(f"Written: {to}")
+    if proposal.missing:
+        typer.echo(f"To be filled in: {', '.join(proposal.missing)}")
+    if proposal.doubts:
+        typer.echo(f"Doubts: {proposal.doubts}; they stand at the head of the case")
 
 
 def _version(wanted: bool) -> None:

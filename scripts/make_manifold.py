@@ -352,6 +352,9 @@ def _attach(data: Any, solution: Solution, nodes: Integers) -> None:
         array = numpy_to_vtk(values.astype(np.float32), deep=True)
         array.SetName(name)
         data.GetPointData().AddArray(array)
+    density = numpy_to_vtk(np.full(data.GetNumberOfCells(), DENSITY, dtype=np.float32), deep=True)
+    density.SetName("density")
+    data.GetCellData().AddArray(density)
 
 
 def _save(writer: Any, data: Any, path: Path) -> None:

@@ -77,6 +77,7 @@ def make() -> pyvista.PolyData:
     mesh = pyvista.PolyData(xyz, np.column_stack([np.full(len(quads), 4), quads]).ravel())
     mesh.point_data["velocity"], mesh.point_data["pressure"] = flow(xyz)
     mesh.cell_data["part"] = np.concatenate(region)
+    mesh.cell_data["density"] = np.full(len(quads), DENSITY)
     return mesh
 
 

@@ -125,40 +125,10 @@ def test_a_reported_load_is_compared_and_not_used(fluxmesh, block) -> None:
     folder = block.folder.parent
     plain, compared = (json.loads((folder / name / "balance.json").read_text("utf-8")) for name in ("plain", "out"))
     assert compared.pop("reported")["on"] == ["shell"]
+    # the hash of the case is another, and nothing else
+    assert plain.pop("inputs") | {"case_sha256": compared["inputs"]["case_sha256"]} == compared.pop("inputs")
     assert plain == compared
     assert before.code == ran.code == 0
-
-
-def test_check_says_what_is_doubtful_and_strict_counts_it(fluxmesh, block) -> None:
-    assert fluxmesh("check", block.case, "--strict").code == 0
-    block.write(CASE.replace('role = "inlet"', 'role = "outlet"'))
-    ran = fluxmesh("check", block.case)
-    assert ran.code == 0
-    assert "'feed' is an outlet, but its flow enters" in ran.out
-    assert 'groups.feed.role = "inlet"' in ran.out
-    assert fluxmesh("check", block.case, "--strict").code == 1
-
-
-def test_start_proposes_a_case_that_check_accepts(fluxmesh, block) -> None:
-    ran = fluxmesh("start", block.folder / "block.vtp", "--to", block.folder / "new.toml")
-    assert ran.code == 0, ran.err
-    text = (block.folder / "new.toml").read_text(encoding="utf-8")
-    assert 'groups = { array = "region" }' in text
-    assert 'velocity = { array = "U"' in text
-    ran = fluxmesh("check", block.folder / "new.toml")
-    assert ran.code == 0, ran.err
-    assert "(inlet)" in ran.out
-    assert "(outlet)" in ran.out
-    again = fluxmesh("start", block.folder / "block.vtp", "--to", block.folder / "new.toml")
-    assert again.code == 2
-    assert "exists already" in again.err
-
-
-def test_start_finds_the_ports_of_a_mesh_without_tags(fluxmesh) -> None:
-    ran = fluxmesh("start", ROOT / "meshes" / "header" / "header.stl", "--unit", "mm")
-    assert ran.code == 0
-    assert ran.out.count("pick = ") == 4
-    assert "rest = true" in ran.out
 
 
 @pytest.mark.parametrize("command", ["balance", "check", "start"])

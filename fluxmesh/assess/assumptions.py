@@ -20,7 +20,7 @@ CAUTIONS: Final = (
 
 
 def assumptions_of(
-    balance: Balance, *, ambient: float | None, estimated_density: bool, head_restored: bool
+    balance: Balance, *, ambient: float | None, estimated_density: bool, head_restored: bool, mirrored: bool = False
 ) -> tuple[str, ...]:
     """Return what the figures of a balance assume, one sentence each.
 
@@ -34,6 +34,8 @@ def assumptions_of(
         Whether the density of the fluid held is a mean over the surface.
     head_restored : bool
         Whether the hydrostatic head was put back into the pressure.
+    mirrored : bool, optional
+        Whether a part model is reported whole.
     """
     setting = balance.setting
     said = ["Steady flow through a control surface at rest"]
@@ -46,11 +48,19 @@ def assumptions_of(
         said.append("The weight of the fluid is not in the load: no closed volume or no density")
     else:
         held = "filled with the fluid" + (", at its mean density on the surface" if estimated_density else "")
-        said.append(f"The enclosed volume is {held}; its weight is in the load from the balance")
+        pull = ", ".join(f"{g:g}" for g in setting.gravity)
+        said.append(
+            f"The enclosed volume is {held} ({setting.fluid_density:.5g} kg/m³, gravity ({pull}) m/s²); "
+            "its weight is in the load from the balance"
+        )
     if head_restored:
         said.append("The pressure came without its hydrostatic head, which was put back")
+    if mirrored:
+        said.append("The part model was mirrored at its symmetry planes: all figures are those of the whole")
     if setting.hardware is None:
         said.append("No hardware mass is given: its weight is not in the reaction")
+    elif not weightless:
+        said.append(f"The hardware weighs {setting.hardware.mass:g} kg without the fluid")
     ports = setting.ports()
     if ports.any() and not setting.data.traction[ports].all():
         names = [g.name for g, port, known in zip(setting.groups, ports, setting.data.traction) if port and not known]
@@ -60,6 +70,8 @@ def assumptions_of(
         said.append("No wall group: the load is that on whatever the surface encloses")
     elif not setting.data.flux[walls].any():
         said.append("Nothing flows through the walls")
+    if setting.supplied:
+        said.append(f"What is supplied at {', '.join(setting.supplied)} is spread evenly, or by its profile")
     if balance.reaction is not None and balance.reaction.basis == "walls":
         said.append("The reaction rests on the load integrated over the walls")
         if not weightless:

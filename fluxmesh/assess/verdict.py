@@ -134,13 +134,7 @@ def verdict_of(balance: Balance, *, tolerance: float = 0.01, encloses_hardware: 
     elif balance.complete:
         reasons.append("Momentum: no wall group, so its residual is the load on whatever the surface encloses")
     else:
-        lacking = [g.name for g, known in zip(setting.groups, setting.data.pressure) if not known]
-        reasons.append(
-            f"Momentum: no pressure is known at {', '.join(lacking)}, "
-            "so the load rests on the balance alone and cannot be compared"
-            if lacking
-            else "Momentum: flow data are missing at a port, so nothing can be compared"
-        )
+        reasons.append(_incomparable(balance))
     measure = max(measures) if measures else None
     closes: bool | None = None
     if measure is not None and measure > tolerance:
@@ -148,6 +142,19 @@ def verdict_of(balance: Balance, *, tolerance: float = 0.01, encloses_hardware: 
     elif measure is not None and compared:
         closes = True
     return Verdict(closes, measure, tolerance, tuple(reasons))
+
+
+def _incomparable(balance: Balance) -> str:
+    setting = balance.setting
+    lacking = [g.name for g, known in zip(setting.groups, setting.data.pressure) if not known]
+    if balance.load.best() is None:
+        return f"Momentum: no load can be given, for no pressure is known at {', '.join(lacking) or 'the walls'}"
+    if balance.load.from_balance is None:
+        return "Momentum: data are missing at a port, so the load rests on the walls alone and cannot be compared"
+    return (
+        f"Momentum: no pressure is known at {', '.join(lacking)}, "
+        "so the load rests on the balance alone and cannot be compared"
+    )
 
 
 def _momentum_doubts(balance: Balance, tolerance: float) -> list[str]:

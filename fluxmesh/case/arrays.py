@@ -205,19 +205,16 @@ class GradientArray(Table):
     Attributes
     ----------
     array : str
-        An array of 9 components, row by row.
+        An array of 9 components; rows and columns may be exchanged, for the
+        stress that is made of it is symmetric.
     unit : UnitScale
         Its unit.
-    rows : {"components", "directions"}
-        Whether a row holds the three derivatives of one velocity component,
-        or the derivatives of all along one direction.
     at : {"nodes", "faces"} or None
         Where to look when the name occurs on both.
     """
 
     array: Text = _ARRAY
     unit: RateUnit = UnitScale("1/s", 1.0)
-    rows: Literal["components", "directions"] = "components"
     at: Literal["nodes", "faces"] | None = None
 
 

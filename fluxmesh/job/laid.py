@@ -5,16 +5,20 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from fluxmesh.case.model import Case
 from fluxmesh.errors import FieldError, InputError
 from fluxmesh.field.field import Field, absent_field, constant_field, supply
-from fluxmesh.field.flow import Flow, integrate_flow, require_flow, still_flow
+from fluxmesh.field.flow import Flow, face_arrays_of, require_flow
+from fluxmesh.field.gas import ideal_density
 from fluxmesh.field.pressure import Head, PressureKind, PressureMeaning
-from fluxmesh.field.supplied import require_direction, uniform_velocity
-from fluxmesh.integral.layout import PER_GROUP
+from fluxmesh.integral.samples import Samples, sample_places
 from fluxmesh.job.exported import exported_field
+from fluxmesh.job.sampled import Sampled, sample_source, sampled_field
 from fluxmesh.job.shape import Shape
+from fluxmesh.job.supplied import shaped_groups, supply_flow, supply_values
+from fluxmesh.job.tractions import traction_of
 
 __all__ = ["lay_case"]
 
@@ -32,15 +36,15 @@ def lay_case(case: Case, shape: Shape) -> Flow:
     Returns
     -------
     Flow
-        Exported arrays, with the supplied data of groups in place of them.
+        Exported or sampled fields, with the supplied data of groups in place of them.
 
     Raises
     ------
-    FieldError, GroupError
-        Arrays or supplied data that cannot be used; the message names them.
+    InputError
+        Data that cannot be used; the message names them.
     """
     try:
-        flow = _supplied(case, shape, _exported(case, shape))
+        flow = _lay(case, shape)
         require_flow(shape.surface, flow)
     except InputError as error:
         name = case.path.name
@@ -50,48 +54,117 @@ def lay_case(case: Case, shape: Shape) -> Flow:
     return flow
 
 
-def _exported(case: Case, shape: Shape) -> Flow:
-    surface, arrays, asked = shape.surface, shape.arrays, case.flow
-    density = absent_field(surface, "density", 1)
-    if asked.density is not None:
-        density = exported_field(
-            surface, arrays, "density", 1, (asked.density.array,), key="flow.density", at=asked.density.at,
-            scale=asked.density.unit.factor,
-        )  # fmt: skip
-    if case.fluid.density is not None:
-        constant = constant_field(surface, "density", 1, float(case.fluid.density))
-        density = density if density.present().all() else _filled(density, constant)
+def _lay(case: Case, shape: Shape) -> Flow:
+    surface = shape.surface
+    samples = _samples(case, shape)
+    sampled = None if samples is None else sample_source(case, shape, samples)
+    flow = _fields(case, shape, samples, sampled)
+    if sampled is not None:
+        flow = replace(flow, notes=sampled.notes)
+    flow = supply_values(case, flow)
+    if case.fluid.law is not None:
+        flow = replace(flow, density=_gas_density(case, shape, flow, samples, sampled))
+    flow, notes = supply_flow(case, surface, flow, samples)
+    return replace(flow, notes=(*flow.notes, *notes))
+
+
+def _samples(case: Case, shape: Shape) -> Samples | None:
+    """Quadrature points of the faces that a field has to be evaluated at, or None."""
+    surface = shape.surface
+    asked = case.flow
+    chosen = np.zeros(len(surface.groups), np.bool_)
+    tensor = asked.stress or asked.velocity_gradient
+    on_faces = tensor is not None and tensor.array in shape.arrays.face and surface.kinds is None
+    if asked.volume is not None or asked.points is not None or (tensor is not None and not on_faces):
+        chosen[:] = True
+    for name in shaped_groups(case):
+        chosen[list(case.groups).index(name)] = True
+    if not chosen.any():
+        return None
+    return sample_places(face_arrays_of(surface), chosen[surface.group_of_face])
+
+
+def _fields(case: Case, shape: Shape, samples: Samples | None, sampled: Sampled | None) -> Flow:
+    surface, asked = shape.surface, case.flow
+    density = _density(case, shape, sampled)
     velocity = absent_field(surface, "velocity", 3)
     if asked.velocity is not None:
-        velocity = exported_field(
-            surface, arrays, "velocity", 3, asked.velocity.array, key="flow.velocity", at=asked.velocity.at,
-            scale=asked.velocity.unit.factor,
-        )  # fmt: skip
-    pressure = absent_field(surface, "pressure", 1)
-    meaning = PressureMeaning()
+        velocity = _field(
+            shape, sampled, "velocity", 3, asked.velocity.array, asked.velocity.at, asked.velocity.unit.factor
+        )
+    pressure, meaning = absent_field(surface, "pressure", 1), PressureMeaning()
     if asked.pressure is not None:
-        pressure = exported_field(
-            surface, arrays, "pressure", 1, (asked.pressure.array,), key="flow.pressure", at=asked.pressure.at,
-            scale=asked.pressure.unit.factor,
-        )  # fmt: skip
-        meaning = PressureMeaning(PressureKind(asked.pressure.kind), Head(asked.pressure.head), asked.pressure.datum)
-    traction = absent_field(surface, "traction", 3)
-    if asked.traction is not None:
-        sign = -1.0 if asked.traction.acts_on == "wall" else 1.0
-        traction = exported_field(
-            surface, arrays, "traction", 3, asked.traction.array, key="flow.traction", at=asked.traction.at,
-            scale=sign * asked.traction.unit.factor,
-        )  # fmt: skip
+        entry = asked.pressure
+        pressure = _field(shape, sampled, "pressure", 1, (entry.array,), entry.at, entry.unit.factor)
+        meaning = PressureMeaning(PressureKind(entry.kind), Head(entry.head), entry.datum)
     return Flow(
         density=density,
         velocity=velocity,
         pressure=pressure,
-        traction=traction,
+        traction=traction_of(case, shape, samples, sampled),
         mass_flux=_mass_flux(case, shape),
         meaning=meaning,
         ambient=None if case.fluid.ambient_pressure is None else float(case.fluid.ambient_pressure),
         gravity=case.fluid.gravity,
+        viscosity=None if case.fluid.viscosity is None else float(case.fluid.viscosity),
+        sample_start=np.empty(0, np.int64) if samples is None else samples.start,
     )
+
+
+def _field(
+    shape: Shape,
+    sampled: Sampled | None,
+    quantity: str,
+    components: int,
+    names: tuple[str, ...],
+    at: str | None,
+    scale: float,
+) -> Field:
+    """A field from the file of the surface, or from where it is sampled."""
+    if sampled is not None:
+        return sampled_field(shape.surface, sampled, quantity, components, scale)
+    return exported_field(
+        shape.surface, shape.arrays, quantity, components, names, key=f"flow.{quantity}", at=at, scale=scale
+    )
+
+
+def _density(case: Case, shape: Shape, sampled: Sampled | None) -> Field:
+    surface, entry = shape.surface, case.flow.density
+    density = absent_field(surface, "density", 1)
+    if entry is not None:
+        density = _field(shape, sampled, "density", 1, (entry.array,), entry.at, entry.unit.factor)
+    if case.fluid.density is not None:
+        constant = constant_field(surface, "density", 1, float(case.fluid.density))
+        density = density if density.present().all() else _filled(density, constant)
+    return density
+
+
+def _gas_density(case: Case, shape: Shape, flow: Flow, samples: Samples | None, sampled: Sampled | None) -> Field:
+    """Density of an ideal gas, with the densities that groups supply in place of it."""
+    surface, fluid, entry = shape.surface, case.fluid, case.flow.temperature
+    temperature = absent_field(surface, "temperature", 1)
+    if entry is not None:
+        temperature = _field(shape, sampled, "temperature", 1, (entry.array,), entry.at, entry.unit.factor)
+    if fluid.temperature is not None:
+        constant = constant_field(surface, "temperature", 1, float(fluid.temperature))
+        temperature = constant if entry is None else _filled(temperature, constant)
+    for k, section in enumerate(case.groups.values()):
+        if section.temperature is not None:
+            temperature = supply(temperature, k, float(section.temperature))
+    assert fluid.gas_constant is not None
+    assert flow.ambient is not None
+    density = ideal_density(
+        surface,
+        flow.pressure,
+        temperature,
+        meaning=flow.meaning,
+        ambient=flow.ambient,
+        gas_constant=float(fluid.gas_constant),
+    )
+    for k, section in enumerate(case.groups.values()):
+        if section.density is not None:
+            density = supply(density, k, float(section.density))
+    return density
 
 
 def _filled(field: Field, constant: Field) -> Field:
@@ -111,48 +184,9 @@ def _mass_flux(case: Case, shape: Shape) -> Field:
             f"the array '{asked.array}' sits on points", where="flow.mass_flux", remedy="A mass flux belongs to faces"
         )
     if asked.positive == "face-normal" and shape.turned is not None and asked.array in arrays.face:
-        values = np.where(shape.turned, -arrays.face[asked.array], arrays.face[asked.array])
-        arrays = type(arrays)(arrays.source, arrays.node, {**arrays.face, asked.array: values}, arrays.has)
+        values: NDArray[np.float64] = arrays.face[asked.array]
+        turned = np.where(shape.turned, -values, values)
+        arrays = type(arrays)(arrays.source, arrays.node, {**arrays.face, asked.array: turned}, arrays.has)
     return exported_field(
         surface, arrays, "mass flux", 1, (asked.array,), key="flow.mass_flux", at="faces", scale=asked.unit.factor
     )
-
-
-def _supplied(case: Case, shape: Shape, flow: Flow) -> Flow:
-    surface = shape.surface
-    density, velocity, pressure, mass_flux = flow.density, flow.velocity, flow.pressure, flow.mass_flux
-    moving = [name for name, section in case.groups.items() if section.supplied_flow()]
-    areas = integrate_flow(surface, still_flow(surface)).column("area_vector") if moving else None
-    for k, (name, section) in enumerate(case.groups.items()):
-        if section.density is not None:
-            density = supply(density, k, float(section.density))
-        if section.pressure is not None:
-            gauge = float(section.pressure)
-            if section.pressure_kind == "absolute":
-                gauge -= flow.ambient or 0.0
-            pressure = supply(pressure, k, gauge)
-        if areas is None or not section.supplied_flow():
-            continue
-        if section.velocity is not None:
-            require_direction(name, section.role, areas[k], section.velocity)
-            vector = section.velocity
-        else:
-            known = float(density.group[k]) if density.where[k] == PER_GROUP else None
-            vector = uniform_velocity(
-                name,
-                section.role,
-                areas[k],
-                flow_rate=None if section.flow_rate is None else float(section.flow_rate),
-                mass_flow=None if section.mass_flow is None else float(section.mass_flow),
-                speed=None if section.speed is None else float(section.speed),
-                density=known,
-            )
-        velocity = supply(velocity, k, vector)
-        mass_flux = _without(mass_flux, k)
-    return replace(flow, density=density, velocity=velocity, pressure=pressure, mass_flux=mass_flux)
-
-
-def _without(field: Field, group: int) -> Field:
-    where = field.where.copy()
-    where[group] = 0
-    return replace(field, where=where)

@@ -12,7 +12,7 @@ from fluxmesh.errors import FieldError, GroupError, InputError
 from fluxmesh.job.exported import ExportedArrays
 from fluxmesh.job.mesh import Loaded, load_mesh
 from fluxmesh.surface.groups import Pick, by_array, by_pick, by_sets
-from fluxmesh.surface.mend import mend
+from fluxmesh.surface.mend import Mended, mend
 from fluxmesh.surface.rawmesh import RawMesh
 from fluxmesh.surface.surface import ControlSurface, Group
 
@@ -67,7 +67,10 @@ def read_shape(case: Case, loaded: Loaded | None = None) -> Shape:
     groups = tuple(Group(name, section.role) for name, section in case.groups.items())
     try:
         notes: list[str] = _skipped(mesh)
-        owner = joined_groups if joined_groups is not None else _groups_of(case, mesh, points, notes)
+        picked = joined_groups is None and case.surface.groups is None
+        owner = np.zeros(mesh.face_count, np.int32)
+        if not picked:
+            owner = joined_groups if joined_groups is not None else _groups_in_file(case, mesh)
         # the invariants first: mending trusts shapes and indices
         ControlSurface(points, mesh.connectivity, mesh.offsets, mesh.kinds, owner, groups, closed=False)
         mended = mend(
@@ -76,10 +79,14 @@ def read_shape(case: Case, loaded: Loaded | None = None) -> Shape:
             mesh.offsets,
             mesh.kinds,
             owner,
-            tuple(case.groups),
+            ("the surface",) if picked else tuple(case.groups),
             require_closed=case.surface.closed,
             weld_tolerance=None if case.surface.weld is None else float(case.surface.weld),
         )
+        owner = mended.group_of_face
+        if picked:
+            # only now do all normals point out of the fluid, and a missing cap has been told as a hole
+            owner = _picked_groups(case, mended, notes)
     except InputError as error:
         if error.where.startswith(where):
             raise
@@ -91,7 +98,7 @@ def read_shape(case: Case, loaded: Loaded | None = None) -> Shape:
         connectivity=mended.connectivity,
         offsets=mended.offsets,
         kinds=mended.kinds,
-        group_of_face=mended.group_of_face,
+        group_of_face=owner,
         groups=groups,
         closed=mended.closed and case.surface.closed,
         shells=mended.shells,
@@ -101,41 +108,51 @@ def read_shape(case: Case, loaded: Loaded | None = None) -> Shape:
 
 
 def _skipped(mesh: RawMesh) -> list[str]:
-    return [
-        f"{count} {kind} cells of {mesh.source} are no faces and were passed over"
-        for kind, count in mesh.skipped.items()
-    ]
+    said = [f"The surface is {mesh.derived} of {mesh.source}"] if mesh.derived else []
+    said += mesh.notes
+    if not mesh.derived:
+        said += [
+            f"{count} {kind} cells of {mesh.source} are no faces and were passed over"
+            for kind, count in mesh.skipped.items()
+        ]
+    return said
 
 
-def _groups_of(case: Case, mesh: RawMesh, points: NDArray[np.float64], notes: list[str]) -> NDArray[np.int32]:
-    """Return the group of every face, by array, by sets or by rule."""
+def _groups_in_file(case: Case, mesh: RawMesh) -> NDArray[np.int32]:
+    """Return the group of every face, by array or by named sets."""
     naming = case.surface.groups
-    rest = [name for name, section in case.groups.items() if section.rest]
+    rest = any(section.rest for section in case.groups.values())
     wanted = {name: section.tag or (name,) for name, section in case.groups.items() if not section.rest}
-    order = list(case.groups)
     if naming is not None and naming.array is not None:
-        owner = by_array(_group_array(mesh, naming.array), wanted, rest=bool(rest), array=naming.array)
-    elif naming is not None and naming.sets:
-        owner = by_sets(
-            mesh.face_sets,
-            {name: tuple(str(tag) for tag in tags) for name, tags in wanted.items()},
-            mesh.face_count,
-            rest=bool(rest),
-        )
+        owner = by_array(_group_array(mesh, naming.array), wanted, rest=rest, array=naming.array)
     else:
-        picks = {
-            name: Pick(section.pick.normal, section.pick.near, np.degrees(section.pick.angle))
-            for name, section in case.groups.items()
-            if section.pick is not None
-        }
-        wanted = dict.fromkeys(picks, ())
-        owner, said = by_pick(points, mesh.connectivity, mesh.offsets, picks, rest=bool(rest), kinds=mesh.kinds)
-        notes += said
-    number = np.array([*(order.index(name) for name in wanted), order.index(rest[0]) if rest else -1], dtype=np.int32)
+        sets = {name: tuple(str(tag) for tag in tags) for name, tags in wanted.items()}
+        owner = by_sets(mesh.face_sets, sets, mesh.face_count, rest=rest)
+    return _numbered(case, list(wanted), owner)
+
+
+def _picked_groups(case: Case, mended: Mended, notes: list[str]) -> NDArray[np.int32]:
+    """Return the group of every face of a mended surface, by rule."""
+    picks = {
+        name: Pick(section.pick.normal, section.pick.near, np.degrees(section.pick.angle))
+        for name, section in case.groups.items()
+        if section.pick is not None
+    }
+    rest = any(section.rest for section in case.groups.values())
+    owner, said = by_pick(mended.points, mended.connectivity, mended.offsets, picks, rest=rest, kinds=mended.kinds)
+    notes += said
+    return _numbered(case, list(picks), owner)
+
+
+def _numbered(case: Case, names: list[str], owner: NDArray[np.int32]) -> NDArray[np.int32]:
+    """From places in `names`, -1 for faces left over, to places among the groups of the case."""
+    order = list(case.groups)
+    rest = next((name for name, section in case.groups.items() if section.rest), None)
+    number = np.array([*(order.index(name) for name in names), -1 if rest is None else order.index(rest)], np.int32)
     owner = number[owner]
-    if rest and not (owner == number[-1]).any():
+    if rest is not None and not (owner == number[-1]).any():
         raise GroupError(
-            f"group '{rest[0]}' has no faces", remedy="The other groups took them all: drop it, or correct them"
+            f"group '{rest}' has no faces", remedy="The other groups took them all: drop it, or correct them"
         )
     return owner
 

@@ -11,6 +11,7 @@ import numpy as np
 
 from fluxmesh.assess.assumptions import CAUTIONS
 from fluxmesh.assess.comparison import Comparison
+from fluxmesh.assess.review import Doubt
 from fluxmesh.assess.verdict import Verdict, relative_without_mean_pressure
 from fluxmesh.balance.balance import Balance
 from fluxmesh.balance.momentum import Ledger
@@ -97,6 +98,10 @@ def _ports(balance: Balance) -> dict[str, Any]:
     }
 
 
+def _doubt(doubt: Doubt) -> dict[str, str]:
+    return {"kind": doubt.kind, "seen": doubt.seen, "matters": doubt.matters, "settle": doubt.remedy()}
+
+
 def result_data(
     balance: Balance,
     verdict: Verdict,
@@ -105,6 +110,8 @@ def result_data(
     assumptions: tuple[str, ...],
     notes: tuple[str, ...] = (),
     comparison: Comparison | None = None,
+    inputs: dict[str, Any] | None = None,
+    doubts: tuple[Doubt, ...] | None = None,
 ) -> dict[str, Any]:
     """Return a balance as plain data, SI units throughout.
 
@@ -122,6 +129,10 @@ def result_data(
         What was mended or noticed on the way.
     comparison : Comparison, optional
         A reported load beside ours.
+    inputs : dict, optional
+        What the figures were computed from.
+    doubts : tuple of Doubt, optional
+        What a review found; null in the file where there was none.
 
     Returns
     -------
@@ -157,9 +168,11 @@ def result_data(
         "fluid": asdict(balance.fluid) if balance.fluid else None,
         "ports": _ports(balance),
         "verdict": asdict(verdict),
+        "inputs": inputs or {},
         "assumptions": assumptions,
         "cautions": CAUTIONS,
         "notes": notes,
+        "doubts": None if doubts is None else [_doubt(doubt) for doubt in doubts],
     }
     if closed:
         data["momentum"] = _ledger(balance.momentum, balance.complete)

@@ -35,4 +35,5 @@ def print_review(console: Console, review: Review) -> None:
     for number, doubt in enumerate(review.doubts, 1):
         console.print(Text(f"{number}. {doubt.seen}"))
         console.print(Text(f"   Why it matters: {doubt.matters}."))
-        console.print(Text(f"   To settle it: {doubt.settle}"))
+        # not wrapped: a line of a case is copied as a whole
+        console.print(Text(f"   To settle it: {doubt.remedy()}"), soft_wrap=True)

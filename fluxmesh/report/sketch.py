@@ -12,7 +12,7 @@ from fluxmesh.balance.wrench import central_axis
 from fluxmesh.field.field import Field
 from fluxmesh.field.flow import Flow
 from fluxmesh.field.pressure import pressure_terms
-from fluxmesh.integral.layout import AT_FACE, AT_NODE, PER_GROUP
+from fluxmesh.integral.layout import AT_FACE, AT_NODE, AT_SAMPLE, PER_GROUP
 from fluxmesh.report.scene import Arrow, Marker, Scene
 from fluxmesh.surface.surface import ControlSurface
 
@@ -53,17 +53,17 @@ def _pressure_of(
         origin=origin,
     )
     group = surface.group_of_face[face]
-    values = _mean_values(field, triangles, face, group)
+    values = _mean_values(flow, field, triangles, face, group)
     if terms.times_density:
         exported = field.where[group] > PER_GROUP
-        values = np.where(exported, values * _mean_values(flow.density, triangles, face, group), values)
+        values = np.where(exported, values * _mean_values(flow, flow.density, triangles, face, group), values)
     centre = surface.points[triangles].mean(axis=1) - origin
     shift = terms.offset + centre @ np.array([terms.head_x, terms.head_y, terms.head_z])
     return np.asarray(np.where(field.where[group] > PER_GROUP, values + shift, values))
 
 
 def _mean_values(
-    field: Field, triangles: NDArray[np.int64], face: NDArray[np.int64], group: NDArray[np.int32]
+    flow: Flow, field: Field, triangles: NDArray[np.int64], face: NDArray[np.int64], group: NDArray[np.int32]
 ) -> NDArray[np.float64]:
     values = np.full(face.size, np.nan)
     where = field.where[group]
@@ -73,6 +73,13 @@ def _mean_values(
     at = where == AT_FACE
     if at.any():
         values[at] = field.scale * field.face[face[at]]
+    at = where == AT_SAMPLE
+    if at.any():
+        start = flow.sample_start
+        counts = np.diff(start)
+        sums = np.concatenate([[0.0], np.cumsum(np.nan_to_num(field.sample))])
+        means = (sums[start[1:]] - sums[start[:-1]]) / np.maximum(counts, 1)
+        values[at] = field.scale * means[face[at]]
     at = where == PER_GROUP
     values[at] = field.group[group[at]]
     return values
@@ -116,12 +123,22 @@ def _arrows(balance: Balance) -> list[Arrow]:
         weight = hardware.mass * np.asarray(setting.gravity)
         arrows.append(Arrow("weight", "weight of hardware", "gravity on hardware", np.asarray(hardware.centre), weight))
     load = balance.load.best()
+    weighed = balance.fluid is not None and bool(np.any(balance.fluid.weight)) and balance.load.from_balance is load
+    heavy = ", weight of fluid included" if weighed else ""
     if load is not None:
         axis = central_axis(load)
         # nearest to the body, not to the anchor: the line of action may pass far from it
         middle = table.origin if balance.enclosed is None else balance.enclosed.centroid
         at = axis.point + axis.direction * float((middle - axis.point) @ axis.direction)
-        arrows.append(Arrow("resultant", "load of the flow", "flow on hardware", at, load.force))
+        arrows.append(
+            Arrow(
+                "resultant",
+                "load of the flow" + heavy,
+                "flow on hardware",
+                at,
+                load.force,
+            )
+        )
     if balance.reaction is not None:
         wrench = balance.reaction.wrench
         arrows.append(Arrow("reaction", "reaction", "anchor on hardware", wrench.at, wrench.force))

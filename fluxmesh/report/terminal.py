@@ -9,8 +9,10 @@ import numpy as np
 
 from fluxmesh.assess.assumptions import CAUTIONS
 from fluxmesh.assess.comparison import Comparison
+from fluxmesh.assess.review import Doubt
 from fluxmesh.assess.verdict import Verdict
 from fluxmesh.balance.balance import Balance
+from fluxmesh.balance.weight import weight_wrench
 from fluxmesh.balance.wrench import Vector, Wrench
 from fluxmesh.surface.surface import ControlSurface
 
@@ -84,7 +86,7 @@ def _surface_lines(balance: Balance, surface: ControlSurface) -> list[str]:
         )
     if balance.fluid is not None:
         lines.append(f"Fluid held: {figure(balance.fluid.mass)} kg, weight {_row(balance.fluid.weight)} N")
-    return lines + [f"Note: {note}" for note in surface.notes]
+    return lines
 
 
 def _ledger(balance: Balance) -> Any:
@@ -145,6 +147,11 @@ def _loads(balance: Balance) -> Any:
         )
         rows.append(_wrench_row("difference", gap, scale))
     if balance.reaction is not None:
+        if balance.setting.hardware is not None:
+            held = balance.setting.hardware
+            at = np.asarray(balance.setting.anchor, dtype=np.float64)
+            weight = weight_wrench(held.mass, np.asarray(held.centre), balance.setting.gravity, at)
+            rows.append(_wrench_row("weight of hardware", weight, scale))
         rows.append(_wrench_row("ANCHOR ON HARDWARE", balance.reaction.wrench, scale))
     return _table(
         f"Loads, moments about the anchor {_place(np.asarray(balance.setting.anchor))} m",
@@ -227,8 +234,8 @@ def _ports(balance: Balance) -> Any:
     columns = [
         ("port", "left"),
         ("speed, m/s", "right"),
-        ("pressure, Pa", "right"),
-        ("total pressure, Pa", "right"),
+        ("gauge pressure, Pa", "right"),
+        ("total (gauge), Pa", "right"),
         ("momentum factor", "right"),
         ("energy factor", "right"),
         ("reversed", "right"),
@@ -252,7 +259,9 @@ def print_balance(
     title: str,
     surface: ControlSurface,
     assumptions: Sequence[str],
+    notes: Sequence[str] = (),
     comparison: Comparison | None = None,
+    doubts: Sequence[Doubt] | None = None,
 ) -> None:
     """Print a balance, its loads beside their assumptions, and its verdict.
 
@@ -267,11 +276,15 @@ def print_balance(
     title : str
         Title of the case.
     surface : ControlSurface
-        The surface, with notes on what was mended.
+        The surface.
     assumptions : sequence of str
         What the figures assume.
+    notes : sequence of str, optional
+        What was mended, sampled or solved on the way.
     comparison : Comparison, optional
         A reported load beside ours.
+    doubts : sequence of Doubt, optional
+        What a review found; None when there was no review.
     """
     from rich.text import Text
 
@@ -279,7 +292,7 @@ def print_balance(
         console.print(Text(line, style=style))
 
     say(title, "bold")
-    for line in _surface_lines(balance, surface):
+    for line in [*_surface_lines(balance, surface), *(f"Note: {note}" for note in notes)]:
         say(line)
     console.print()
     console.print(_ledger(balance))
@@ -292,6 +305,15 @@ def print_balance(
     for caution in CAUTIONS:
         say(f"Caution: {caution}")
     console.print()
-    say(*_verdict_line(verdict))
+    line, style = _verdict_line(verdict)
+    if doubts:
+        count = len(doubts)
+        line += f", with {count} DOUBT{'S' if count > 1 else ''} about the case"
+        style = style.replace("green", "yellow")
+    say(line, style)
     for reason in verdict.reasons:
         say(f"  - {reason}")
+    for doubt in doubts or ():
+        say(f"  - Doubt: {doubt.seen}. {doubt.matters}. To settle it: {doubt.remedy()}")
+    if doubts is None:
+        say("  - The case was not reviewed for doubts: `fluxmesh check` does it")
