@@ -42,3 +42,12 @@ def test_the_table_in_the_readme_is_the_one_computed(rows) -> None:
         line = next(line for line in text.splitlines() if line.startswith(f"| {form} |"))
         assert f"{row['force']:.5f}" in line
         assert np.isfinite(row["apart"])
+
+
+@pytest.mark.parametrize("file", ["manifold/manifold_coarse.vtp", "manifold/manifold_fine.vtp", "rotor/rotor.vtp"])
+def test_start_and_balance_work_untouched_on_shipped_files_with_all_data(fluxmesh, tmp_path, file: str) -> None:
+    ran = fluxmesh("start", MESHES / file, "--to", tmp_path / "new.toml")
+    assert ran.code == 0, ran.err
+    ran = fluxmesh("balance", tmp_path / "new.toml", "--out", tmp_path / "out", "--no-pictures")
+    assert ran.code == 0, ran.err
+    assert "VERDICT: closes" in ran.out

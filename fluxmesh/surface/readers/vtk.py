@@ -13,9 +13,10 @@ from fluxmesh.errors import FileError
 from fluxmesh.surface.rawmesh import RawMesh
 from fluxmesh.surface.readers.content import FileContent, surface_of
 from fluxmesh.surface.readers.vtk_dataset import content_of_dataset
-from fluxmesh.surface.readers.vtk_legacy import check_vtk_legacy
+from fluxmesh.surface.readers.vtk_guard import try_reader
+from fluxmesh.surface.readers.vtk_legacy import check_vtk_legacy, legacy_holds_polyhedra
 from fluxmesh.surface.readers.vtk_messages import captured_messages
-from fluxmesh.surface.readers.vtk_xml import check_vtk_xml
+from fluxmesh.surface.readers.vtk_xml import check_vtk_xml, holds_polyhedra
 
 __all__ = ["VTK_XML_KINDS", "content_of_vtk_xml", "read_vtk_legacy", "read_vtk_xml"]
 
@@ -75,7 +76,10 @@ def content_of_vtk_xml(path: Path) -> FileContent:
         raise FileError(
             f"holds a data set of kind {kind}", str(path), f"Kinds with faces are {', '.join(VTK_XML_KINDS)}"
         )
-    return _read(vtkXMLPolyDataReader() if kind == "PolyData" else vtkXMLUnstructuredGridReader(), path)
+    reader = vtkXMLPolyDataReader() if kind == "PolyData" else vtkXMLUnstructuredGridReader()
+    if kind == "UnstructuredGrid" and holds_polyhedra(path):
+        try_reader(reader, path)
+    return _read(reader, path)
 
 
 def read_vtk_legacy(path: Path, skin: bool | None = None) -> RawMesh:
@@ -107,6 +111,8 @@ def read_vtk_legacy(path: Path, skin: bool | None = None) -> RawMesh:
     # Without these, only the first array of each kind is read.
     for kind in ("Scalars", "Vectors", "Tensors", "Normals", "TCoords", "Fields"):
         getattr(reader, f"ReadAll{kind}On")()
+    if legacy_holds_polyhedra(path):
+        try_reader(reader, path)
     return surface_of(_read(reader, path), str(path), skin)
 
 

@@ -69,7 +69,7 @@ def content_of_dataset(data: Any, source: str, where: str) -> FileContent:
         source=source,
         points=_floating(_view(points.GetData())) if points is not None else np.zeros((0, 3)),
         faces=faces,
-        volume=lambda: volume_of_grid(data, hidden),
+        volume=lambda: volume_of_grid(data, hidden, where),
         volume_cells=volume_cell_count(data, hidden) if grid else 0,
         node_arrays=nodes,
         face_arrays=of_face,

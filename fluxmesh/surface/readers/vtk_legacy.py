@@ -6,9 +6,11 @@ import mmap
 import re
 from pathlib import Path
 
+import numpy as np
+
 from fluxmesh.errors import FileError
 
-__all__ = ["check_vtk_legacy"]
+__all__ = ["check_vtk_legacy", "legacy_holds_polyhedra"]
 
 # A line that starts with a letter opens a block, unless it is a value that is not finite.
 _KEYWORD = re.compile(rb"^[ \t]*(?!(?:[-+]?(?:nan|inf))\b)[A-Za-z_][^\r\n]*", re.MULTILINE | re.IGNORECASE)
@@ -53,6 +55,36 @@ def check_vtk_legacy(path: Path) -> None:
                 str(path),
                 "It was cut short or is still being written; export or copy it again",
             )
+
+
+def legacy_holds_polyhedra(path: Path) -> bool:
+    """Return whether a legacy VTK grid has cells that are polyhedra.
+
+    Parameters
+    ----------
+    path : Path
+        A file that `check_vtk_legacy` passed.
+
+    Returns
+    -------
+    bool
+        True also where the types of the cells cannot be told.
+    """
+    with path.open("rb") as stream, mmap.mmap(stream.fileno(), 0, access=mmap.ACCESS_READ) as data:
+        at = data.rfind(b"CELL_TYPES")
+        if at < 0:
+            # a damaged word, or no grid
+            return b"UNSTRUCTURED_GRID" in data[:4096]
+        end = data.find(b"\n", at)
+        words = data[at:end].split()
+        if len(words) < 2 or not words[1].isdigit():
+            return True
+        count = int(words[1])
+        if data[:1024].splitlines()[2].strip().upper().startswith(b"ASCII"):
+            numbers = data[end : end + 16 * count].split()[:count]
+            return b"42" in numbers
+        stored = data[end + 1 : end + 1 + 4 * count]
+        return bool((np.frombuffer(stored[: len(stored) // 4 * 4], dtype=">i4") == 42).any())
 
 
 def _values_needed(lines: list[list[bytes]]) -> int | None:

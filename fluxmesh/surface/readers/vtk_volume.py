@@ -7,6 +7,7 @@ from typing import Any, Final
 import numpy as np
 from numpy.typing import NDArray
 
+from fluxmesh.errors import FileError
 from fluxmesh.surface.readers.cell_shapes import SHAPES
 from fluxmesh.surface.readers.faces import gather
 from fluxmesh.surface.readers.volume import CellBlock, Polyhedra, Volume
@@ -56,7 +57,7 @@ def volume_cell_count(data: Any, hidden: NDArray[np.bool_] | None) -> int:
     return sum(int(counts[number]) for number in np.flatnonzero(counts) if cell_type_name(int(number))[1] == 3)
 
 
-def volume_of_grid(data: Any, hidden: NDArray[np.bool_] | None) -> Volume:
+def volume_of_grid(data: Any, hidden: NDArray[np.bool_] | None, where: str) -> Volume:
     """Pick the volume cells out of a VTK unstructured grid.
 
     Parameters
@@ -65,11 +66,18 @@ def volume_of_grid(data: Any, hidden: NDArray[np.bool_] | None) -> Volume:
         Cells of any type.
     hidden : ndarray of bool, shape (n_cells,), or None
         Cells to leave out.
+    where : str
+        File, for messages.
 
     Returns
     -------
     Volume
         By shape; cells are numbered as in the grid.
+
+    Raises
+    ------
+    FileError
+        Polyhedra whose faces are not there.
     """
     types = cell_types(data)
     connectivity, offsets = cell_arrays(data.GetCells())
@@ -90,7 +98,7 @@ def volume_of_grid(data: Any, hidden: NDArray[np.bool_] | None) -> Volume:
             chosen &= ~hidden
         cells = np.flatnonzero(chosen)
         if number == _POLYHEDRON:
-            polyhedra = _polyhedra(data, cells)
+            polyhedra = _polyhedra(data, cells, where)
             continue
         for size in np.unique(sizes[cells]):
             some = cells[sizes[cells] == size]
@@ -103,7 +111,7 @@ def volume_of_grid(data: Any, hidden: NDArray[np.bool_] | None) -> Volume:
     return Volume(tuple(blocks), polyhedra, frozenset(names), unknown)
 
 
-def _polyhedra(data: Any, cells: NDArray[np.int64]) -> Polyhedra:
+def _polyhedra(data: Any, cells: NDArray[np.int64], where: str) -> Polyhedra:
     """Return the faces of the polyhedra of a grid."""
     faces, starts = cell_arrays(data.GetPolyhedronFaces())
     if starts is None:
@@ -111,6 +119,11 @@ def _polyhedra(data: Any, cells: NDArray[np.int64]) -> Polyhedra:
     of_cell, firsts = cell_arrays(data.GetPolyhedronFaceLocations())
     if firsts is None:
         firsts = np.arange(0, of_cell.size + 1, 3, dtype=np.int64)
+    count = starts.size - 1
+    if int(cells.max(initial=-1)) >= firsts.size - 1 or bool(((of_cell < 0) | (of_cell >= count)).any()):
+        raise FileError(
+            f"has {cells.size} polyhedra, but not the faces they name", where, "The file is damaged; export it again"
+        )
     chosen, ends = gather(of_cell, firsts, cells)
     connectivity, offsets = gather(faces, starts, chosen)
     return Polyhedra(connectivity, offsets, np.repeat(cells, np.diff(ends)))

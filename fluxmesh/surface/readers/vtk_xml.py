@@ -20,10 +20,13 @@ import numpy as np
 
 from fluxmesh.errors import FieldError, FileError
 
-__all__ = ["check_vtk_xml", "vtk_xml_kind"]
+__all__ = ["check_vtk_xml", "holds_polyhedra", "vtk_xml_kind"]
 
 _TAG = re.compile(rb"<(/?)(Piece|PointData|CellData|Points|Polys|Cells|DataArray)\b([^>]*)>")
 _ATTRIBUTE = re.compile(r"""(\w+)\s*=\s*(?:"([^"]*)"|'([^']*)')""")
+_POLYHEDRA = re.compile(
+    rb"""<DataArray\b[^>]*Name\s*=\s*["'](?:faces|faceoffsets|face_offsets|polyhedron_offsets)["']"""
+)
 _BYTES = {
     **{f"{sign}Int{8 * size}": size for sign in ("", "U") for size in (1, 2, 4, 8)},
     "Float32": 4,
@@ -119,6 +122,24 @@ def vtk_xml_kind(path: Path) -> str:
     """
     with path.open("rb") as stream, mmap.mmap(stream.fileno(), 0, access=mmap.ACCESS_READ) as data:
         return _head(data, path).get("type", "nothing")
+
+
+def holds_polyhedra(path: Path) -> bool:
+    """Return whether a VTK XML grid has lists of polyhedron faces.
+
+    Parameters
+    ----------
+    path : Path
+        A file that `check_vtk_xml` passed.
+
+    Returns
+    -------
+    bool
+        True when such an array is declared, empty or not.
+    """
+    with path.open("rb") as stream, mmap.mmap(stream.fileno(), 0, access=mmap.ACCESS_READ) as data:
+        end = data.find(b"<AppendedData")
+        return _POLYHEDRA.search(data, 0, end if end >= 0 else len(data)) is not None
 
 
 def _head(data: mmap.mmap, path: Path) -> dict[str, str]:
