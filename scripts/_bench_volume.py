@@ -21,8 +21,8 @@ from fluxmesh.surface.readers.volume_grid import volume_mesh
 Row = tuple[str, str, str]
 
 
-def ball_of_tetrahedra(cells: int, crowding: float = 0.0):
-    """A ball of radius 1 with velocity and pressure; `crowding` makes the cells at its skin thinner."""
+def ball_of_tetrahedra(cells: int, power: int = 1):
+    """A ball of radius 1 with velocity and pressure; a high power crowds the cells in the middle."""
     import pyvista
 
     n = max(round((cells / 6) ** (1 / 3)), 2)
@@ -34,8 +34,7 @@ def ball_of_tetrahedra(cells: int, crowding: float = 0.0):
     tetrahedra = np.stack([np.stack([corner[at] for at in path], axis=-1) for path in paths], axis=1).reshape(-1, 4)
     # each cube shell becomes a sphere
     shell, length = np.abs(cube).max(axis=1), np.linalg.norm(cube, axis=1)
-    radius = shell if crowding == 0 else np.tanh(crowding * shell) / np.tanh(crowding)
-    points = cube * np.divide(radius, length, out=np.zeros_like(length), where=length > 0)[:, None]
+    points = cube * np.divide(shell**power, length, out=np.zeros_like(length), where=length > 0)[:, None]
     grid = pyvista.UnstructuredGrid({10: tetrahedra}, points)
     x, y, z = points.T
     grid.point_data["velocity"] = np.stack([y + 0.1, z - x, 0.5 * x + 0.2], axis=-1)
@@ -104,12 +103,12 @@ def measure_volume(cells: int = 1_000_000, faces: int = 200_000, times: int = 3)
     import pyvista
 
     names = {"velocity": ("velocity",), "pressure": ("pressure",)}
-    ball, crowded = ball_of_tetrahedra(cells), ball_of_tetrahedra(cells, 3.0)
+    ball = ball_of_tetrahedra(cells)
     scenes = (
         ("inside the volume", ball, places_on_sphere(faces, 0.8), False),
-        ("inside, cells crowded at the skin", crowded, places_on_sphere(faces, 0.97), False),
         ("on its skin", ball, places_on_skin(ball, faces), False),
         ("off its skin, nearest points taken", ball, places_on_sphere(faces, 1.0), True),
+        ("around a small body, where cells crowd", ball_of_tetrahedra(cells, 5), places_on_sphere(faces, 0.03), False),
     )
     for what, grid, places, snapped in scenes:
         cloud = pyvista.PolyData(places)

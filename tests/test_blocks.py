@@ -274,6 +274,17 @@ def test_skin_of_a_volume_in_pieces_is_that_of_the_whole(tmp_path: Path, read: R
     assert split.derived == f"the skin of {'4 hexahedra' if shape == 'hexahedron' else '24 tetrahedra'}"
 
 
+def test_thin_wall_within_a_piece_stays(tmp_path: Path, read: Read) -> None:
+    import pyvista as pv
+
+    points, rows = lattice((2, 1, 1))
+    doubled = pv.UnstructuredGrid({12: np.array([rows[0], rows[1] + len(points)])}, np.concatenate([points, points]))
+    mesh = read(write_pieces(tmp_path / "split.pvtu", [doubled, cubes(2, 1)]))
+    # two sides of the wall at x = 1, and no face at x = 2
+    ends = Counter(float(next(iter(place))[0]) for place in corner_places(mesh) if len({x for x, _, _ in place}) == 1)
+    assert ends == {0.0: 1, 1.0: 2, 3.0: 1}
+
+
 def test_ghost_layers_of_pieces_do_not_count(tmp_path: Path, read: Read) -> None:
     left, right = cubes(0, 3), cubes(1, 3)
     left.cell_data["vtkGhostType"] = np.array([0, 0, 1], dtype=np.uint8)

@@ -246,6 +246,7 @@ PLANTS: dict[str, tuple[str, Plant]] = {
     "head in the pressure already": ("head", _with_head),
     "gravity missing": ("gravity in pressure", _without_gravity),
     "gravity not stated": ("gravity not stated", _unstated_gravity),
+    "gravity in feet": ("gravity", lambda case: case.set("fluid", "gravity", value=[0, 0, -32.174])),
     "kind not stated": ("kind not stated", _unstated_kind),
     "head not stated": ("head not stated", _unstated_head),
     "acts_on not stated": ("acts_on not stated", _unstated_acts_on),

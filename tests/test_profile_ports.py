@@ -14,8 +14,10 @@ from numpy.testing import assert_allclose, assert_array_equal
 
 from fluxmesh.errors import FieldError, GroupError
 from fluxmesh.field.flow import face_arrays_of
+from fluxmesh.field.profiles.dissection import dissection_order
 from fluxmesh.field.profiles.plane_mesh import PlaneMesh, child_of, divided, loose_parts, quadratic_values
 from fluxmesh.field.profiles.port import PortPatch, plane_coordinates, require_plane, require_wall
+from fluxmesh.field.profiles.vertices import edges_of, joined_corners
 from fluxmesh.field.profiles.wall_distance import (
     distance_to_segments,
     edge_segments,
@@ -151,6 +153,18 @@ def test_copies_of_points_within_a_port_are_joined() -> None:
     assert whole.name == apart.name == "z+"
     assert len(apart.points) == len(whole.points) == 16 + 33
     assert len(apart.wall_edges) == len(whole.wall_edges) == 12
+
+
+def test_only_coincident_corners_are_joined() -> None:
+    # two triangles of a square with points of their own; one copy is off by 1e-6
+    places = np.array([[[0, 0, 0], [1, 0, 0], [1, 1, 0]], [[0, 0, 0], [1, 1, 1e-6], [0, 1, 0]]], float)
+    for tolerance, count in ((0.0, 5), (1e-7, 5), (2e-6, 4), (10.0, 4)):  # the last is capped by the spacing
+        corners, vertices = joined_corners(np.arange(6).reshape(2, 3), places, tolerance)
+        assert len(vertices) == count
+        assert_array_equal(np.unique(corners), np.arange(count))
+        assert_allclose(vertices[corners], places, rtol=0, atol=1.1e-6)
+    assert edges_of(corners).uses.sum() == 6
+    assert_array_equal(np.bincount(edges_of(corners).uses), [0, 4, 1])
 
 
 def test_a_splitter_that_ends_in_the_port_is_a_wall() -> None:
@@ -334,6 +348,37 @@ def test_divided_triangles_keep_every_place() -> None:
     # fixed nodes stay on the arcs
     radius = np.linalg.norm(mesh.nodes[mesh.fixed], axis=1)
     assert_allclose(np.minimum(np.abs(radius - 1), np.abs(radius - 0.5)), 0, atol=0.01)
+
+
+@settings(max_examples=20, deadline=None)
+@given(st.integers(1, 60), st.integers(0, 2**32 - 1))
+def test_dissection_puts_the_nodes_of_a_cut_after_both_halves(count: int, seed: int) -> None:
+    rng = np.random.default_rng(seed)
+    elements = rng.integers(0, 2 * count, size=(count, 3))
+    order = dissection_order(elements, rng.random((count, 2)), 2 * count + 3)
+    assert_array_equal(np.sort(order), np.arange(2 * count + 3))
+    unused = np.setdiff1d(np.arange(2 * count + 3), elements)
+    assert_array_equal(np.sort(order[: unused.size]), unused)
+
+
+def test_dissection_keeps_factors_sparse() -> None:
+    from scipy.sparse import csc_array
+    from scipy.sparse.linalg import splu
+
+    x, y = np.meshgrid(np.arange(40.0), np.arange(40.0), indexing="ij")
+    number = np.random.default_rng(2).permutation(1600).reshape(40, 40)
+    cells = np.stack([number[:-1, :-1], number[1:, :-1], number[1:, 1:], number[:-1, 1:]], axis=-1).reshape(-1, 4)
+    middles = np.column_stack([x[:-1, :-1].ravel(), y[:-1, :-1].ravel()])
+    rows, columns = np.repeat(cells, 4, axis=1).ravel(), np.tile(cells, (1, 4)).ravel()
+    matrix = csc_array((np.where(rows == columns, 9.0, -1.0), (rows, columns)), shape=(1600, 1600))
+
+    def fill(order: np.ndarray) -> int:
+        options = {"permc_spec": "NATURAL", "diag_pivot_thresh": 0.0, "options": {"SymmetricMode": True}}
+        return int(splu(csc_array(matrix[order][:, order]), **options).L.nnz)
+
+    # about 31/4 n log2 n entries (George 1973) against n^1.5 of rows after one another
+    assert fill(dissection_order(cells, middles, 1600)) < 1600 * 31 / 4 * np.log2(1600) / 2
+    assert fill(number.ravel()) > 1600**1.5 * 0.9
 
 
 def test_parts_that_nothing_holds_are_counted() -> None:

@@ -19,6 +19,7 @@ from hypothesis import strategies as st
 from numpy.testing import assert_allclose
 
 from fluxmesh.errors import FieldError
+from fluxmesh.field.flow import integrate_flow, lay_flow
 from fluxmesh.field.profiles.laminar import laminar_shape, laminar_solution
 from fluxmesh.field.profiles.options import ProfileOptions, SpeedTable
 from fluxmesh.field.profiles.plane_mesh import PlaneMesh, solve_poisson
@@ -28,6 +29,8 @@ from fluxmesh.field.profiles.resolution import profile_factors, resampled
 from fluxmesh.field.profiles.tabulated import tabulated_shape
 from fluxmesh.field.profiles.uniform import uniform_shape
 from fluxmesh.field.profiles.velocity import PROFILES, kinetic_energy_factor, momentum_factor, profile_velocity
+from fluxmesh.integral.layout import AT_SAMPLE
+from fluxmesh.surface.surface import ControlSurface
 from tests.measures import observed_order
 from tests.port_sections import (
     annulus_section,
@@ -389,6 +392,36 @@ def test_factors_do_not_depend_on_place_or_size(seed: int, kind: str, power: flo
     assert_allclose(there, here, rtol=1e-7)
 
 
+@pytest.mark.parametrize("kind", sorted(set(PROFILES) - {"uniform"}))
+def test_nothing_flows_outside_the_outline(kind: str) -> None:
+    patch = PORTS["one polygon"]()
+    outside = patch.sample_triangle < 0
+    speed = np.abs(profile_velocity(patch, kind, 1.0, **OPTIONS[kind]) @ patch.normal)
+    assert_allclose(speed[outside], 0, rtol=0, atol=0)
+    assert np.all(speed[~outside] > 0)
+
+
+@pytest.mark.parametrize(
+    "make", [lambda: duct(round_section(12, 3), askew=True), lambda: curved_duct(round_section(6, 2), 8)]
+)
+def test_the_integration_finds_the_flow_and_the_factors(make: Callable[[], ControlSurface]) -> None:
+    surface = make()
+    patch = PortPatch.of(surface, OUT)
+    velocity = profile_velocity(patch, "laminar", 0.25)
+    flow = lay_flow(surface, density=800.0, velocity=(0, 0, 0))
+    where = flow.velocity.where.copy()
+    where[OUT] = AT_SAMPLE
+    laid = replace(
+        flow, velocity=replace(flow.velocity, where=where, sample=velocity), sample_start=patch.samples.start
+    )
+    table = integrate_flow(surface, laid)
+    assert_allclose(table.column("mass_flow")[OUT], 800 * 0.25, rtol=1e-15)
+    momentum = 800 * momentum_factor(patch, velocity) * 0.25**2 / patch.area
+    assert_allclose(table.column("momentum_flux")[OUT], momentum * patch.normal, rtol=0, atol=1e-13 * momentum)
+    energy = 800 / 2 * kinetic_energy_factor(patch, velocity) * 0.25**3 / patch.area**2
+    assert_allclose(table.column("kinetic_energy_flux")[OUT], energy, rtol=1e-13)
+
+
 def test_uniform_profiles_take_bent_ports() -> None:
     plane, faces = round_section(12, 3)
     surface = duct((plane, faces))
@@ -468,9 +501,12 @@ def test_tables_that_do_not_cover_the_port() -> None:
     assert profile_velocity(patch, "table", 1.0, table=SpeedTable([0.0004, 0.4996], [0, 1], "wall-distance")).any()
 
 
-def test_radius_between_parallel_symmetry_planes() -> None:
-    strip = rectangle(2, 2, lambda middle: "symmetry" if middle[0] in (0, 2) else "wall")
-    with pytest.raises(FieldError, match=r"group 'out': the symmetry planes .* have no common point in it: .* by 1 m"):
+@pytest.mark.parametrize("width", [2.0, 0.02])
+def test_radius_between_parallel_symmetry_planes(width: float) -> None:
+    section = grid_section([0, width], [0, 1])
+    strip = PortPatch.of(duct(section, lambda middle: "symmetry" if middle[0] in (0, width) else "wall"), OUT)
+    message = f"group 'out': the symmetry planes .* have no common point in it: .* by {width / 2:g} m"
+    with pytest.raises(FieldError, match=message):
         profile_velocity(strip, "table", 1.0, table=SpeedTable([0, 3], [1, 1], "radius"))
 
 

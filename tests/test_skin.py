@@ -12,13 +12,14 @@ from hypothesis import given
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose, assert_array_equal
 
-from fluxmesh.errors import FileError
-from fluxmesh.surface.files import read_mesh
+from fluxmesh.errors import FileError, InputError
+from fluxmesh.surface.files import read_mesh, skin_hint
 from fluxmesh.surface.rawmesh import RawMesh
 from fluxmesh.surface.readers.cell_shapes import SHAPES
 from fluxmesh.surface.readers.same_faces import coincident_points, face_labels, lone_rows
 from fluxmesh.surface.readers.skin import corner_rows, take_skin
 from fluxmesh.surface.readers.volume import CellBlock, Volume
+from fluxmesh.surface.readers.vtk_volume import volume_of_grid
 from fluxmesh.surface.surface import FaceKind
 from tests.mesh_writing import BOX_POINTS, cut, lattice, raised, write_meshio, write_vtk_xml
 
@@ -260,6 +261,75 @@ def test_polyhedra_give_the_skin_of_the_hexahedra_they_are(tmp_path: Path) -> No
     assert_array_equal(np.sort(mesh.face_arrays["T"]), np.sort(plain.face_arrays["cell"] + 0.25))
 
 
+def test_polyhedra_whose_faces_are_not_there() -> None:
+    points, rows = lattice((2, 1, 1))
+    grid = polyhedra(points, rows)
+    assert len(volume_of_grid(grid, None, "box").polyhedra.cells) == 12
+    grid.GetPolyhedronFaceLocations().GetConnectivityArray().SetValue(3, 77)
+    with pytest.raises(FileError, match="box: has 2 polyhedra, but not the faces they name"):
+        volume_of_grid(grid, None, "box")
+
+
+def test_reader_that_ends_its_process_is_one_message(
+    tmp_path: Path, capfd: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    from fluxmesh.surface.readers import vtk_guard
+
+    points, rows = lattice((2, 2, 1))
+    path = write_vtk_xml(polyhedra(points, rows), tmp_path / "poly.vtu", "raw")
+    whole = path.read_bytes()
+    # among the last arrays, which say where the faces of each cell start: a count beyond the memory
+    place = whole.rindex(b"</AppendedData>") - 64
+    path.write_bytes(whole[:place] + (2**61).to_bytes(8, "little") + whole[place + 8 :])
+    with pytest.raises(
+        FileError, match=r"poly.vtu: cannot be read \(its lists of polyhedron faces are damaged\). It is"
+    ):
+        read_mesh(path)
+    path.write_bytes(whole)
+    monkeypatch.setattr(vtk_guard, "_SECONDS", 0.0)
+    with pytest.raises(FileError, match=r"poly.vtu: cannot be read \(its reader did not end within 0 s\). It is"):
+        read_mesh(path)
+    assert capfd.readouterr() == ("", "")
+
+
+def refused(path: Path) -> bool:
+    """Read a damaged file; the only error there may be names it."""
+    try:
+        read_mesh(path)
+    except InputError as error:
+        return str(path) in str(error) or pytest.fail(str(error))
+    return False
+
+
+@pytest.mark.parametrize("kind", ["hexahedra", "polyhedra"])
+@pytest.mark.parametrize("suffix", [".vtu", ".vtk"])
+def test_random_damage_ends_in_one_message(
+    tmp_path: Path, capfd: pytest.CaptureFixture[str], suffix: str, kind: str
+) -> None:
+    import pyvista as pv
+
+    rng = np.random.default_rng(2)
+    points, rows = lattice((2, 2, 1))
+    grid = pv.UnstructuredGrid({12: rows}, points) if kind == "hexahedra" else polyhedra(points, rows)
+    grid.point_data["p"] = points[:, 0]
+    path = tmp_path / f"box{suffix}"
+    grid.save(path)
+    whole = path.read_bytes()
+    read_mesh(path)
+    capfd.readouterr()
+    failed = 0
+    # polyhedra are tried in a process of their own, which takes its time
+    for _ in range(30 if kind == "hexahedra" else 3):
+        damaged = bytearray(whole)
+        start = int(rng.integers(len(whole)))
+        for _ in range(rng.integers(1, 20)):
+            damaged[min(len(whole) - 1, start + int(rng.integers(100)))] = rng.integers(256)
+        path.write_bytes(damaged)
+        failed += refused(path)
+    assert failed > 0
+    assert capfd.readouterr() == ("", "")
+
+
 def volume_file(tmp_path: Path, suffix: str) -> tuple[Path, np.ndarray, np.ndarray]:
     """Write a bent box of tetrahedra with values on points and cells, and one point that nothing uses."""
     points, rows = cut(*lattice((2, 2, 1), bend=0.1), "tetra")
@@ -360,6 +430,15 @@ def test_faces_of_a_mixed_file_are_taken_as_they_are(tmp_path: Path) -> None:
     assert_array_equal(mesh.face_arrays["tag"], [1, 2])
     assert_array_equal(mesh.face_arrays["tau"], [0.25, 1.25])
     assert read_mesh(mixed_file(tmp_path, np.array([FEED, DRAIN]), [1, 2]), skin=False).face_count == 2
+
+
+def test_hint_at_the_skin(tmp_path: Path) -> None:
+    path = mixed_file(tmp_path, np.array([FEED, DRAIN]), [1, 2])
+    assert skin_hint(read_mesh(path)) == (
+        "mixed.vtu also holds 2 volume cells: 'skin = true' under [surface] takes their skin, "
+        "with the tags of the faces on it"
+    )
+    assert skin_hint(read_mesh(path, skin=True)) == ""
 
 
 def test_skin_of_a_mixed_file_takes_over_the_tags_of_the_faces(tmp_path: Path) -> None:

@@ -159,3 +159,12 @@ def test_a_half_model_is_reported_whole(result, block) -> None:
     # about the origin, which lies in the cut: the moments about x and z cancel
     assert_allclose(two["hardware_load"]["from_walls"]["moment"], [0, 9806.65, 0], atol=1e-8)
     assert any("mirrored" in line for line in two["assumptions"])
+
+
+def test_a_port_too_coarse_for_its_profile_is_noted(result, block) -> None:
+    # a square of eight triangles, with developed flow
+    flow = 'flow_rate = "0.7 m^3/s"\nprofile = "power-law"\n'
+    block.write(
+        CASE.replace(FEED, FEED + flow).replace(DRAIN, DRAIN + flow).replace('velocity = { array = "U" }\n', "")
+    )
+    assert any("'drain' show its power-law profile coarsely" in note for note in result()["notes"])

@@ -212,6 +212,26 @@ def test_places_beyond_reach_are_counted_and_the_farthest_is_named() -> None:
     assert_allclose(wide.distance[-3:], [0.03, 0.25, 0.001], rtol=1e-9)
 
 
+@pytest.mark.parametrize("shape", ["tetra", "hexahedron", "wedge"])
+def test_the_nearest_point_is_the_same_found_one_by_one(shape: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    """What older versions of VTK need, against the search on all cores."""
+    grid = unit_cube(shape, size=0.03)
+    middle = np.asarray(grid.points).mean(axis=0)
+    places = np.concatenate([places_in(100), middle + (skin_places(grid) - middle) * 1.01, [[0.3, 0.4, 1.5]]])
+    names = {**VELOCITY, "density": ("number",)}
+    together = sample_volume(volume_mesh(grid), names, places, scale=1.0, reach=0.6)
+    monkeypatch.setattr(volume_probe, "_can_snap", lambda: False)
+    alone = sample_volume(volume_mesh(grid), names, places, scale=1.0, reach=0.6)
+    assert (together.distance > 1e-3).sum() > 90
+    # the nearest point of a warped quad is found through its mean plane
+    assert_allclose(alone.distance, together.distance, rtol=0, atol=1e-13 if shape == "tetra" else 1e-5)
+    assert_allclose(
+        alone.values["velocity"], together.values["velocity"], rtol=0, atol=1e-12 if shape == "tetra" else 1e-4
+    )
+    with pytest.raises(FieldError, match="lie outside the volume"):
+        sample_volume(volume_mesh(grid), names, places, scale=1.0, reach=0.4)
+
+
 def test_a_hole_in_the_volume_is_outside() -> None:
     grid = unit_cube("hexahedron", n=5)
     centre = grid.cell_centers().points

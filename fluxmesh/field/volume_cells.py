@@ -111,7 +111,7 @@ def _along_curve(places: NDArray[np.float64]) -> NDArray[np.intp]:
             bits = (bits | (bits << np.uint32(shift))) & np.uint32(mask)
         key |= bits << np.uint32(axis)
     order = (np.argsort(key)[:, None] * _RUN + np.arange(_RUN)).ravel()
-    return order[order < places.shape[0]]
+    return np.asarray(order[order < places.shape[0]])
 
 
 def cell_points(grid: Any) -> NDArray[np.floating[Any]]:

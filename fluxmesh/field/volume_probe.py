@@ -49,7 +49,6 @@ class CellSearch:
         # A tree, as the cells of one flow mesh differ in size by orders of magnitude: in equal boxes, thousands
         # of boundary-layer cells would share one.
         self._tree = vtkCellTreeLocator()
-        self._tree.SetNumberOfCellsPerNode(32)
         self._tree.SetDataSet(self.grid)  # built by the first probe
 
     def at(self, places: NDArray[np.float64]) -> Probed:
@@ -98,12 +97,46 @@ def nearest_on_skin(search: CellSearch, places: NDArray[np.float64], reach: floa
         width = search.grid.GetPointData().GetArray(_VALUES).GetNumberOfComponents()
         count = places.shape[0]
         return np.zeros(count, np.bool_), np.zeros(count, np.int64), np.zeros((count, width))
+    if not _can_snap():
+        return _nearest_one_by_one(skin, places, reach)
     probe = vtkProbeFilter()
     probe.SnapToCellWithClosestPointOn()
     probe.SetSnappingRadius(reach)
     locator = vtkStaticCellLocator()
     locator.SetDataSet(skin)
     return _probe(probe, skin, places, locator)
+
+
+def _can_snap() -> bool:
+    """Return whether VTK's probe takes the nearest cell within a radius: since VTK 9.7, on all cores."""
+    from vtkmodules.vtkFiltersCore import vtkProbeFilter
+
+    return hasattr(vtkProbeFilter, "SetSnappingRadius")
+
+
+def _nearest_one_by_one(skin: Any, places: NDArray[np.float64], reach: float) -> Probed:
+    """Do the same place by place."""
+    from vtkmodules.util.numpy_support import vtk_to_numpy
+    from vtkmodules.vtkCommonCore import reference
+    from vtkmodules.vtkCommonDataModel import vtkGenericCell, vtkStaticCellLocator
+
+    locator: Any = vtkStaticCellLocator()
+    locator.SetDataSet(skin)
+    locator.BuildLocator()
+    table = vtk_to_numpy(skin.GetPointData().GetArray(_VALUES))
+    number = vtk_to_numpy(skin.GetCellData().GetArray(_NUMBER))
+    count = places.shape[0]
+    found, owner, values = np.zeros(count, np.bool_), np.zeros(count, np.int64), np.zeros((count, table.shape[1]))
+    near: list[float] = [0.0] * 3
+    cell: Any = vtkGenericCell()
+    for index, place in enumerate(places.tolist()):
+        face = reference(0)
+        if locator.FindClosestPointWithinRadius(place, reach, near, cell, face, reference(0), reference(0.0)):
+            weights = [0.0] * int(cell.GetNumberOfPoints())
+            cell.EvaluatePosition(near, [0.0] * 3, reference(0), [0.0] * 3, reference(0.0), weights)
+            rows = [cell.GetPointId(corner) for corner in range(len(weights))]
+            found[index], owner[index], values[index] = True, number[int(face)], weights @ table[rows]
+    return found, owner, values
 
 
 def farthest(grid: Any, places: NDArray[np.float64], *, most: int = 2000) -> tuple[int, float]:
@@ -130,7 +163,7 @@ def farthest(grid: Any, places: NDArray[np.float64], *, most: int = 2000) -> tup
     from vtkmodules.vtkCommonDataModel import vtkGenericCell, vtkStaticCellLocator
 
     table = vtk_to_numpy(grid.GetPoints().GetData()).astype(np.float64)
-    low, high = box_of(table)
+    low, high = box_of(table[:, :3])
     over = np.maximum(np.maximum(low - places, places - high), 0.0)
     looked = np.argsort(-(over**2).sum(axis=1), kind="stable")[:most]
     near = np.empty((looked.size, 3))
@@ -231,14 +264,13 @@ def _skin(grid: Any, low: NDArray[np.float64], high: NDArray[np.float64]) -> Any
     connectivity, starts = gather(connectivity, starts.astype(np.int64), kept)
     used, connectivity = np.unique(connectivity, return_inverse=True)
     # two corners that no face uses: VTK looks at no place outside the box of all points
-    box = np.zeros((2, values.shape[1]))
-    box[:, :3] = low, high
-    table = np.concatenate([values[used], box])
+    table = np.zeros((used.size + 2, values.shape[1]))
+    table[:-2], table[-2:, :3] = values[used], (low, high)
     points, polys, part = vtkPoints(), vtkCellArray(), vtkPolyData()
     points.SetData(numpy_to_vtk(np.ascontiguousarray(table[:, :3])))
     polys.SetData(numpy_to_vtkIdTypeArray(starts, deep=True), numpy_to_vtkIdTypeArray(connectivity.ravel(), deep=True))
-    part.SetPoints(points)
     part.SetPolys(polys)
+    part.SetPoints(points)
     _set_values(part, table)
     number = numpy_to_vtk(vtk_to_numpy(skin.GetCellData().GetArray(_NUMBER))[kept])
     number.SetName(_NUMBER)

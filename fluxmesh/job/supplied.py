@@ -15,6 +15,7 @@ from fluxmesh.field.flow import Flow, integrate_flow, still_flow
 from fluxmesh.field.gas import sound_speed
 from fluxmesh.field.profiles.options import SpeedTable
 from fluxmesh.field.profiles.port import PortPatch
+from fluxmesh.field.profiles.resolution import profile_factors
 from fluxmesh.field.profiles.velocity import profile_velocity
 from fluxmesh.field.supplied import require_direction, uniform_velocity
 from fluxmesh.integral.layout import ABSENT, AT_SAMPLE, PER_GROUP
@@ -24,6 +25,8 @@ from fluxmesh.surface.surface import ControlSurface, Role
 __all__ = ["shaped_groups", "supply_flow", "supply_values"]
 
 Vector = tuple[float, float, float]
+_FINE_ENOUGH = 20_000  # triangles of a port that need no second look
+_WORTH_SAYING = 2e-3
 
 
 def shaped_groups(case: Case) -> list[str]:
@@ -167,7 +170,26 @@ def _lay(
     values[rows] = shaped / flow.velocity.scale
     where = flow.velocity.where.copy()
     where[k] = AT_SAMPLE
-    return replace(flow, velocity=replace(flow.velocity, where=where, sample=values), sample_start=samples.start)
+    return replace(
+        flow,
+        velocity=replace(flow.velocity, where=where, sample=values),
+        sample_start=samples.start,
+        notes=(*flow.notes, *_resolution(patch, section)),
+    )
+
+
+def _resolution(patch: PortPatch, section: GroupSection) -> list[str]:
+    """What the port's own faces lose of the profile, where that is worth saying."""
+    if len(patch.triangles) > _FINE_ENOUGH:
+        return []
+    exponent = None if section.exponent is None else float(section.exponent)
+    factors = profile_factors(patch, section.profile, exponent=exponent, table=_table(section))
+    if abs(factors.momentum_error) < _WORTH_SAYING:
+        return []
+    return [
+        f"The faces of '{patch.name}' show its {section.profile} profile coarsely: momentum factor "
+        f"{factors.momentum:.4g}, on fine faces {factors.fine_momentum:.4g}"
+    ]
 
 
 def _table(section: GroupSection) -> SpeedTable | None:

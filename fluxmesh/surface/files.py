@@ -18,7 +18,7 @@ from fluxmesh.surface.readers.stl import read_stl
 from fluxmesh.surface.readers.vtk import read_vtk_legacy, read_vtk_xml
 from fluxmesh.surface.readers.vtk_blocks import read_vtk_blocks, read_vtk_pieces
 
-__all__ = ["known_suffixes", "read_mesh", "read_meshes"]
+__all__ = ["known_suffixes", "read_mesh", "read_meshes", "skin_hint"]
 
 _Reader = Callable[[Path, bool | None], RawMesh]
 
@@ -147,6 +147,28 @@ def read_meshes(files: Mapping[str, Path], *, skin: bool | None = None) -> Joine
                 remedy="Give each group a file of its own",
             )
     return join_meshes({name: read_mesh(path, skin=skin) for name, path in files.items()})
+
+
+def skin_hint(mesh: RawMesh) -> str:
+    """Say that the skin of the volume cells could be taken instead of the faces.
+
+    Parameters
+    ----------
+    mesh : RawMesh
+        Faces that do not close, say.
+
+    Returns
+    -------
+    str
+        One sentence without a full stop, "" when the file has no volume cells
+        beside the faces.
+    """
+    if not mesh.volume_cells:
+        return ""
+    return (
+        f"{mesh.source} also holds {mesh.volume_cells} volume cells: "
+        "'skin = true' under [surface] takes their skin, with the tags of the faces on it"
+    )
 
 
 def _reader_of(path: Path) -> _Reader:

@@ -23,7 +23,7 @@ reader = getattr(import_module(sys.argv[1]), sys.argv[2])()
 reader.SetFileName(sys.argv[3])
 reader.Update()
 """
-_SECONDS = 60.0
+_SECONDS = 30.0
 _BYTES_A_SECOND = 5e6
 
 
@@ -40,8 +40,8 @@ def try_reader(reader: object, path: Path) -> None:
     Raises
     ------
     FileError
-        The process was ended by a signal, or does not come to an end: within a
-        minute and a second for each 5 million bytes.
+        The process was ended by a signal, or did not end within half a minute
+        and a second for each 5 million bytes.
     """
     kind = type(reader)
     command = [sys.executable, "-c", _CODE, kind.__module__, kind.__name__, str(path)]

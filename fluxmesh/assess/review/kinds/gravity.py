@@ -20,6 +20,7 @@ STANDARD_GRAVITY = 9.80665
 # common practice, no source
 _LEFT = 0.2  # residual that may be left, over the weight
 _SHARE = 1e-4  # of all entries: a smaller weight drowns in their errors
+_EARTH = 0.01  # over what latitude and height do to gravity
 _SAME = 0.05  # how far from standard gravity a fitted one may be
 _UPRIGHT = 0.05  # components below this share are noise
 
@@ -38,8 +39,17 @@ def gravity_doubts(evidence: Evidence) -> Iterator[Doubt]:
     Yields
     ------
     Doubt
-        One at most.
+        Two at most.
     """
+    pull = np.asarray(evidence.flow.gravity, dtype=np.float64)
+    size = float(np.linalg.norm(pull))
+    if size > 0.0 and abs(size / STANDARD_GRAVITY - 1.0) > _EARTH:
+        yield Doubt(
+            "gravity",
+            f"Gravity is {size:.4g} m/s², where the earth has {STANDARD_GRAVITY:.4g}",
+            "Every weight is off by the same factor; 32.17 would be ft/s²",
+            (Setting(("fluid", "gravity"), (pull * (STANDARD_GRAVITY / size) + 0.0).tolist()),),
+        )
     totals = momentum_totals(evidence)
     if totals is None or not evidence.has_array(evidence.flow.pressure):
         return
@@ -68,6 +78,18 @@ def gravity_doubts(evidence: Evidence) -> Iterator[Doubt]:
             f"The pressure holds the hydrostatic head of a gravity of ({vector}) m/s², and the case has none",
             "The weight of the fluid is in the load from the walls, and missing in that from the balance",
             (Setting(("fluid", "gravity"), [float(x) for x in gravity]),),
+        )
+
+
+def _size_doubts(evidence: Evidence) -> Iterator[Doubt]:
+    pull = np.asarray(evidence.flow.gravity, dtype=np.float64)
+    size = float(np.linalg.norm(pull))
+    if size > 0.0 and abs(size / STANDARD_GRAVITY - 1.0) > _EARTH:
+        yield Doubt(
+            "gravity",
+            f"Gravity is {size:.4g} m/s², where the earth has {STANDARD_GRAVITY:.4g} m/s²",
+            "Every weight is off by that factor; 32.17 would be ft/s²",
+            (Setting(("fluid", "gravity"), [float(g) for g in pull * (STANDARD_GRAVITY / size) + 0.0]),),
         )
 
 
