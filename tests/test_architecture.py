@@ -78,8 +78,8 @@ def test_imports_go_down_the_layers(name: str) -> None:
 
 @pytest.mark.parametrize("name", MODULES)
 def test_internal_imports_stand_at_the_top(name: str) -> None:
-    # the command loads what it needs when it needs it, and the kernel loader is part of that
-    if name in ("fluxmesh.cli", "fluxmesh.job.ahead"):
+    # the command and the job load what a case asks for when it asks: the start is counted in tenths of a second
+    if name == "fluxmesh.cli" or room(name) == "job":
         return
     assert [imported for imported, inside in imports_of(name) if inside] == []
 

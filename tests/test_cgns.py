@@ -630,6 +630,26 @@ def test_structured_zones_that_touch(tmp_path: Path, read: Read) -> None:
     }
 
 
+def test_zones_must_agree_on_the_role_of_a_set(tmp_path: Path, read: Read) -> None:
+    points, sizes = structured((3, 2, 2))
+    sides = ranges((3, 2, 2), "Vertex")
+    zones = [
+        cgns_zone(
+            f"zone {x}",
+            points + np.array([x, 0, 0]),
+            sizes,
+            conditions(
+                cgns_condition("end", kind, "PointRange", sides["imin"], "Vertex"),
+                cgns_condition("floor", "BCWall", "PointRange", sides["kmin"], "Vertex"),
+            ),
+        )
+        for x, kind in ((0, "BCInflow"), (2, "BCOutflow"))
+    ]
+    mesh = read(write_cgns(tmp_path / "two.cgns", cgns_base(*zones)))
+    assert mesh.roles == {"floor": Role.WALL}
+    assert {name: len(faces) for name, faces in mesh.face_sets.items()} == {"end": 2, "floor": 4}
+
+
 def test_structured_surface_zone(tmp_path: Path, read: Read) -> None:
     x, y = np.meshgrid(np.arange(4.0), np.arange(3.0))
     points = np.stack([x, y, x * y], axis=-1)

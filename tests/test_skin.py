@@ -13,7 +13,7 @@ from hypothesis import strategies as st
 from numpy.testing import assert_allclose, assert_array_equal
 
 from fluxmesh.errors import FileError, InputError
-from fluxmesh.surface.files import read_mesh, skin_hint
+from fluxmesh.surface.files import read_mesh, read_meshes, skin_hint
 from fluxmesh.surface.rawmesh import RawMesh
 from fluxmesh.surface.readers.cell_shapes import SHAPES
 from fluxmesh.surface.readers.same_faces import coincident_points, face_labels, lone_rows
@@ -507,6 +507,17 @@ def test_skin_where_there_is_no_volume(tmp_path: Path) -> None:
     for name in ("plate.stl", "plate.ply"):
         with pytest.raises(FileError, match=r"a \.\w+ file has no volume cells. Leave out skin"):
             read_mesh(tmp_path / name, skin=True)
+
+
+def test_skins_of_two_files_are_put_side_by_side(tmp_path: Path) -> None:
+    (tmp_path / "a").mkdir()
+    one, _, _ = volume_file(tmp_path, ".vtu")
+    two, _, _ = volume_file(tmp_path / "a", ".vtk")
+    joined = read_meshes({"left": one, "right": two})
+    assert joined.mesh.derived == "the skin of 24 tetrahedra and the skin of 24 tetrahedra"
+    assert joined.mesh.notes == (*read_mesh(one).notes, *read_mesh(two).notes)
+    with pytest.raises(FileError, match="holds no faces"):
+        read_meshes({"left": one, "right": two}, skin=False)
 
 
 def test_no_skin_on_demand(tmp_path: Path) -> None:

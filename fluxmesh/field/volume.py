@@ -126,7 +126,7 @@ def sample_volume(
     distance = np.zeros(places.shape[0])
     outside = np.flatnonzero(~located.inside)
     distance[outside] = np.linalg.norm(located.nearest[outside] * scale - places[outside], axis=1)
-    _require_reached(volume, located, distance, places, reach, scale, unit_that_fits(box, scale, surface))
+    _require_reached(volume, located, places, reach, scale, unit_that_fits(box, scale, surface))
     values: dict[str, NDArray[np.float64]] = {}
     first = 0
     for quantity, table in zip(on_nodes, tables):
@@ -209,13 +209,12 @@ def _joined(parts: list[NDArray[Any]]) -> NDArray[Any]:
 def _require_reached(
     volume: VolumeMesh,
     located: Located,
-    distance: NDArray[np.float64],
     places: NDArray[np.float64],
     reach: float,
     scale: float,
     unit: str | None,
 ) -> None:
-    beyond = np.flatnonzero((located.cell < 0) | (distance > reach * (1 + 1e-9)))
+    beyond = np.flatnonzero(located.cell < 0)
     if not beyond.size:
         return
     index, away = farthest(volume.grid, places[beyond] / scale)

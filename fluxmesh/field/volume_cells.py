@@ -86,7 +86,7 @@ def locate(grid: Any, node_values: NDArray[np.float64], places: NDArray[np.float
     inside[left] = False
     missed = np.flatnonzero(~inside)
     if missed.size:
-        _take_nearest(search, cells, places, reach, missed, cell, there, inside, found)
+        _take_nearest(search, cells, places, reach, missed, cell, there, found)
     cell[~found] = -1
     back = np.empty_like(order)
     back[order] = np.arange(order.size)
@@ -250,8 +250,8 @@ def _put_right(
     lost = np.zeros(chosen.size, dtype=np.bool_)
     last, move = cell[chosen], np.full(chosen.size, _MOVE)
     for _ in range(_STEPS):
-        # those whose inverse came to no rest keep what VTK says
-        some = np.flatnonzero((outside > _ROUND_OFF) & np.isfinite(outside) & ~lost)
+        # those whose inverse came to no rest keep what VTK says, and so do those beside a polyhedron
+        some = np.flatnonzero((outside > _ROUND_OFF) & np.isfinite(outside) & ~lost & cells.known[cells.types[last]])
         if not some.size:
             break
         place = places[chosen[some]]
@@ -291,7 +291,6 @@ def _take_nearest(
     missed: NDArray[np.intp],
     cell: NDArray[np.int64],
     there: NDArray[np.float64],
-    inside: NDArray[np.bool_],
     found: NDArray[np.bool_],
 ) -> None:
     """Give places outside all cells the values at the nearest point of the volume, in place."""
@@ -312,5 +311,4 @@ def _take_nearest(
         best = away.argmin(axis=0)
         sound = np.isfinite(away.min(axis=0))
         values[curved[sound]] = candidates[best, np.arange(curved.size)][sound]
-        inside[missed[curved]] = outside <= _ROUND_OFF
     cell[missed], there[missed], found[missed] = owner, values, True

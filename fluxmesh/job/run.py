@@ -4,21 +4,18 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
-from typing import Any, Final
+from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
 from fluxmesh.assess.assumptions import assumptions_of
 from fluxmesh.assess.comparison import Comparison, compare_reported
-from fluxmesh.assess.review import Doubt
 from fluxmesh.assess.verdict import Verdict, verdict_of
 from fluxmesh.balance.balance import Balance, balance_table
-from fluxmesh.balance.mirror import whole_model
 from fluxmesh.balance.setting import GroupData, Hardware, Setting
 from fluxmesh.case.model import Case
 from fluxmesh.errors import FieldError
 from fluxmesh.field.flow import Flow, integrate_flow
-from fluxmesh.field.port_viscous import port_viscous_estimate
 from fluxmesh.field.pressure import Head
 from fluxmesh.integral.layout import PER_GROUP
 from fluxmesh.integral.table import IntegralTable
@@ -30,6 +27,9 @@ from fluxmesh.surface.surface import ControlSurface
 
 __all__ = ["REVIEWED_FACES", "Outcome", "balance_of", "hardware_of", "run_case"]
 
+
+if TYPE_CHECKING:
+    from fluxmesh.assess.review import Doubt
 
 REVIEWED_FACES: Final = 300_000
 """Most faces that `balance` reviews for doubts on the way: beyond, that costs more than the balance."""
@@ -199,6 +199,8 @@ def balance_of(
     )
     restored = flow.meaning.head is Head.REMOVED and bool(np.any(flow.gravity))
     if mirror:
+        from fluxmesh.balance.mirror import whole_model
+
         table, setting = whole_model(table, setting, head_restored=restored)
     done = balance_table(table, setting)
     assumptions = assumptions_of(
@@ -218,6 +220,8 @@ def _viscous_estimates(surface: ControlSurface, flow: Flow, mirrored: bool) -> l
     # of a part model the estimates would be those of the part
     if flow.viscosity is None or mirrored:
         return []
+    from fluxmesh.field.port_viscous import port_viscous_estimate
+
     said = []
     for k, group in enumerate(surface.groups):
         if group.role.is_port and not flow.traction.present()[k]:

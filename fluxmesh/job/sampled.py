@@ -12,13 +12,9 @@ from fluxmesh.case.arrays import FlowSection, PointSource, VolumeSource
 from fluxmesh.case.model import Case
 from fluxmesh.errors import FieldError, InputError
 from fluxmesh.field.field import Field, absent_field
-from fluxmesh.field.points import read_points
-from fluxmesh.field.points_sampling import sample_cloud
-from fluxmesh.field.volume import sample_volume
 from fluxmesh.integral.layout import ABSENT, AT_SAMPLE
 from fluxmesh.integral.samples import Samples
 from fluxmesh.job.shape import Shape
-from fluxmesh.surface.readers.volume_grid import read_volume
 from fluxmesh.surface.surface import ControlSurface, Role
 from fluxmesh.surface.wording import length_text
 from fluxmesh.units import unit_factor
@@ -123,6 +119,9 @@ def _from_volume(
     samples: Samples,
     reach: float | None,
 ) -> Sampled:
+    from fluxmesh.field.volume import sample_volume
+    from fluxmesh.surface.readers.volume_grid import read_volume
+
     at = {quantity: getattr(asked, quantity).at for quantity in names if getattr(asked, quantity).at is not None}
     found = sample_volume(
         read_volume(source.file),
@@ -145,6 +144,9 @@ def _from_volume(
 def _from_points(
     source: PointSource, names: Mapping[str, tuple[str, ...]], samples: Samples, reach: float | None
 ) -> Sampled:
+    from fluxmesh.field.points import read_points
+    from fluxmesh.field.points_sampling import sample_cloud
+
     for quantity in ("stress", "velocity_gradient"):
         if quantity in names:
             raise FieldError(

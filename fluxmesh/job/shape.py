@@ -8,9 +8,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fluxmesh.case.model import Case
-from fluxmesh.errors import FieldError, GroupError, InputError
+from fluxmesh.errors import FieldError, GroupError, InputError, SurfaceError
 from fluxmesh.job.exported import ExportedArrays
 from fluxmesh.job.mesh import Loaded, load_mesh
+from fluxmesh.surface.files import skin_hint
 from fluxmesh.surface.groups import Pick, by_array, by_pick, by_sets
 from fluxmesh.surface.mend import Mended, mend
 from fluxmesh.surface.rawmesh import RawMesh
@@ -90,7 +91,9 @@ def read_shape(case: Case, loaded: Loaded | None = None) -> Shape:
     except InputError as error:
         if error.where.startswith(where):
             raise
-        raise type(error)(error.found, f"{where}: {error.where}" if error.where else where, error.remedy) from error
+        hint = f". {skin_hint(mesh)}" if isinstance(error, SurfaceError) and skin_hint(mesh) else ""
+        at = f"{where}: {error.where}" if error.where else where
+        raise type(error)(error.found, at, error.remedy + hint) from error
     kept = mended.kept_faces
     face = mesh.face_arrays if kept is None else {name: values[kept] for name, values in mesh.face_arrays.items()}
     surface = ControlSurface(

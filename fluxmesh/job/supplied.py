@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,16 +14,16 @@ from fluxmesh.errors import FieldError
 from fluxmesh.field.field import Field, supply
 from fluxmesh.field.flow import Flow, integrate_flow, still_flow
 from fluxmesh.field.gas import sound_speed
-from fluxmesh.field.profiles.options import SpeedTable
-from fluxmesh.field.profiles.port import PortPatch
-from fluxmesh.field.profiles.resolution import profile_factors
-from fluxmesh.field.profiles.velocity import profile_velocity
 from fluxmesh.field.supplied import require_direction, uniform_velocity
 from fluxmesh.integral.layout import ABSENT, AT_SAMPLE, PER_GROUP
 from fluxmesh.integral.samples import Samples
 from fluxmesh.surface.surface import ControlSurface, Role
 
 __all__ = ["shaped_groups", "supply_flow", "supply_values"]
+
+if TYPE_CHECKING:
+    from fluxmesh.field.profiles.options import SpeedTable
+    from fluxmesh.field.profiles.port import PortPatch
 
 Vector = tuple[float, float, float]
 _FINE_ENOUGH = 20_000  # triangles of a port that need no second look
@@ -154,6 +155,9 @@ def _lay(
     flow = replace(flow, mass_flux=_without(flow.mass_flux, k))
     if section.profile == "uniform" or samples is None:
         return replace(flow, velocity=supply(flow.velocity, k, velocity))
+    from fluxmesh.field.profiles.port import PortPatch
+    from fluxmesh.field.profiles.velocity import profile_velocity
+
     patch = PortPatch.of(surface, k)
     shaped = profile_velocity(
         patch,
@@ -180,6 +184,8 @@ def _lay(
 
 def _resolution(patch: PortPatch, section: GroupSection) -> list[str]:
     """What the port's own faces lose of the profile, where that is worth saying."""
+    from fluxmesh.field.profiles.resolution import profile_factors
+
     if len(patch.triangles) > _FINE_ENOUGH:
         return []
     exponent = None if section.exponent is None else float(section.exponent)
@@ -196,6 +202,8 @@ def _table(section: GroupSection) -> SpeedTable | None:
     table = section.profile_table
     if table is None:
         return None
+    from fluxmesh.field.profiles.options import SpeedTable
+
     distance = table.radius if table.radius is not None else table.wall_distance
     return SpeedTable(
         at=[table.unit.factor * x for x in distance or ()],

@@ -6,7 +6,6 @@ from fluxmesh.case.arrays import GradientArray, StressArray
 from fluxmesh.case.model import Case
 from fluxmesh.errors import FieldError
 from fluxmesh.field.field import Field, absent_field
-from fluxmesh.field.traction import traction_from_gradient, traction_from_stress
 from fluxmesh.integral.samples import Samples
 from fluxmesh.job.exported import exported_field
 from fluxmesh.job.sampled import Sampled, sampled_field
@@ -50,9 +49,13 @@ def traction_of(case: Case, shape: Shape, samples: Samples | None, sampled: Samp
             scale=scale,
         )  # fmt: skip
     if asked.stress is not None:
+        from fluxmesh.field.traction import traction_from_stress
+
         stress = _tensor(shape, sampled, "stress", asked.stress, (6, 9))
         return traction_from_stress(surface, stress, order=asked.stress.order, samples=samples)
     if asked.velocity_gradient is not None:
+        from fluxmesh.field.traction import traction_from_gradient
+
         assert case.fluid.viscosity is not None
         gradient = _tensor(shape, sampled, "velocity_gradient", asked.velocity_gradient, (9,))
         return traction_from_gradient(

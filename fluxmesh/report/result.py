@@ -5,13 +5,12 @@ from __future__ import annotations
 import json
 from dataclasses import asdict
 from pathlib import Path
-from typing import Any, Final
+from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
 from fluxmesh.assess.assumptions import CAUTIONS
 from fluxmesh.assess.comparison import Comparison
-from fluxmesh.assess.review import Doubt
 from fluxmesh.assess.verdict import Verdict, relative_without_mean_pressure
 from fluxmesh.balance.balance import Balance
 from fluxmesh.balance.momentum import Ledger
@@ -19,6 +18,9 @@ from fluxmesh.balance.wrench import Wrench
 from fluxmesh.report.whole import write_whole
 
 __all__ = ["SCHEMA", "result_data", "write_json"]
+
+if TYPE_CHECKING:
+    from fluxmesh.assess.review import Doubt
 
 SCHEMA: Final = "fluxmesh-balance/1"
 

@@ -9,7 +9,6 @@ import numpy as np
 
 from fluxmesh.assess.assumptions import CAUTIONS
 from fluxmesh.assess.comparison import Comparison
-from fluxmesh.assess.review import Doubt
 from fluxmesh.assess.verdict import Verdict
 from fluxmesh.balance.balance import Balance
 from fluxmesh.balance.weight import weight_wrench
@@ -18,6 +17,8 @@ from fluxmesh.surface.surface import ControlSurface
 
 if TYPE_CHECKING:
     from rich.console import Console
+
+    from fluxmesh.assess.review import Doubt
 
 __all__ = ["figure", "print_balance"]
 

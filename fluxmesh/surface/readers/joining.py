@@ -91,7 +91,7 @@ def join_meshes(meshes: Mapping[str, RawMesh]) -> JoinedMeshes:
         volume_cells=sum(part.volume_cells for part in parts),
         sets_have=_join_haves(parts, has),
         roles=_join_roles(parts),
-        derived=" and ".join(f"{part.derived} of {part.source}" for part in parts if part.derived),
+        derived=" and ".join(part.derived for part in parts if part.derived),
         notes=tuple(dict.fromkeys(note for part in parts for note in part.notes)),
     )
     return JoinedMeshes(
