@@ -138,3 +138,15 @@ def test_a_piece_that_is_missing(refused, block) -> None:
     assert len(pieces) == 3
     pieces[1].unlink()
     has(refused(), pieces[1].name)
+
+
+def test_cell_values_of_a_volume_are_asked_for_as_faces(fluxmesh, block) -> None:
+    # one name on points and on cells: at = "faces" takes the cells
+    mesh = grid()
+    mesh.cell_data["p"] = np.full(mesh.n_cells, 900.0)
+    mesh.save(block.folder / "flow.vtu")
+    block.write(VOLUME.replace('array = "p", head', 'array = "p", at = "faces", head'))
+    ran = fluxmesh("balance", block.case, "--out", "out", "--no-pictures")
+    assert ran.code == 0, ran.err
+    # the head is put back from the origin: half a metre of water at the middle of a port
+    assert f"{900 - 9806.65 / 2:,.1f}" in ran.out

@@ -299,12 +299,14 @@ def test_a_volume_elsewhere_or_in_another_unit_is_named_as_such() -> None:
     assert "in the same axes and unit" in e.value.remedy
     box = np.array(list(itertools.product([0.0, 1.0], repeat=3)))
     # the file is in millimetres, and was read as metres: the small surface lies in a corner cell of it
-    with pytest.raises(FieldError, match=r"the volume is 1000 times as large as the surface.*volume_unit = \"mm\""):
+    with pytest.raises(
+        FieldError, match=r"the volume is 1000 times as large as the surface.*flow.volume.unit = \"mm\""
+    ):
         sample_volume(volume, VELOCITY, box * 1e-3, scale=1.0)
     # the other way round: all of the volume lies in a corner of the surface
-    with pytest.raises(FieldError, match=r"places on the surface .*lie outside.*volume_unit = \"m\""):
+    with pytest.raises(FieldError, match=r"places on the surface .*lie outside.*flow.volume.unit = \"m\""):
         sample_volume(volume, VELOCITY, box, scale=1e-3)
-    with pytest.raises(FieldError, match=r"misses the surface.*volume_unit = \"mm\""):
+    with pytest.raises(FieldError, match=r"misses the surface.*flow.volume.unit = \"mm\""):
         sample_volume(volume_mesh(unit_cube("tetra").translate((2, 2, 2))), VELOCITY, (box + 2) * 1e-3, scale=1.0)
     assert sample_volume(volume, VELOCITY, box * 1e-3, scale=1e-3).exact.all()
     # a large volume around a small surface is no slip

@@ -225,7 +225,7 @@ def _require_reached(
         f"{beyond.size} of {places.shape[0]} places on the surface ({share}) lie outside the volume by more than the "
         f"reach of {reach:.3g} m; the farthest is {away:.3g} m away, at ({at}) m",
         where=volume.source,
-        remedy=f'In {unit} the volume would span the same as the surface: write volume_unit = "{unit}"'
+        remedy=f'In {unit} the volume would span the same as the surface: write flow.volume.unit = "{unit}"'
         if unit is not None
         else "Export the volume that fills this surface; where their facets differ by that much and no more, write "
         f'reach = "{_up(away)} m"',

@@ -93,7 +93,7 @@ def require_same_place(
         return
     found = "the volume misses the surface" if apart else "the volume is 1000 times as large as the surface"
     remedy = (
-        f'In {unit} both span the same: write volume_unit = "{unit}", or check length_unit of the surface'
+        f'In {unit} both span the same: write flow.volume.unit = "{unit}", or check length_unit of the surface'
         if unit is not None
         else "Export the volume around this surface, in the same axes and unit"
     )

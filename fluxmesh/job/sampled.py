@@ -122,7 +122,8 @@ def _from_volume(
     from fluxmesh.field.volume import sample_volume
     from fluxmesh.surface.readers.volume_grid import read_volume
 
-    at = {quantity: getattr(asked, quantity).at for quantity in names if getattr(asked, quantity).at is not None}
+    places = {quantity: getattr(asked, quantity).at for quantity in names}
+    at = {quantity: "cells" if at == "faces" else at for quantity, at in places.items() if at is not None}
     found = sample_volume(
         read_volume(source.file),
         names,
