@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import json
+
 import numpy as np
 import pytest
 
@@ -90,6 +92,8 @@ def test_the_good_volume_is_good(fluxmesh, block) -> None:
     ran = fluxmesh("balance", block.case, "--out", "out", "--no-pictures")
     assert ran.code == 0, ran.err
     assert "100.00% of the quadrature points lie inside" in ran.out
+    told = json.loads((block.folder.parent / "out" / "balance.json").read_text("utf-8"))["inputs"]["sampling"]
+    assert told == {"source": "flow.vtu", "share_exact": 1.0, "farthest": 0.0, "leave_out_relative": {}}
 
 
 def test_a_volume_that_misses_the_surface(refused, block) -> None:

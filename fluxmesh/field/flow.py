@@ -55,6 +55,8 @@ class Flow:
         Where the samples of each face start; empty when no field is sampled.
     viscosity : float or None
         Dynamic viscosity, Pa s, where it is known: for estimates.
+    sampling : mapping or None
+        Where fields were sampled from, and how well, as plain data.
     notes : tuple of str
         What was solved, sampled or restored on the way, one sentence each.
     """
@@ -69,6 +71,7 @@ class Flow:
     gravity: tuple[float, float, float] = (0.0, 0.0, 0.0)
     sample_start: NDArray[np.int64] = field(default_factory=lambda: np.empty(0, np.int64))
     viscosity: float | None = None
+    sampling: Mapping[str, object] | None = None
     notes: tuple[str, ...] = ()
 
     def fields(self) -> tuple[Field, ...]:

@@ -60,7 +60,7 @@ def _lay(case: Case, shape: Shape) -> Flow:
     sampled = None if samples is None else sample_source(case, shape, samples)
     flow = _fields(case, shape, samples, sampled)
     if sampled is not None:
-        flow = replace(flow, notes=sampled.notes)
+        flow = replace(flow, notes=sampled.notes, sampling=sampled.data())
     flow = supply_values(case, flow)
     if case.fluid.law is not None:
         flow = replace(flow, density=_gas_density(case, shape, flow, samples, sampled))

@@ -114,6 +114,7 @@ class Outcome:
             "pressure": {"kind": self.flow.meaning.kind.value, "head": self.flow.meaning.head.value},
             "anchor": setting.anchor,
             "hardware": None if hardware is None else {"mass": hardware.mass, "centre": hardware.centre},
+            "sampling": self.flow.sampling,
             **self.source,
         }
 

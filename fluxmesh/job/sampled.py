@@ -50,6 +50,15 @@ class Sampled:
     farthest: float
     leave_out: dict[str, float] = field(default_factory=dict)
 
+    def data(self) -> dict[str, object]:
+        """Return the same as plain data, for the result file."""
+        return {
+            "source": self.source,
+            "share_exact": self.share_exact,
+            "farthest": self.farthest,
+            "leave_out_relative": dict(self.leave_out),
+        }
+
     @property
     def notes(self) -> tuple[str, ...]:
         """What a reader should know of the sampling, one sentence each."""
