@@ -175,11 +175,17 @@ def main() -> None:
     """Run the command line; errors of the input end with one message and exit code 2."""
     # A run is short and its memory lies in arrays: looking for cycles while modules load costs a sixth of the start.
     gc.disable()
+    # what libraries warn of (an overflow in damaged input, say) comes back as an error of ours where it matters
+    warnings.simplefilter("ignore")
     warnings.simplefilter("default", FluxmeshWarning)
     try:
         app(prog_name="fluxmesh")
     except FluxmeshError as error:
         typer.echo(f"fluxmesh: {error}", err=True)
+        sys.exit(2)
+    except MemoryError:
+        said = "the memory does not suffice for this input. A count in a damaged file may ask for far too much"
+        typer.echo(f"fluxmesh: {said}", err=True)
         sys.exit(2)
     except BrokenPipeError:
         # the reader of our pipe has left: nothing more to say

@@ -243,3 +243,11 @@ def test_point_data_on_as_many_points_as_faces_needs_a_word() -> None:
     np.testing.assert_allclose(loads[0].from_walls.force, np.array([1, 2, 3]) / 6, rtol=1e-14)
     # by hand: pressures 0, 1, 2, 3 on the faces z=0, y=0, x=0 and the slanted one
     np.testing.assert_allclose(loads[1].from_walls.force, np.array([3 - 2, 3 - 1, 3 - 0]) / 2, rtol=1e-14)
+
+
+def test_input_that_asks_for_more_memory_than_there_is(refused, monkeypatch) -> None:
+    def run_out(_path: object, **_options: object) -> None:
+        raise MemoryError
+
+    monkeypatch.setattr("fluxmesh.job.mesh.read_mesh", run_out)
+    has(refused(), "memory does not suffice", "damaged file")
