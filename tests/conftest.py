@@ -6,9 +6,14 @@ import sys
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
+
+from fluxmesh.errors import FileError, InputError
+from fluxmesh.surface.files import read_mesh
+from fluxmesh.surface.rawmesh import RawMesh
 
 
 @dataclass(frozen=True)
@@ -35,6 +40,36 @@ def fluxmesh(monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
         return Ran(0 if code is None else int(code), said.out, said.err)
 
     return call
+
+
+@pytest.fixture
+def read(capfd: pytest.CaptureFixture[str]) -> Callable[..., RawMesh]:
+    """Read a mesh file, and see that nothing was printed meanwhile."""
+
+    def reading(path: Path, **options: Any) -> RawMesh:
+        capfd.readouterr()
+        mesh = read_mesh(path, **options)
+        assert capfd.readouterr() == ("", "")
+        return mesh
+
+    return reading
+
+
+@pytest.fixture
+def refuse(capfd: pytest.CaptureFixture[str]) -> Callable[..., InputError]:
+    """Read a mesh file, expect an error that names it and matches, and see that nothing was printed."""
+
+    def refusing(path: Path, match: str | None = None, kind: type[InputError] = FileError) -> InputError:
+        capfd.readouterr()
+        with pytest.raises(kind, match=match) as caught:
+            read_mesh(path)
+        assert capfd.readouterr() == ("", "")
+        assert caught.value.where.startswith(str(path))
+        assert caught.value.remedy
+        assert "\n" not in str(caught.value)
+        return caught.value
+
+    return refusing
 
 
 CASE = """title = "Block"

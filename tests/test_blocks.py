@@ -12,7 +12,7 @@ import numpy as np
 import pytest
 from numpy.testing import assert_array_equal
 
-from fluxmesh.errors import FieldError, FileError, InputError
+from fluxmesh.errors import FieldError, InputError
 from fluxmesh.surface.files import known_suffixes, read_mesh
 from fluxmesh.surface.rawmesh import RawMesh
 from fluxmesh.surface.readers.skin import corner_rows
@@ -30,35 +30,6 @@ from tests.mesh_writing import (
 
 Read = Callable[..., RawMesh]
 Refuse = Callable[..., InputError]
-
-
-@pytest.fixture
-def read(capfd: pytest.CaptureFixture[str]) -> Read:
-    """Read a file, and see that nothing was printed meanwhile."""
-
-    def reading(path: Path, **options: Any) -> RawMesh:
-        capfd.readouterr()
-        mesh = read_mesh(path, **options)
-        assert capfd.readouterr() == ("", "")
-        return mesh
-
-    return reading
-
-
-@pytest.fixture
-def refuse(capfd: pytest.CaptureFixture[str]) -> Refuse:
-    """Read a file, expect an error that names it and matches, and see that nothing was printed."""
-
-    def refusing(path: Path, match: str | None = None, kind: type[InputError] = FileError) -> InputError:
-        capfd.readouterr()
-        with pytest.raises(kind, match=match) as caught:
-            read_mesh(path)
-        assert capfd.readouterr() == ("", "")
-        assert caught.value.where.startswith(str(path))
-        assert caught.value.remedy
-        return caught.value
-
-    return refusing
 
 
 def refused(path: Path) -> bool:

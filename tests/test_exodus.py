@@ -12,7 +12,7 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose, assert_array_equal
 
-from fluxmesh.errors import FieldError, FileError, InputError
+from fluxmesh.errors import FieldError, InputError
 from fluxmesh.surface.files import read_mesh
 from fluxmesh.surface.rawmesh import RawMesh
 from fluxmesh.surface.readers.netcdf import opened_netcdf
@@ -29,36 +29,6 @@ SETS = [("feed", [1], [4]), ("drain", [2], [2]), ("shell", [1, 1, 1, 1, 2, 2, 2,
 TIMES = [0.0, 0.5, 0.75]
 NODES = {name: np.arange(36.0).reshape(3, 12) / 7 + 100 * k for k, name in enumerate(["p", "vel_x", "vel_y", "vel_z"])}
 VERSIONS = [1, 2, 4]
-
-
-@pytest.fixture
-def read(capfd: pytest.CaptureFixture[str]) -> Read:
-    """Read a file, and see that nothing was printed meanwhile."""
-
-    def reading(path: Path, **options: Any) -> RawMesh:
-        capfd.readouterr()
-        mesh = read_mesh(path, **options)
-        assert capfd.readouterr() == ("", "")
-        return mesh
-
-    return reading
-
-
-@pytest.fixture
-def refuse(capfd: pytest.CaptureFixture[str]) -> Refuse:
-    """Read a file, expect an error that names it and matches, and see that nothing was printed."""
-
-    def refusing(path: Path, match: str | None = None, kind: type[InputError] = FileError) -> InputError:
-        capfd.readouterr()
-        with pytest.raises(kind, match=match) as caught:
-            read_mesh(path)
-        assert capfd.readouterr() == ("", "")
-        assert caught.value.where.startswith(str(path))
-        assert caught.value.remedy
-        assert "\n" not in str(caught.value)
-        return caught.value
-
-    return refusing
 
 
 def faces_of(mesh: RawMesh) -> list[list[int]]:

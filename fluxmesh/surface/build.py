@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from typing import Any
+from typing import Any, cast
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -51,7 +51,7 @@ def face_arrays(
         sizes = np.full(faces.shape[0], faces.shape[1], dtype=np.int64)
         flat = faces.ravel()
     else:
-        rows = [np.asarray(face) for face in faces]  # type: ignore[union-attr]
+        rows = [np.asarray(face) for face in cast(Sequence[Sequence[int]], faces)]
         sizes = np.array([row.size for row in rows], dtype=np.int64)
         flat = np.concatenate(rows) if rows else np.empty(0, np.int64)
     if sizes.size == 0:
