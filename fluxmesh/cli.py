@@ -177,7 +177,8 @@ def main() -> None:
     gc.disable()
     # what libraries warn of (an overflow in damaged input, say) comes back as an error of ours where it matters
     warnings.simplefilter("ignore")
-    warnings.simplefilter("default", FluxmeshWarning)
+    warnings.simplefilter("once", FluxmeshWarning)
+    warnings.formatwarning = lambda message, *_args, **_options: f"fluxmesh: {message}\n"
     try:
         app(prog_name="fluxmesh")
     except FluxmeshError as error:

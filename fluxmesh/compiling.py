@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 import os
+import warnings
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 from typing import Any, TypeVar, cast
 
 from numba import njit
+
+from fluxmesh.errors import FluxmeshWarning
 
 __all__ = ["compiled", "compiled_inline", "run_parts", "thread_count"]
 
@@ -30,7 +33,7 @@ def compiled(function: _Kernel) -> _Kernel:
     callable
         Same signature.
     """
-    return cast(_Kernel, njit(cache=True, nogil=True, error_model="numpy")(function))
+    return _compiled(function)
 
 
 def compiled_inline(function: _Kernel) -> _Kernel:
@@ -46,7 +49,23 @@ def compiled_inline(function: _Kernel) -> _Kernel:
     callable
         Same signature.
     """
-    return cast(_Kernel, njit(cache=True, nogil=True, error_model="numpy", inline="always")(function))
+    return _compiled(function, inline="always")
+
+
+def _compiled(function: _Kernel, **options: str) -> _Kernel:
+    try:
+        return cast(_Kernel, njit(cache=True, nogil=True, error_model="numpy", **options)(function))
+    except RuntimeError as error:
+        # numba raises when neither its own cache, the user's nor the package's folder can be written
+        if "cannot cache" not in str(error):
+            raise
+        warnings.warn(
+            "compiled code cannot be kept, so every run compiles anew (10 to 20 s): "
+            "set NUMBA_CACHE_DIR to a folder that can be written",
+            FluxmeshWarning,
+            stacklevel=2,
+        )
+        return cast(_Kernel, njit(nogil=True, error_model="numpy", **options)(function))
 
 
 def thread_count() -> int:
