@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import gc
+import signal
 import sys
 import warnings
 from pathlib import Path
@@ -175,6 +176,9 @@ def main() -> None:
     """Run the command line; errors of the input end with one message and exit code 2."""
     # A run is short and its memory lies in arrays: looking for cycles while modules load costs a sixth of the start.
     gc.disable()
+    if hasattr(signal, "SIGPIPE") and sys.stdout is sys.__stdout__:
+        # a reader of our pipe that leaves ends us as it ends any filter: code 1 would say that a balance does not close
+        signal.signal(signal.SIGPIPE, signal.SIG_DFL)
     # what libraries warn of (an overflow in damaged input, say) comes back as an error of ours where it matters
     warnings.simplefilter("ignore")
     warnings.simplefilter("once", FluxmeshWarning)
@@ -188,7 +192,3 @@ def main() -> None:
         said = "the memory does not suffice for this input. A count in a damaged file may ask for far too much"
         typer.echo(f"fluxmesh: {said}", err=True)
         sys.exit(2)
-    except BrokenPipeError:
-        # the reader of our pipe has left: nothing more to say
-        sys.stderr.close()
-        sys.exit(141)

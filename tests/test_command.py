@@ -160,3 +160,14 @@ def test_without_a_gl_library_the_numbers_still_come(fluxmesh, block, monkeypatc
     assert "No pictures" in ran.err
     assert len(ran.err.strip().splitlines()) == 1
     assert [path.name for path in (block.folder.parent / "out").iterdir()] == ["balance.json"]
+
+
+def test_a_reader_that_leaves_early_does_not_look_like_a_balance_that_fails(block) -> None:
+    command = (
+        f'"{sys.executable}" -m fluxmesh balance "{block.case}" --out out --no-pictures | true; echo ${{PIPESTATUS[0]}}'
+    )
+    ran = subprocess.run(["bash", "-c", command], capture_output=True, text=True, check=True, cwd=block.folder.parent)
+    # ended by the closed pipe, or done before it closed
+    assert ran.stdout.strip() in ("141", "0")
+    assert ran.stderr == ""
+    assert (block.folder.parent / "out" / "balance.json").is_file()
