@@ -26,8 +26,9 @@ _FORCE_OF: Final = {
     "moment_of_pressure": "pressure_force",
     "moment_of_viscous": "viscous_force",
     "moment_of_momentum_flux": "momentum_flux",
+    "moment_of_dynamic_pressure": "dynamic_pressure_force",
 }
-_VECTORS: Final = ("area_vector", "velocity_area", "dynamic_pressure_force", *_FORCE_OF.values())
+_VECTORS: Final = ("area_vector", "velocity_area", *_FORCE_OF.values())
 _PAIRS: Final = ((0, 0), (1, 1), (2, 2), (1, 2), (0, 2), (0, 1))
 _PAIR_OF: Final = np.array([[symmetric_index(k, m) for m in range(3)] for k in range(3)])
 _FLATTEST: Final = 0.999999
@@ -125,6 +126,12 @@ def about_origin(table: IntegralTable, origin: Vector) -> IntegralTable:
     vector, tensor = at("area_vector"), at("position_normal").reshape(-1, 3, 3)
     changed[:, column_slice("position")] += at("area") * shift
     changed[:, column_slice("position_normal")] += (shift[:, None] * vector[:, None, :]).reshape(-1, 9)
+    flow, first = at("mass_flow"), at("mass_flow_position")
+    changed[:, column_slice("mass_flow_position")] += flow * shift
+    changed[:, column_slice("mass_flow_square")] += np.stack(
+        [shift[k] * first[:, m] + shift[m] * first[:, k] + shift[k] * shift[m] * flow[:, 0] for k, m in _PAIRS],
+        axis=1,
+    )
     crossed = [shift[k] * tensor[:, m] + shift[m] * tensor[:, k] + shift[k] * shift[m] * vector for k, m in _PAIRS]
     changed[:, column_slice("square_normal")] += np.stack(crossed, axis=1).reshape(-1, 18)
     for moment, force in _FORCE_OF.items():
@@ -258,7 +265,7 @@ def _reflected(values: Vector, normal: Vector) -> Vector:
     for name, (_, components, _, _) in BASIS.items():
         columns = column_slice(name)
         piece = values[:, columns]
-        if name in _VECTORS or name == "position":
+        if name in _VECTORS or name in ("position", "mass_flow_position"):
             changed[:, columns] = piece @ turn
         elif name in _FORCE_OF:
             changed[:, columns] = -(piece @ turn)
@@ -267,6 +274,9 @@ def _reflected(values: Vector, normal: Vector) -> Vector:
         elif name == "square_normal":
             full = np.einsum("ai,bj,ck,gijk->gabc", turn, turn, turn, piece.reshape(-1, 6, 3)[:, _PAIR_OF])
             changed[:, columns] = np.stack([full[:, k, m] for k, m in _PAIRS], axis=1).reshape(-1, 18)
-        elif components != 1:
-            raise NotImplementedError(f"no mirror image is known of '{name}'")
+        elif name == "mass_flow_square":
+            tensor = np.einsum("ai,bj,gij->gab", turn, turn, piece[:, _PAIR_OF])
+            changed[:, columns] = np.stack([tensor[:, k, m] for k, m in _PAIRS], axis=1)
+        else:
+            assert components == 1, name
     return changed

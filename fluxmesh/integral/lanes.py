@@ -69,10 +69,13 @@ SPEED_AREA: Final = _C["speed_area"]
 DENSITY_AREA: Final = _C["density_area"]
 DYNAMIC_PRESSURE_AREA: Final = _C["dynamic_pressure_area"]
 DYNAMIC_PRESSURE_FORCE: Final = _C["dynamic_pressure_force"]
+MOMENT_OF_DYNAMIC_PRESSURE: Final = _C["moment_of_dynamic_pressure"]
 DYNAMIC_PRESSURE_MASS_FLOW: Final = _C["dynamic_pressure_mass_flow"]
 PRESSURE_VOLUME_FLOW: Final = _C["pressure_volume_flow"]
 PRESSURE_MASS_FLOW: Final = _C["pressure_mass_flow"]
 VISCOUS_POWER: Final = _C["viscous_power"]
+MASS_FLOW_POSITION: Final = _C["mass_flow_position"]
+MASS_FLOW_SQUARE: Final = _C["mass_flow_square"]
 
 _GEOMETRY: Final = (BLOCKS["geometry"].start * LANES, BLOCKS["geometry"].stop * LANES)
 _PRESSURE: Final = (BLOCKS["pressure"].start * LANES, BLOCKS["pressure"].stop * LANES)
@@ -236,10 +239,23 @@ def _flow_at(
     o[DYNAMIC_PRESSURE_FORCE + i] -= dynamic * nx
     o[DYNAMIC_PRESSURE_FORCE + LANES + i] -= dynamic * ny
     o[DYNAMIC_PRESSURE_FORCE + 2 * LANES + i] -= dynamic * nz
+    o[MOMENT_OF_DYNAMIC_PRESSURE + i] += dynamic * (z * ny - y * nz)
+    o[MOMENT_OF_DYNAMIC_PRESSURE + LANES + i] += dynamic * (x * nz - z * nx)
+    o[MOMENT_OF_DYNAMIC_PRESSURE + 2 * LANES + i] += dynamic * (y * nx - x * ny)
     o[DYNAMIC_PRESSURE_MASS_FLOW + i] += dynamic * carried
     o[PRESSURE_VOLUME_FLOW + i] += p * volume
     o[PRESSURE_MASS_FLOW + i] += p * carried
     o[VISCOUS_POWER + i] += area * (tx * u + ty * v + tz * w)
+    cx, cy, cz = carried * x, carried * y, carried * z
+    o[MASS_FLOW_POSITION + i] += cx
+    o[MASS_FLOW_POSITION + LANES + i] += cy
+    o[MASS_FLOW_POSITION + 2 * LANES + i] += cz
+    o[MASS_FLOW_SQUARE + i] += cx * x
+    o[MASS_FLOW_SQUARE + LANES + i] += cy * y
+    o[MASS_FLOW_SQUARE + 2 * LANES + i] += cz * z
+    o[MASS_FLOW_SQUARE + 3 * LANES + i] += cy * z
+    o[MASS_FLOW_SQUARE + 4 * LANES + i] += cx * z
+    o[MASS_FLOW_SQUARE + 5 * LANES + i] += cx * y
 
 
 @compiled

@@ -217,6 +217,8 @@ def _points(
     put("volume_flow", volume)
     put("momentum_flux", carried[:, None] * velocity)
     put("moment_of_momentum_flux", np.cross(x, carried[:, None] * velocity))
+    put("mass_flow_position", carried[:, None] * x)
+    put("mass_flow_square", np.stack([carried * x[:, k] * x[:, m] for k, m in _PAIRS], axis=1))
     put("kinetic_energy_flux", carried * square / 2)
     put("reversed_mass_flow", np.maximum(-carried, 0))
     put("normal_momentum", carried * np.divide(volume, area, out=np.zeros_like(area), where=area != 0))
@@ -224,6 +226,7 @@ def _points(
     put("speed_area", np.sqrt(square) * area)
     put("dynamic_pressure_area", dynamic * area)
     put("dynamic_pressure_force", -dynamic[:, None] * normal)
+    put("moment_of_dynamic_pressure", np.cross(x, -dynamic[:, None] * normal))
     put("dynamic_pressure_mass_flow", dynamic * carried)
     if pressure is not None:
         put("pressure_volume_flow", pressure * volume)

@@ -5,7 +5,7 @@ table: nothing after it touches the faces again. Positions are taken about a
 near `origin`, so that a surface far from the coordinate origin loses no digits.
 
 With ``x`` the position about `origin`, ``n`` the unit normal out of the fluid,
-``V`` the velocity, ``rho`` the density, ``p`` the pressure and ``t`` the viscous
+``V`` the velocity relative to the surface, ``rho`` the density, ``p`` the pressure and ``t`` the viscous
 traction on the fluid, the basis integrals are those listed in `BASIS`.
 """
 
@@ -44,10 +44,13 @@ BASIS: Final[dict[str, tuple[str, int, str, str]]] = {
     "speed_area": ("flow", 1, "|V|", "m^3/s"),
     "dynamic_pressure_area": ("flow", 1, "rho V²/2", "N"),
     "dynamic_pressure_force": ("flow", 3, "-rho V²/2 n", "N"),
+    "moment_of_dynamic_pressure": ("flow", 3, "-x × rho V²/2 n", "N m"),
     "dynamic_pressure_mass_flow": ("flow", 1, "rho V²/2 rho V·n", "Pa kg/s"),
     "pressure_volume_flow": ("flow", 1, "p V·n", "W"),
     "pressure_mass_flow": ("flow", 1, "p rho V·n", "Pa kg/s"),
     "viscous_power": ("flow", 1, "t·V", "W"),
+    "mass_flow_position": ("flow", 3, "x rho V·n", "kg m/s"),
+    "mass_flow_square": ("flow", 6, "x_k x_l rho V·n, kl in xx yy zz yz xz xy", "kg m^2/s"),
 }
 """Layout of the table: block, components, integrand and unit of each entry."""
 
