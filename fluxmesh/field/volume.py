@@ -12,11 +12,11 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import FieldError
 from fluxmesh.field.volume_boxes import box_of, require_same_place, unit_that_fits
-from fluxmesh.field.volume_cells import Located, cell_points, locate
+from fluxmesh.field.volume_cells import Located, cell_points, locate, used_nodes
 from fluxmesh.field.volume_probe import farthest
 from fluxmesh.surface.readers.volume_grid import VolumeMesh
 
-__all__ = ["Sampled", "sample_volume"]
+__all__ = ["Sampled", "VolumeArray", "array_of", "sample_volume"]
 
 _REACH: Final = 1e-3  # of the volume's bounding diagonal
 # How far off a place may lie and still count as inside: single-precision files round coordinates to 6e-8 of them.
@@ -49,6 +49,79 @@ class Sampled:
     exact: NDArray[np.bool_]
     distance: NDArray[np.float64]
     reach: float
+
+
+@dataclass(frozen=True, eq=False)
+class VolumeArray:
+    """One quantity on a volume mesh.
+
+    Attributes
+    ----------
+    on : {"nodes", "cells"}
+        Where its values sit.
+    values : ndarray, shape (n,) or (n, k), float64
+        One row a node or a cell.
+    name : str
+        Of its array, for messages.
+    """
+
+    on: str
+    values: NDArray[np.float64]
+    name: str
+
+
+def array_of(
+    volume: VolumeMesh,
+    quantity: str,
+    names: tuple[str, ...],
+    *,
+    at: str | None = None,
+    components: tuple[int, ...] | None = None,
+    key: str | None = None,
+) -> VolumeArray:
+    """Look up the array of a quantity.
+
+    Parameters
+    ----------
+    volume : VolumeMesh
+        Volume cells and their arrays.
+    quantity : str
+        What it is, for messages.
+    names : tuple of str
+        Its array, or the arrays of its components.
+    at : {"nodes", "cells"}, optional
+        Where it is, if its name occurs on both.
+    components : tuple of int, optional
+        Numbers of components it may have; any by default.
+    key : str, optional
+        Key of the case that names it, for messages; ``flow.QUANTITY`` by default.
+
+    Returns
+    -------
+    VolumeArray
+        In the unit of the file.
+
+    Raises
+    ------
+    FieldError
+        An array that is missing, on both nodes and cells, of the wrong number
+        of components, or not finite at a node that a cell uses or on a cell.
+    """
+    key = f"flow.{quantity}" if key is None else key
+    on, parts = _columns(volume, key, names, at)
+    _require_components(volume, quantity, names, parts, components, key)
+    found = VolumeArray(on, _joined(parts).astype(np.float64), ", ".join(names))
+    bad = np.flatnonzero(~np.isfinite(found.values.reshape(found.values.shape[0], -1)).all(axis=1))
+    if bad.size and on == "nodes":
+        bad = bad[used_nodes(volume.grid)[bad]]
+    if bad.size:
+        raise FieldError(
+            f"array '{found.name}' on {on} of {volume.source} holds {bad.size} values that are not finite, first at "
+            f"{on[:-1]} {bad[0]}",
+            where=key,
+            remedy="Export the field again, without NaN or infinity",
+        )
+    return found
 
 
 def sample_volume(
@@ -104,9 +177,12 @@ def sample_volume(
     if reach is not None and not (np.isfinite(reach) and reach >= 0):
         raise FieldError(f"the reach is {reach!r} m", where=where, remedy="Zero or a positive number is needed")
     places = np.ascontiguousarray(places, dtype=np.float64)
-    columns = {quantity: _columns(volume, quantity, names[quantity], (at or {}).get(quantity)) for quantity in names}
+    columns = {
+        quantity: _columns(volume, f"flow.{quantity}", names[quantity], (at or {}).get(quantity)) for quantity in names
+    }
     for quantity, (_, parts) in columns.items():
-        _require_components(volume, quantity, names[quantity], parts, (components or {}).get(quantity))
+        allowed = (components or {}).get(quantity)
+        _require_components(volume, quantity, names[quantity], parts, allowed, f"flow.{quantity}")
     location = {quantity: on for quantity, (on, _) in columns.items()}
     box = box_of(cell_points(volume.grid))
     if reach is None:
@@ -144,11 +220,9 @@ def sample_volume(
     )
 
 
-def _columns(
-    volume: VolumeMesh, quantity: str, names: tuple[str, ...], at: str | None
-) -> tuple[str, list[NDArray[Any]]]:
+def _columns(volume: VolumeMesh, key: str, names: tuple[str, ...], at: str | None) -> tuple[str, list[NDArray[Any]]]:
     """Return where the arrays of a quantity sit, and them."""
-    where, key = volume.source, f"flow.{quantity}"
+    where = volume.source
     pools = {"nodes": volume.node_arrays, "cells": volume.cell_arrays}
     both = all(names[0] in pool for pool in pools.values())
     if at is None and both:
@@ -182,8 +256,8 @@ def _require_components(
     names: tuple[str, ...],
     parts: list[NDArray[Any]],
     allowed: tuple[int, ...] | None,
+    key: str,
 ) -> None:
-    key = f"flow.{quantity}"
     if len(parts) > 1:
         for name, part in zip(names, parts):
             if part.ndim != 1:

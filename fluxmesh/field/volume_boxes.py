@@ -9,10 +9,11 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import FieldError
 
-__all__ = ["box_of", "require_same_place", "unit_that_fits"]
+__all__ = ["LENGTH_UNITS", "box_of", "require_same_place", "unit_that_fits"]
 
-# Metres in the units that meshes come in.
-_UNITS: Final = {"m": 1.0, "mm": 1e-3, "cm": 1e-2, "um": 1e-6, "inch": 0.0254, "ft": 0.3048}
+LENGTH_UNITS: Final = {"m": 1.0, "mm": 1e-3, "cm": 1e-2, "um": 1e-6, "inch": 0.0254, "ft": 0.3048}
+"""Metres in the units that meshes come in."""
+
 # Two boxes are taken for the same when no corner is off by more than this part of their size.
 _SAME: Final = 0.02
 # A volume that holds the surface may be of any size, but one that is the same in another unit of this ratio is a slip.
@@ -55,7 +56,7 @@ def unit_that_fits(volume: NDArray[np.float64], scale: float, surface: NDArray[n
         None when no other unit fits.
     """
     size = float(np.linalg.norm(surface[1] - surface[0]))
-    for unit, factor in _UNITS.items():
+    for unit, factor in LENGTH_UNITS.items():
         other = abs(factor / scale - 1.0) > 1e-6
         if other and np.abs(volume * factor - surface).max() <= _SAME * size:
             return unit
@@ -88,7 +89,7 @@ def require_same_place(
     box = volume * scale
     apart = bool((np.maximum(box[0] - surface[1], surface[0] - box[1]) > reach).any())
     unit = unit_that_fits(volume, scale, surface)
-    slip = unit is not None and abs(scale / _UNITS[unit] / _SLIP - 1.0) < 1e-6
+    slip = unit is not None and abs(scale / LENGTH_UNITS[unit] / _SLIP - 1.0) < 1e-6
     if not apart and not slip:
         return
     found = "the volume misses the surface" if apart else "the volume is 1000 times as large as the surface"

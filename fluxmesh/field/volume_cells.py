@@ -15,7 +15,7 @@ from fluxmesh.field.volume_shapes import CellMap, cell_map, outside_tetrahedra
 from fluxmesh.surface.readers.faces import gather
 from fluxmesh.surface.readers.vtk_cells import cell_arrays, cell_types
 
-__all__ = ["Located", "cell_points", "locate"]
+__all__ = ["Located", "cell_points", "locate", "used_nodes"]
 
 _TETRA: Final = 10
 _BOXES: Final = (11, 12)  # VTK grants these no margin, and mostly inverts them to round-off
@@ -130,9 +130,26 @@ def cell_points(grid: Any) -> NDArray[np.floating[Any]]:
     from vtkmodules.util.numpy_support import vtk_to_numpy
 
     points: NDArray[Any] = vtk_to_numpy(grid.GetPoints().GetData())
-    used = np.zeros(points.shape[0], dtype=np.bool_)
-    used[cell_arrays(grid.GetCells())[0]] = True
+    used = used_nodes(grid)
     return points if used.all() else points[used]
+
+
+def used_nodes(grid: Any) -> NDArray[np.bool_]:
+    """Return which points cells use.
+
+    Parameters
+    ----------
+    grid : vtkUnstructuredGrid
+        Cells.
+
+    Returns
+    -------
+    ndarray, shape (n_points,), bool
+        True where at least one cell does.
+    """
+    used = np.zeros(int(grid.GetNumberOfPoints()), dtype=np.bool_)
+    used[cell_arrays(grid.GetCells())[0]] = True
+    return used
 
 
 class _Cells:

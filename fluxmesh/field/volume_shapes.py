@@ -49,6 +49,38 @@ class CellMap:
     factors: NDArray[np.float64]
     summed: int
 
+    def shape_functions(self, at: NDArray[np.float64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        """Return the shape functions and their derivatives at some places.
+
+        Parameters
+        ----------
+        at : ndarray, shape (m, 3), float64
+            Parametric coordinates.
+
+        Returns
+        -------
+        values : ndarray, shape (m, size), float64
+            They sum to 1.
+        slopes : ndarray, shape (m, 3, size), float64
+            By each parametric coordinate.
+        """
+        every = (self._terms(at) @ self.factors).reshape(-1, 4, self.size)
+        return np.ascontiguousarray(every[:, 0]), np.ascontiguousarray(every[:, 1:])
+
+    def degrees(self) -> tuple[int, int]:
+        """Return the degrees of the shape functions.
+
+        Returns
+        -------
+        together : int
+            In the coordinates that add up to at most 1; 0 where there are none.
+        alone : int
+            In each of the others; 0 where there are none.
+        """
+        powers = self.powers[self.factors[:, : self.size].any(axis=1)]
+        together = int(powers[:, : self.summed].sum(axis=1).max()) if self.summed else 0
+        return together, int(powers[:, self.summed :].max(initial=0))
+
     def values(self, at: NDArray[np.float64], nodes: NDArray[np.float64]) -> NDArray[np.float64]:
         """Interpolate node values.
 
