@@ -323,7 +323,7 @@ def tables_below(model):
 
 def test_every_table_is_frozen_and_forbids_other_keys():
     tables = set(tables_below(CaseTables))
-    assert len(tables) == 22
+    assert len(tables) == 31
     for table in tables:
         assert table.model_config["frozen"]
         assert table.model_config["extra"] == "forbid"

@@ -10,6 +10,7 @@ from pydantic_core import CoreSchema, core_schema
 from fluxmesh.case.values import (
     ArrayNames,
     DensityUnit,
+    EnthalpyUnit,
     FilePath,
     Length,
     LengthUnit,
@@ -29,6 +30,7 @@ from fluxmesh.units.wording import described
 
 __all__ = [
     "DensityArray",
+    "EnthalpyArray",
     "FlowSection",
     "GradientArray",
     "MassFluxArray",
@@ -39,6 +41,7 @@ __all__ = [
     "TractionArray",
     "VelocityArray",
     "VolumeSource",
+    "file_alone",
 ]
 
 _KINEMATIC_UNIT = "m^2/s^2"
@@ -54,17 +57,16 @@ class VelocityArray(Table):
         One vector array, or the arrays of the three components.
     unit : UnitScale
         Its unit.
-    frame : {"absolute"}
-        In which frame the velocity was exported: the inertial one.
+    frame : {"absolute", "relative"}
+        In which frame the velocity was exported: the inertial one, or that of
+        the control surface.
     at : {"nodes", "faces"} or None
         Where to look when the name occurs on both.
     """
 
     array: ArrayNames = _ARRAY
     unit: SpeedUnit = UnitScale("m/s", 1.0)
-    frame: Literal["absolute"] = Field(
-        default="absolute", description='"absolute", and the velocity in the inertial frame'
-    )
+    frame: Literal["absolute", "relative"] = "absolute"
     at: Literal["nodes", "faces"] | None = None
 
 
@@ -178,6 +180,24 @@ class TemperatureArray(Table):
     at: Literal["nodes", "faces"] | None = None
 
 
+class EnthalpyArray(Table):
+    """Where the specific enthalpy is.
+
+    Attributes
+    ----------
+    array : str
+        Name of a scalar array.
+    unit : UnitScale
+        Its unit.
+    at : {"nodes", "faces"} or None
+        Where to look when the name occurs on both.
+    """
+
+    array: Text = _ARRAY
+    unit: EnthalpyUnit = UnitScale("J/kg", 1.0)
+    at: Literal["nodes", "faces"] | None = None
+
+
 class StressArray(Table):
     """Where the viscous stress tensor is.
 
@@ -276,8 +296,14 @@ class MassFluxArray(Table):
     positive: Literal["out", "face-normal"] = "out"
 
 
-def _file_alone(value: object) -> object:
-    """Let a bare file name stand for a table that holds nothing else."""
+def file_alone(value: object) -> object:
+    """Let a bare file name stand for a table that holds nothing else.
+
+    Parameters
+    ----------
+    value : object
+        As read from the case.
+    """
     return {"file": value} if isinstance(value, str) else value
 
 
@@ -297,7 +323,9 @@ class FlowSection(Table):
     mass_flux : MassFluxArray or None
         Mass flow through each face.
     temperature : TemperatureArray or None
-        Temperature, for an ideal gas.
+        Temperature: of an ideal gas, or for the energy.
+    enthalpy : EnthalpyArray or None
+        Specific enthalpy, for the energy.
     stress, velocity_gradient : StressArray or GradientArray, or None
         What the viscous traction is made of, in place of `traction`.
     volume : VolumeSource or None
@@ -312,7 +340,8 @@ class FlowSection(Table):
     density: DensityArray | None = None
     mass_flux: MassFluxArray | None = None
     temperature: TemperatureArray | None = None
+    enthalpy: EnthalpyArray | None = None
     stress: StressArray | None = None
     velocity_gradient: GradientArray | None = None
-    volume: Annotated[VolumeSource, BeforeValidator(_file_alone)] | None = None
-    points: Annotated[PointSource, BeforeValidator(_file_alone)] | None = None
+    volume: Annotated[VolumeSource, BeforeValidator(file_alone)] | None = None
+    points: Annotated[PointSource, BeforeValidator(file_alone)] | None = None

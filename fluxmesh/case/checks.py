@@ -167,22 +167,28 @@ def _supplied_pressure(name: str, group: GroupSection, fluid: FluidSection) -> I
 
 def _gas(fluid: FluidSection, flow: FlowSection, groups: Groups) -> Iterator[Problem]:
     if fluid.law is None:
-        for key in ("gas_constant", "heat_ratio", "temperature"):
+        for key in ("gas_constant", "heat_ratio"):
             if getattr(fluid, key) is not None:
                 yield Problem(dotted("fluid", key), "only a gas has it", 'Add law = "ideal-gas", or leave it out')
-        if flow.temperature is not None:
-            yield Problem("flow.temperature", "only a gas has it", 'Add law = "ideal-gas" to [fluid]')
-        for name, group in groups.items():
-            if group.temperature is not None:
-                yield Problem(
-                    dotted("groups", name, "temperature"), "only a gas has it", 'Add law = "ideal-gas" to [fluid]'
-                )
+        if fluid.heat_capacity is not None or fluid.name is not None:
+            return
+        idle = [] if fluid.temperature is None else ["fluid.temperature"]
+        idle += [] if flow.temperature is None else ["flow.temperature"]
+        idle += [
+            dotted("groups", name, "temperature") for name, group in groups.items() if group.temperature is not None
+        ]
+        for key in idle:
+            yield Problem(
+                key,
+                "a temperature has no use here",
+                'Add law = "ideal-gas" to [fluid], or heat_capacity for the energy, or leave it out',
+            )
         return
     if fluid.density is not None or flow.density is not None:
         where = "fluid.density" if fluid.density is not None else "flow.density"
         yield Problem(where, "a density is given, and the law of ideal gases too", "Keep one")
     for key, example in (("gas_constant", "287.05 J/(kg K)"), ("ambient_pressure", "101325 Pa")):
-        if getattr(fluid, key) is None:
+        if getattr(fluid, key) is None and not (fluid.name is not None and key == "gas_constant"):
             yield Problem(
                 dotted("fluid", key), "missing, and the law of ideal gases needs it", f'Give such as "{example}"'
             )
@@ -197,7 +203,7 @@ def _gas(fluid: FluidSection, flow: FlowSection, groups: Groups) -> Iterator[Pro
 
 
 def _lacks_density(group: GroupSection, fluid: FluidSection, flow: FlowSection) -> bool:
-    if fluid.law is not None:
+    if fluid.law is not None or fluid.name is not None:
         return False
     if fluid.density is not None or flow.density is not None or group.density is not None:
         return False
@@ -232,7 +238,8 @@ def flow_problems(fluid: FluidSection, flow: FlowSection) -> Iterator[Problem]:
             "the pressure is absolute, but the ambient pressure is not known",
             'Add ambient_pressure to [fluid], such as "101325 Pa"',
         )
-    if pressure.kind == "kinematic" and fluid.density is None and flow.density is None:
+    named = fluid.name is not None and fluid.law is None
+    if pressure.kind == "kinematic" and fluid.density is None and flow.density is None and not named:
         yield Problem(
             "flow.pressure.kind",
             "the pressure is kinematic, but the density is not known",
@@ -248,7 +255,7 @@ def flow_problems(fluid: FluidSection, flow: FlowSection) -> Iterator[Problem]:
             "the head was removed, but there is no gravity",
             "Add gravity = [x, y, z] to [fluid]",
         )
-    if fluid.density is None:
+    if fluid.density is None and not named:
         yield Problem(
             "flow.pressure.head",
             "the head was removed, but there is no constant density to put it back with",
@@ -267,7 +274,7 @@ def _sources(fluid: FluidSection, flow: FlowSection) -> Iterator[Problem]:
     given = [key for key in ("traction", "stress", "velocity_gradient") if getattr(flow, key) is not None]
     if len(given) > 1:
         yield Problem("flow", f"{either(given, 'and')} are given", "Keep one: each gives the traction")
-    if flow.velocity_gradient is not None and fluid.viscosity is None:
+    if flow.velocity_gradient is not None and fluid.viscosity is None and fluid.name is None:
         yield Problem(
             "fluid.viscosity",
             "missing, and the traction is to be made from the velocity gradient",

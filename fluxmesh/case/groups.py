@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from typing import Literal
+from typing import Annotated, Literal
 
 from pydantic import Field
 
@@ -17,6 +17,7 @@ from fluxmesh.case.values import (
     Numbers,
     Place,
     Pressure,
+    SpecificEnergy,
     Speed,
     Table,
     Tags,
@@ -90,7 +91,10 @@ class GroupSection(Table):
         m/s. A magnitude for an inlet or outlet; for an open group above zero
         where the flow leaves.
     velocity : tuple of 3 float, or None
-        Absolute velocity in m/s instead.
+        Velocity in m/s instead.
+    velocity_frame : {"absolute", "relative"}
+        Whether `velocity` is that in the inertial frame, or relative to the
+        control surface; the other keys are through the surface, so relative.
     from_continuity : bool
         Whether the flow is solved from the mass balance; one group at most.
     profile : {"uniform", "laminar", "power-law", "table"}
@@ -106,7 +110,11 @@ class GroupSection(Table):
     density : Measured or None
         Density in kg/m³ where it differs from that of the fluid.
     temperature : Measured or None
-        In K, for an ideal gas.
+        In K: of an ideal gas, or for the energy.
+    enthalpy : Measured or None
+        In J/kg, for the energy.
+    carried : dict of str to float
+        Values of the scalars of ``[[carried]]``, by name.
     """
 
     role: Role = Field(strict=False, description="a role: inlet, outlet, open, wall or symmetry")
@@ -117,6 +125,7 @@ class GroupSection(Table):
     mass_flow: MassRate | None = None
     speed: Speed | None = None
     velocity: Velocity | None = None
+    velocity_frame: Literal["absolute", "relative"] = "absolute"
     from_continuity: bool = False
     profile: Literal["uniform", "laminar", "power-law", "table"] = "uniform"
     exponent: Exponent | None = None
@@ -125,6 +134,8 @@ class GroupSection(Table):
     pressure_kind: Literal["gauge", "absolute"] = "gauge"
     density: Density | None = None
     temperature: Temperature | None = None
+    enthalpy: SpecificEnergy | None = None
+    carried: dict[str, Annotated[float, Field(strict=False, allow_inf_nan=False)]] = Field(default_factory=dict)
 
     def supplied_flow(self) -> tuple[str, ...]:
         """Return the keys of the supplied flow that are given.

@@ -8,8 +8,11 @@ from typing import Annotated
 from pydantic import AfterValidator, Field, model_validator
 
 from fluxmesh.case.arrays import FlowSection
+from fluxmesh.case.budgets import CarriedSection, EnergySection, LossSection
 from fluxmesh.case.checks import flow_problems, group_problems, section_problems
 from fluxmesh.case.groups import GroupSection
+from fluxmesh.case.motion import FrameSection, StorageSection
+from fluxmesh.case.motion_checks import budget_problems, motion_problems
 from fluxmesh.case.naming import naming_problems
 from fluxmesh.case.problems import ProblemList
 from fluxmesh.case.sections import (
@@ -51,6 +54,16 @@ class CaseTables(Table):
         Which exported array is what.
     groups : dict of str to GroupSection
         The face groups, in the order of the file; at least one.
+    frame : FrameSection or None
+        Motion of the control surface; None where it stands.
+    storage : StorageSection or None
+        Rates of what it holds; None where they are zero.
+    energy : EnergySection or None
+        Heat and shaft power.
+    carried : tuple of CarriedSection
+        Scalars that the flow carries.
+    loss : tuple of LossSection
+        Loss coefficients wanted.
     hardware : HardwareSection or None
         Mass of the hardware.
     anchor : AnchorSection
@@ -68,6 +81,11 @@ class CaseTables(Table):
     groups: Annotated[dict[str, GroupSection], AfterValidator(_named)] = Field(
         description="a table [groups.NAME] with a role for each face group"
     )
+    frame: FrameSection | None = None
+    storage: StorageSection | None = None
+    energy: EnergySection | None = None
+    carried: Annotated[tuple[CarriedSection, ...], Field(strict=False)] = ()
+    loss: Annotated[tuple[LossSection, ...], Field(strict=False)] = ()
     hardware: HardwareSection | None = None
     anchor: AnchorSection = Field(default_factory=AnchorSection)
     closure: ClosureSection = Field(default_factory=ClosureSection)
@@ -76,11 +94,13 @@ class CaseTables(Table):
     @model_validator(mode="after")
     def _fit_together(self) -> CaseTables:
         problems = [
-            *naming_problems(self.surface, self.groups),
+            *naming_problems(self.surface, self.groups, series=self.storage is not None and self.storage.is_series()),
             *group_problems(self.fluid, self.flow, self.groups),
             *flow_problems(self.fluid, self.flow),
             *section_problems(self.fluid, self.groups, self.hardware, self.closure, self.reported),
         ]
+        problems += motion_problems(self.surface, self.flow, self.groups, self.frame, self.storage)
+        problems += budget_problems(self.fluid, self.flow, self.groups, self.energy, self.carried, self.loss)
         if problems:
             raise ProblemList(problems)
         return self

@@ -18,7 +18,7 @@ __all__ = ["naming_problems"]
 Groups = Mapping[str, GroupSection]
 
 
-def naming_problems(surface: SurfaceSection, groups: Groups) -> Iterator[Problem]:
+def naming_problems(surface: SurfaceSection, groups: Groups, *, series: bool = False) -> Iterator[Problem]:
     """Find faults in how the faces of the surface get their groups.
 
     Parameters
@@ -27,13 +27,21 @@ def naming_problems(surface: SurfaceSection, groups: Groups) -> Iterator[Problem
         The mesh.
     groups : mapping of str to GroupSection
         The groups by name.
+    series : bool, optional
+        Whether every snapshot brings a surface of its own.
 
     Yields
     ------
     Problem
         One for each fault.
     """
-    if surface.file is None and surface.files is None:
+    if series:
+        if surface.file is not None or surface.files is not None:
+            yield Problem(
+                "surface", "a file is given here, and every snapshot brings one too", "Keep those of the snapshots"
+            )
+            return
+    elif surface.file is None and surface.files is None:
         yield Problem(
             "surface",
             "neither file nor files is given",

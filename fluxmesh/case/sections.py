@@ -11,6 +11,7 @@ from fluxmesh.case.values import (
     FilePath,
     Force,
     GasConstant,
+    HeatCapacity,
     HeatRatio,
     Length,
     LengthUnit,
@@ -90,6 +91,8 @@ class FluidSection(Table):
 
     Attributes
     ----------
+    name : str or None
+        A fluid whose properties are taken from a library, where they are not given.
     density : Measured or None
         In kg/m³; None where an array or each group has it. Beside an array
         it serves for the removed head and the weight only.
@@ -100,13 +103,22 @@ class FluidSection(Table):
     law : {"ideal-gas"} or None
         Density from absolute pressure and temperature; None for a density
         that is given.
-    gas_constant, temperature, heat_ratio : Measured or None
-        Of the gas: J/(kg K), K where an array or a group does not have it, and
-        the ratio of the heats, which the Mach number needs.
+    gas_constant, heat_ratio : Measured or None
+        Of the gas: J/(kg K), and the ratio of the heats, which Mach number and
+        energy need.
+    temperature : Measured or None
+        In K, where an array or a group does not have it.
+    pressure : Measured or None
+        Absolute, in Pa, at which the properties of a named fluid are taken; that of
+        the surroundings by default.
+    heat_capacity : Measured or None
+        At constant pressure, in J/(kg K), for the energy.
     viscosity : Measured or None
         In Pa s; for a traction from the velocity gradient.
     """
 
+    name: Text | None = None
+    pressure: AbsolutePressure | None = None
     density: Density | None = None
     ambient_pressure: AbsolutePressure | None = None
     gravity: Acceleration = (0.0, 0.0, 0.0)
@@ -114,6 +126,7 @@ class FluidSection(Table):
     gas_constant: GasConstant | None = None
     temperature: Temperature | None = None
     heat_ratio: HeatRatio | None = None
+    heat_capacity: HeatCapacity | None = None
     viscosity: Viscosity | None = None
 
 

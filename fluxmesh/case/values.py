@@ -19,14 +19,17 @@ __all__ = [
     "AbsolutePressure",
     "Acceleration",
     "Angle",
+    "AngularRate",
     "ArrayNames",
     "Density",
     "DensityUnit",
     "Direction",
+    "EnthalpyUnit",
     "Exponent",
     "FilePath",
     "Force",
     "GasConstant",
+    "HeatCapacity",
     "HeatRatio",
     "Length",
     "LengthUnit",
@@ -36,9 +39,11 @@ __all__ = [
     "Moment",
     "Numbers",
     "Place",
+    "Power",
     "Pressure",
     "RateUnit",
     "Share",
+    "SpecificEnergy",
     "Speed",
     "SpeedUnit",
     "StressUnit",
@@ -48,6 +53,7 @@ __all__ = [
     "TemperatureUnit",
     "Text",
     "Texts",
+    "Time",
     "Title",
     "UnitScale",
     "Vector",
@@ -236,6 +242,11 @@ AbsolutePressure = Annotated[Measured, _Quantity("Pa", least=0.0)]
 Speed = Annotated[Measured, _Quantity("m/s")]
 Temperature = Annotated[Measured, _Quantity("K", above=0.0)]
 GasConstant = Annotated[Measured, _Quantity("J/(kg K)", above=0.0)]
+HeatCapacity = Annotated[Measured, _Quantity("J/(kg K)", above=0.0)]
+SpecificEnergy = Annotated[Measured, _Quantity("J/kg")]
+Power = Annotated[Measured, _Quantity("W")]
+Time = Annotated[Measured, _Quantity("s")]
+AngularRate = Annotated[Measured, _Quantity("1/s")]
 Viscosity = Annotated[Measured, _Quantity("Pa s", least=0.0)]
 HeatRatio = Annotated[Measured, _Quantity("", above=1.0)]
 Exponent = Annotated[Measured, _Quantity("", above=0.0)]
@@ -254,5 +265,6 @@ SpeedUnit = Annotated[UnitScale, _scale("m/s")]
 StressUnit = Annotated[UnitScale, _scale("Pa")]
 DensityUnit = Annotated[UnitScale, _scale("kg/m^3")]
 TemperatureUnit = Annotated[UnitScale, _scale("K")]
+EnthalpyUnit = Annotated[UnitScale, _scale("J/kg")]
 RateUnit = Annotated[UnitScale, _scale("1/s")]
 MassFlowUnit = Annotated[UnitScale, _scale("kg/s")]
