@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fluxmesh.errors import FieldError
+from fluxmesh.field.frame import Frame
 from fluxmesh.surface.surface import Group, Role
 
 __all__ = ["GroupData", "Hardware", "Setting"]
@@ -85,6 +86,8 @@ class Setting:
         Groups whose pressure or flow was supplied as one value, not exported.
     heat_ratio, ambient : float or None
         Of an ideal gas, and the ambient absolute pressure in Pa: for Mach numbers.
+    frame : Frame or None
+        How the control surface moves; None where it stands.
     """
 
     groups: tuple[Group, ...]
@@ -97,6 +100,7 @@ class Setting:
     supplied: tuple[str, ...] = ()
     heat_ratio: float | None = None
     ambient: float | None = None
+    frame: Frame | None = None
 
     def walls(self) -> NDArray[np.bool_]:
         """Return which groups are hardware, shape (n_groups,)."""

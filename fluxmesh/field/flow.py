@@ -18,10 +18,23 @@ from fluxmesh.field.field import (
     require_positive,
     supply,
 )
+from fluxmesh.field.frame import Frame
 from fluxmesh.field.pressure import PressureMeaning, pressure_terms
+from fluxmesh.field.relative import needs_samples, relative_velocity
 from fluxmesh.integral.kernel import integrate
-from fluxmesh.integral.layout import ABSENT, AT_SAMPLE, PER_GROUP, FaceArrays, FlowArrays, PressureTerms, make_runs
+from fluxmesh.integral.layout import (
+    ABSENT,
+    AT_SAMPLE,
+    PER_GROUP,
+    FaceArrays,
+    FlowArrays,
+    PressureTerms,
+    Runs,
+    make_runs,
+)
+from fluxmesh.integral.samples import sample_places
 from fluxmesh.integral.table import IntegralTable
+from fluxmesh.surface.extent import used_box
 from fluxmesh.surface.surface import ControlSurface, Role
 
 __all__ = ["Flow", "face_arrays_of", "integrate_flow", "lay_flow", "near_origin", "require_flow", "still_flow"]
@@ -36,14 +49,15 @@ class Flow:
     density : Field
         kg/m^3.
     velocity : Field
-        Absolute velocity, m/s.
+        Velocity relative to the control surface, m/s; where that stands (no
+        `frame`), the velocity itself.
     pressure : Field
         As exported; `meaning` says how to read it. Values supplied for a group
         are gauge pressure in Pa.
     traction : Field
         Viscous traction on the FLUID, Pa.
     mass_flux : Field
-        Mass flow OUT through each face, kg/s; where it is there, it carries the
+        Mass flow OUT through each face of the (moving) surface, kg/s; where it is there, it carries the
         mass and momentum flux in place of density times velocity.
     meaning : PressureMeaning
         Kind of the exported pressure, and its head.
@@ -59,6 +73,8 @@ class Flow:
         Where fields were sampled from, and how well, as plain data.
     notes : tuple of str
         What was solved, sampled or restored on the way, one sentence each.
+    frame : Frame or None
+        How the control surface moves; None where it stands.
     """
 
     density: Field
@@ -73,6 +89,7 @@ class Flow:
     viscosity: float | None = None
     sampling: Mapping[str, object] | None = None
     notes: tuple[str, ...] = ()
+    frame: Frame | None = None
 
     def fields(self) -> tuple[Field, ...]:
         """Return all fields."""
@@ -114,6 +131,8 @@ def lay_flow(
     ambient: float | None = None,
     gravity: Sequence[float] = (0.0, 0.0, 0.0),
     viscosity: float | None = None,
+    frame: Frame | None = None,
+    velocity_frame: str = "absolute",
 ) -> Flow:
     """Lay flow data on a surface.
 
@@ -142,6 +161,11 @@ def lay_flow(
         m/s².
     viscosity : float, optional
         Dynamic viscosity, Pa s: for an estimate of what a missing traction leaves out.
+    frame : Frame, optional
+        How the control surface moves; it stands by default.
+    velocity_frame : {"absolute", "relative"}, optional
+        Whether all velocities given are those in the inertial frame, or relative
+        to the control surface.
 
     Returns
     -------
@@ -193,6 +217,14 @@ def lay_flow(
     down = [float(g) for g in gravity]
     if len(down) != 3 or not np.isfinite(down).all():
         raise FieldError(f"gravity is {gravity!r}", remedy="Three finite numbers in m/s² are needed")
+    if velocity_frame not in ("absolute", "relative"):
+        raise FieldError(f"velocity_frame is {velocity_frame!r}", remedy='Give "absolute" or "relative"')
+    samples = None
+    if frame is not None and velocity_frame == "absolute":
+        needs = needs_samples(fields["velocity"], frame)
+        if needs.any():
+            samples = sample_places(face_arrays_of(surface), needs[surface.group_of_face])
+        fields["velocity"] = relative_velocity(surface, fields["velocity"], frame, samples=samples)
     flow = Flow(
         density=fields["density"],
         velocity=fields["velocity"],
@@ -202,7 +234,9 @@ def lay_flow(
         meaning=meaning or PressureMeaning(),
         ambient=ambient,
         gravity=(down[0], down[1], down[2]),
+        sample_start=np.empty(0, np.int64) if samples is None else samples.start,
         viscosity=viscosity,
+        frame=frame,
     )
     require_flow(surface, flow)
     return flow
@@ -259,10 +293,8 @@ def _require_samples(surface: ControlSurface, flow: Flow, each: Field, *, positi
 
 
 def near_origin(surface: ControlSurface) -> NDArray[np.float64]:
-    """Return the middle of the points' bounding box, shape (3,), m."""
-    points = surface.points
-    low = np.array([points[:, k].min() for k in range(3)])
-    high = np.array([points[:, k].max() for k in range(3)])
+    """Return the middle of the box round the points that faces use, shape (3,), m."""
+    low, high = used_box(surface.points, surface.connectivity)
     return np.asarray(low + (high - low) / 2)
 
 
@@ -282,7 +314,21 @@ def face_arrays_of(surface: ControlSurface) -> FaceArrays:
     )
 
 
-def integrate_flow(surface: ControlSurface, flow: Flow, *, threads: int | None = None) -> IntegralTable:
+def _runs_over(surface: ControlSurface, faces: NDArray[np.int64] | None) -> Runs:
+    if faces is None:
+        return make_runs(surface.group_of_face, surface.kinds)
+    runs = make_runs(surface.group_of_face[faces], None if surface.kinds is None else surface.kinds[faces])
+    return runs._replace(order=faces[runs.order] if runs.order.size else faces)
+
+
+def integrate_flow(
+    surface: ControlSurface,
+    flow: Flow,
+    *,
+    threads: int | None = None,
+    origin: NDArray[np.float64] | None = None,
+    faces: NDArray[np.int64] | None = None,
+) -> IntegralTable:
     """Return the table of basis integrals of a flow on a surface.
 
     Parameters
@@ -293,18 +339,22 @@ def integrate_flow(surface: ControlSurface, flow: Flow, *, threads: int | None =
         The flow; pressure becomes gauge with its head on the way.
     threads : int, optional
         Threads; all cores by default. The result does not depend on it.
+    origin : ndarray, shape (3,), float64, optional
+        Point that positions are taken about, m; the middle of the bounding box by default.
+    faces : ndarray, shape (n,), int64, optional
+        Faces to integrate over; all by default.
 
     Returns
     -------
     IntegralTable
-        One row a group, about the middle of the bounding box.
+        One row a group.
 
     Raises
     ------
     FieldError
         Integrals that overflow.
     """
-    origin = near_origin(surface)
+    origin = near_origin(surface) if origin is None else origin
     terms = PressureTerms(False, 0.0, 0.0, 0.0, 0.0)
     if flow.pressure.present().any():
         terms = pressure_terms(
@@ -327,7 +377,7 @@ def integrate_flow(surface: ControlSurface, flow: Flow, *, threads: int | None =
     table = integrate(
         mesh=mesh,
         flow=arrays,
-        runs=make_runs(surface.group_of_face, surface.kinds),
+        runs=_runs_over(surface, faces),
         origin=origin,
         still_groups=np.array([group.role in (Role.WALL, Role.SYMMETRY) for group in surface.groups]),
         threads=threads,
