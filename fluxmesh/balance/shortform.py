@@ -56,8 +56,11 @@ def short_form(table: IntegralTable, setting: Setting) -> ShortForm | None:
     Returns
     -------
     ShortForm or None
-        None unless exactly two ports carry flow, one in and one out.
+        None unless exactly two ports carry flow, one in and one out, and where
+        the control surface turns: it is not made for that.
     """
+    if setting.frame is not None and setting.frame.turns:
+        return None
     flows = table.column("mass_flow")
     carrying = [k for k in np.flatnonzero(setting.ports() & setting.data.flux) if flows[k] != 0.0]
     if len(carrying) != 2 or flows[carrying[0]] * flows[carrying[1]] >= 0:
