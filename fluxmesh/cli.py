@@ -45,17 +45,19 @@ def balance(
 ) -> None:
     """Balance a case: tables here, balance.json and pictures in a folder.
 
+    A series of instants gives series.json and a chart too; balance.json is that of the largest reaction.
     Exit code 0: done; 1: done, and a balance does not close within the tolerance; 2: the input is at fault.
     """
     from fluxmesh.case.read import read_case
     from fluxmesh.job.ahead import load_ahead
 
     read = read_case(case)
+    if read.storage is not None and read.storage.is_series():
+        raise typer.Exit(_balance_series(read, out or Path("results") / read.name, pictures))
     loaded = load_ahead(read)
 
     from fluxmesh.job.run import REVIEWED_FACES, run_case
     from fluxmesh.report.result import write_json
-    from fluxmesh.report.terminal import print_balance
     from fluxmesh.report.whole import require_writable
 
     folder = out or Path("results") / read.name
@@ -70,9 +72,62 @@ def balance(
         # pictures of an earlier run would not belong to the figures beside them
         (folder / old).unlink(missing_ok=True)
     write_json(data, folder / "balance.json")
-    console = _console()
+    _print(done)
+    typer.echo(f"\nWritten: {folder / 'balance.json'}")
+    if pictures:
+        _draw(done, folder)
+    raise typer.Exit(1 if done.verdict.closes is False else 0)
+
+
+def _balance_series(case: Any, folder: Path, pictures: bool) -> int:
+    """Balance every instant of a series; return the exit code."""
+    from fluxmesh.job.check import with_doubts
+    from fluxmesh.job.governing import governing_instant
+    from fluxmesh.job.run import REVIEWED_FACES
+    from fluxmesh.job.series import run_series
+    from fluxmesh.report.picture_series import draw_series
+    from fluxmesh.report.result import write_json
+    from fluxmesh.report.series import print_series
+    from fluxmesh.report.whole import require_writable
+
+    require_writable(folder)
+    done = run_series(case, progress=_instants_done if sys.stderr.isatty() else None)
+    at, largest = governing_instant(case, done)
+    if largest.surface.face_count <= REVIEWED_FACES:
+        largest = with_doubts(at, largest)
+    for old in ("vectors.png", "pressure.png", "series.png"):
+        (folder / old).unlink(missing_ok=True)
+    write_json(done.data(), folder / "series.json")
+    write_json(largest.data(), folder / "balance.json")
+    _print(largest)
+    typer.echo("")
+    print_series(
+        _console(), done.series, done.verdict, title=done.title, assumptions=done.assumptions, notes=done.notes
+    )
+    typer.echo(f"\nWritten: {folder / 'series.json'}\nWritten: {folder / 'balance.json'}, of the largest reaction")
+    if pictures:
+        draw_series(
+            done.series,
+            folder / "series.png",
+            title=done.title,
+            tolerance=done.tolerance,
+            notes=done.assumptions,
+            verdict=done.verdict_words(),
+        )
+        typer.echo(f"Written: {folder / 'series.png'}")
+        _draw(largest, folder)
+    return 1 if done.verdict.closes is False else 0
+
+
+def _instants_done(done: int, count: int) -> None:
+    typer.echo(f"\r{done} of {count} instants" + ("\n" if done == count else ""), nl=False, err=True)
+
+
+def _print(done: Any) -> None:
+    from fluxmesh.report.terminal import print_balance
+
     print_balance(
-        console,
+        _console(),
         done.balance,
         done.verdict,
         title=done.title,
@@ -81,11 +136,10 @@ def balance(
         notes=done.notes,
         comparison=done.comparison,
         doubts=done.doubts,
+        energy=done.energy,
+        carried=done.carried,
+        losses=done.losses,
     )
-    typer.echo(f"\nWritten: {folder / 'balance.json'}")
-    if pictures:
-        _draw(done, folder)
-    raise typer.Exit(1 if done.verdict.closes is False else 0)
 
 
 def _draw(done: Any, folder: Path) -> None:

@@ -45,7 +45,7 @@ def test_the_result_file_keeps_the_contract(result) -> None:
     assert set(data["reaction"]) >= {"at", "force", "moment", "line_of_action"}
     assert set(data["reaction"]["line_of_action"]) == {"point", "direction", "couple"}
     assert set(data["fluid"]) == {"mass", "weight", "centre"}
-    assert set(data["ports"]["feed"]["mean_pressure"]) == {"area", "mass_flow"}
+    assert set(data["ports"]["feed"]["mean_pressure"]) >= {"area", "mass_flow"}
     assert set(data["verdict"]) == {"closes", "measure", "tolerance", "reasons"}
 
 

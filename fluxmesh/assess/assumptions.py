@@ -11,12 +11,23 @@ from fluxmesh.balance.balance import Balance
 __all__ = ["CAUTIONS", "assumptions_of"]
 
 CAUTIONS: Final = (
-    "This is the load of one steady flow. It leaves out surge and water hammer, start-up and shut-down, "
-    "vibration, thermal growth, bolt-up, seismic and wind loads, two-phase flow, "
+    "This is the load of the flow given, and of no other. It leaves out surge and water hammer, start-up and shut-down "
+    "beyond what the data hold, vibration, thermal growth, bolt-up, seismic and wind loads, two-phase flow, "
     "and pressure tests or blocked outlets, which often govern.",
     "Local codes and a licensed engineer decide what an anchor, support or thrust restraint must carry.",
 )
 """What every load leaves out, and who decides."""
+
+
+def _motion(balance: Balance) -> str:
+    frame, rates = balance.setting.frame, balance.storage
+    steady = rates.mass == 0.0 and not np.any(rates.momentum) and not np.any(rates.angular_momentum)
+    if frame is None:
+        return "Steady flow through a control surface at rest" if steady else "Unsteady flow at one instant"
+    moves = "turns" if frame.turns else "moves"
+    if steady:
+        return f"Flow that is steady as seen from the control surface, which {moves}"
+    return f"Unsteady flow at one instant through a control surface that {moves}"
 
 
 def assumptions_of(
@@ -38,7 +49,7 @@ def assumptions_of(
         Whether a part model is reported whole.
     """
     setting = balance.setting
-    said = ["Steady flow through a control surface at rest"]
+    said = [_motion(balance)]
     surroundings = "the ambient pressure" if ambient is None else f"ambient pressure {ambient:g} Pa"
     said.append(f"Pressure counts from {surroundings}, which acts on the outside of the hardware everywhere")
     weightless = not np.any(setting.gravity)
@@ -46,6 +57,10 @@ def assumptions_of(
         said.append("No gravity is given: the weights of fluid and hardware are not in the load or the reaction")
     elif balance.fluid is None:
         said.append("The weight of the fluid is not in the load: no closed volume or no density")
+    elif balance.contents is not None and balance.contents.mass is not None:
+        said.append(
+            f"The volume file says what the volume holds ({balance.fluid.mass:.5g} kg); its weight is in the load"
+        )
     else:
         held = "filled with the fluid" + (", at its mean density on the surface" if estimated_density else "")
         pull = ", ".join(f"{g:g}" for g in setting.gravity)
@@ -57,8 +72,12 @@ def assumptions_of(
         said.append("The pressure came without its hydrostatic head, which was put back")
     if mirrored:
         said.append("The part model was mirrored at its symmetry planes: all figures are those of the whole")
+    frame = setting.frame
+    if frame is not None and frame.turns and setting.hardware is not None:
+        said.append("The hardware counts as a mass at its centre: its products of inertia are not in the reaction")
     if setting.hardware is None:
-        said.append("No hardware mass is given: its weight is not in the reaction")
+        inert = frame is not None and (frame.turns or any(frame.acceleration))
+        said.append(f"No hardware mass is given: its weight {'and inertia are' if inert else 'is'} not in the reaction")
     elif not weightless:
         said.append(f"The hardware weighs {setting.hardware.mass:g} kg without the fluid")
     ports = setting.ports()

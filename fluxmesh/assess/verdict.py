@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 from typing import Final
 
 import numpy as np
 
 from fluxmesh.balance.balance import Balance
+from fluxmesh.balance.carried import CarriedBalance
+from fluxmesh.balance.energy import EnergyBalance
 
 __all__ = ["Verdict", "relative_without_mean_pressure", "verdict_of"]
 
@@ -61,10 +64,7 @@ def relative_without_mean_pressure(balance: Balance) -> float | None:
         return None
     mean = float(table.total("pressure_area")) / area
     pressure = ledger.group_pressure + mean * table.column("area_vector")
-    rows = np.concatenate(
-        [ledger.group_flux, pressure, ledger.group_viscous, ledger.weight[None], ledger.storage[None]]
-    )
-    size = float(np.linalg.norm(rows, axis=1).sum())
+    size = replace(ledger, group_pressure=pressure).size()
     return float(np.linalg.norm(ledger.residual())) / size if size > 0 else None
 
 
@@ -81,7 +81,11 @@ def _judged(balance: Balance) -> list[tuple[str, float]]:
     acting = np.abs(table.column("pressure_area")) + 2 * np.abs(table.column("dynamic_pressure_area"))
     forces = max(linear.size(), _SMALLEST_SHARE * float(acting.sum()))
     arm = (float(table.total("area")) / (4 * np.pi)) ** 0.5
-    laws = (("Linear momentum", linear, forces), ("Angular momentum", angular, max(angular.size(), arm * forces)))
+    laws = [("Linear momentum", linear, forces)]
+    if angular.known:
+        laws.append(("Angular momentum", angular, max(angular.size(), arm * forces)))
+    elif balance.axial is not None and balance.axial.known:
+        laws.append(("Angular momentum about the axis", balance.axial, max(balance.axial.size(), arm * forces)))
     return [(law, float(np.linalg.norm(ledger.residual())) / size) for law, ledger, size in laws if size > 0]
 
 
@@ -90,7 +94,14 @@ def _compare(law: str, relative: float, tolerance: float) -> str:
     return f"{law}: residual {relative:.3g} of the entries, {word} the tolerance {tolerance:g}"
 
 
-def verdict_of(balance: Balance, *, tolerance: float = 0.01, encloses_hardware: bool = True) -> Verdict:
+def verdict_of(
+    balance: Balance,
+    *,
+    tolerance: float = 0.01,
+    encloses_hardware: bool = True,
+    energy: EnergyBalance | None = None,
+    carried: Sequence[CarriedBalance] = (),
+) -> Verdict:
     """Judge a balance.
 
     Parameters
@@ -102,6 +113,10 @@ def verdict_of(balance: Balance, *, tolerance: float = 0.01, encloses_hardware: 
     encloses_hardware : bool, optional
         For a surface without walls: whether a body may be inside, so that the
         momentum residual is the load on it and not an error.
+    energy : EnergyBalance, optional
+        Judged where heat or shaft power are given.
+    carried : sequence of CarriedBalance, optional
+        Each is judged where it is known at all ports.
 
     Returns
     -------
@@ -124,6 +139,18 @@ def verdict_of(balance: Balance, *, tolerance: float = 0.01, encloses_hardware: 
             reasons.append(_compare("Mass", balance.mass.relative, tolerance))
     else:
         reasons.append("Mass: nothing flows")
+    if not balance.momentum.known:
+        reasons.append(
+            "Momentum: the rate of the momentum inside is not known, so no load is demanded; "
+            "give the density, or the flow inside as a volume file"
+        )
+    elif not balance.angular.known:
+        reasons.append(
+            "Angular momentum: across the axis it cannot be known from the surface alone, only about the axis; "
+            "the flow inside as a volume file in [frame] or [storage] would tell it"
+            if balance.axial is not None
+            else "Angular momentum: its rate inside is not known, so it is not judged"
+        )
     walls = setting.walls()
     compared = balance.complete and (bool(walls.any()) or not encloses_hardware)
     if compared:
@@ -131,10 +158,20 @@ def verdict_of(balance: Balance, *, tolerance: float = 0.01, encloses_hardware: 
             measures.append(relative)
             reasons.append(_compare(law, relative, tolerance))
         reasons += _momentum_doubts(balance, tolerance)
-    elif balance.complete:
+    elif balance.complete and not walls.any():
         reasons.append("Momentum: no wall group, so its residual is the load on whatever the surface encloses")
-    else:
+    elif balance.momentum.known:
         reasons.append(_incomparable(balance))
+    further = [("Energy", energy.relative)] if energy is not None and energy.judged else []
+    further += [(f"Carried {scalar.name}", scalar.relative) for scalar in carried]
+    for law, share in further:
+        if share is not None:
+            measures.append(share)
+            reasons.append(_compare(law, share, tolerance))
+    if energy is not None and energy.gains(tolerance):
+        reasons.append(
+            "Doubt: the flow gains mechanical energy from nowhere: a drive is missing, or data are at fault"
+        )
     measure = max(measures) if measures else None
     closes: bool | None = None
     if measure is not None and measure > tolerance:

@@ -18,9 +18,12 @@ from fluxmesh.assess.review.toml import toml_text
 from fluxmesh.case.model import Case
 from fluxmesh.case.read import parse_case
 from fluxmesh.case.values import UnitScale
+from fluxmesh.job.fluid import named_fluid
+from fluxmesh.job.inside import contents_in, storage_in
 from fluxmesh.job.laid import lay_case
 from fluxmesh.job.mesh import Loaded, load_mesh
-from fluxmesh.job.run import Outcome, balance_of, hardware_of
+from fluxmesh.job.outcome import Outcome
+from fluxmesh.job.run import balance_of, hardware_of
 from fluxmesh.job.shape import Shape, read_shape
 from fluxmesh.surface.face_geometry import corners, face_geometry
 from fluxmesh.surface.rawmesh import RawMesh
@@ -50,10 +53,16 @@ def check_case(case: Case, *, loaded: Loaded | None = None) -> Review:
     InputError
         What is plainly wrong; the message says where.
     """
+    if case.storage is not None and case.storage.is_series():
+        from fluxmesh.job.governing import governing_instant
+        from fluxmesh.job.series import run_series
+
+        at, outcome = governing_instant(case, run_series(case))
+        return review_of(evidence_of(at, outcome=outcome))
     return review_of(evidence_of(case, loaded=loaded))
 
 
-def with_doubts(case: Case, outcome: Outcome, *, loaded: Loaded) -> Outcome:
+def with_doubts(case: Case, outcome: Outcome, *, loaded: Loaded | None = None) -> Outcome:
     """Return an outcome with the doubts of a review.
 
     Parameters
@@ -62,8 +71,8 @@ def with_doubts(case: Case, outcome: Outcome, *, loaded: Loaded) -> Outcome:
         The case.
     outcome : Outcome
         What `fluxmesh.job.run.run_case` made of it.
-    loaded : Loaded
-        Its mesh.
+    loaded : Loaded, optional
+        Its mesh, if it was read before.
 
     Returns
     -------
@@ -121,6 +130,7 @@ def evidence_of(case: Case, *, loaded: Loaded | None = None, outcome: Outcome | 
         What is plainly wrong; the message says where.
     """
     loaded = loaded or load_mesh(case)
+    case = named_fluid(case)[0]
     if outcome is not None and outcome.shape is not None:
         shape, flow = outcome.shape, outcome.flow
     else:
@@ -128,7 +138,14 @@ def evidence_of(case: Case, *, loaded: Loaded | None = None, outcome: Outcome | 
         flow = lay_case(case, shape)
     # a mirrored outcome is that of the whole: what is reviewed is the part
     done = outcome if outcome is not None and not case.surface.mirror else None
-    done = done or balance_of(shape.surface, flow, anchor=case.anchor.at, hardware=hardware_of(case))
+    done = done or balance_of(
+        shape.surface,
+        flow,
+        anchor=case.anchor.at,
+        hardware=hardware_of(case),
+        storage=storage_in(case, shape),
+        contents=contents_in(case, shape),
+    )
     named = tuple(_named(case))
     used = {name for array in named for name in array.names}
     if case.surface.groups is not None and case.surface.groups.array is not None:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import replace
 
 import numpy as np
@@ -11,16 +13,36 @@ from fluxmesh.case.model import Case
 from fluxmesh.errors import FieldError, InputError
 from fluxmesh.field.field import Field, absent_field, constant_field, supply
 from fluxmesh.field.flow import Flow, face_arrays_of, require_flow
+from fluxmesh.field.frame import Frame
 from fluxmesh.field.gas import ideal_density
 from fluxmesh.field.pressure import Head, PressureKind, PressureMeaning
+from fluxmesh.field.relative import relative_velocity
 from fluxmesh.integral.samples import Samples, sample_places
 from fluxmesh.job.exported import exported_field
 from fluxmesh.job.sampled import Sampled, sample_source, sampled_field
+from fluxmesh.job.scalars import Scalars, scalars_of, temperature_of
 from fluxmesh.job.shape import Shape
 from fluxmesh.job.supplied import shaped_groups, supply_flow, supply_values
 from fluxmesh.job.tractions import traction_of
 
-__all__ = ["lay_case"]
+__all__ = ["frame_of", "lay_case", "lay_with_scalars"]
+
+
+def frame_of(case: Case) -> Frame | None:
+    """Return the motion of the control surface of a case; None where it stands.
+
+    Parameters
+    ----------
+    case : Case
+        The case.
+    """
+    asked = case.frame
+    if asked is None:
+        return None
+    if asked.rotation is None:
+        return Frame(asked.velocity, asked.acceleration)
+    turn = asked.rotation
+    return Frame(asked.velocity, asked.acceleration, float(turn.rate), turn.axis, turn.through)
 
 
 def lay_case(case: Case, shape: Shape) -> Flow:
@@ -43,18 +65,50 @@ def lay_case(case: Case, shape: Shape) -> Flow:
     InputError
         Data that cannot be used; the message names them.
     """
+    with _named(case):
+        return _lay(case, shape)[0]
+
+
+def lay_with_scalars(case: Case, shape: Shape) -> tuple[Flow, Scalars]:
+    """Lay the flow data of a case on its surface, with all else that the flow carries.
+
+    Parameters
+    ----------
+    case : Case
+        The case.
+    shape : Shape
+        Its surface and arrays.
+
+    Returns
+    -------
+    flow : Flow
+        As `lay_case`.
+    scalars : Scalars
+        Temperature, enthalpy and carried scalars.
+
+    Raises
+    ------
+    InputError
+        Data that cannot be used; the message names them.
+    """
+    with _named(case):
+        flow, sampled = _lay(case, shape)
+        return flow, scalars_of(case, shape, flow, sampled)
+
+
+@contextmanager
+def _named(case: Case) -> Iterator[None]:
+    """Name the case in the errors of a piece of work."""
     try:
-        flow = _lay(case, shape)
-        require_flow(shape.surface, flow)
+        yield
     except InputError as error:
         name = case.path.name
         if error.where.startswith(name):
             raise
         raise type(error)(error.found, f"{name}: {error.where}" if error.where else name, error.remedy) from error
-    return flow
 
 
-def _lay(case: Case, shape: Shape) -> Flow:
+def _lay(case: Case, shape: Shape) -> tuple[Flow, Sampled | None]:
     surface = shape.surface
     samples = _samples(case, shape)
     sampled = None if samples is None else sample_source(case, shape, samples)
@@ -63,9 +117,11 @@ def _lay(case: Case, shape: Shape) -> Flow:
         flow = replace(flow, notes=sampled.notes, sampling=sampled.data())
     flow = supply_values(case, flow)
     if case.fluid.law is not None:
-        flow = replace(flow, density=_gas_density(case, shape, flow, samples, sampled))
+        flow = replace(flow, density=_gas_density(case, shape, flow, sampled))
     flow, notes = supply_flow(case, surface, flow, samples)
-    return replace(flow, notes=(*flow.notes, *notes))
+    flow = replace(flow, notes=(*flow.notes, *notes))
+    require_flow(surface, flow)
+    return flow, sampled
 
 
 def _samples(case: Case, shape: Shape) -> Samples | None:
@@ -77,11 +133,26 @@ def _samples(case: Case, shape: Shape) -> Samples | None:
     on_faces = tensor is not None and tensor.array in shape.arrays.face and surface.kinds is None
     if asked.volume is not None or asked.points is not None or (tensor is not None and not on_faces):
         chosen[:] = True
+    chosen |= _turning_groups(case, shape)
     for name in shaped_groups(case):
         chosen[list(case.groups).index(name)] = True
     if not chosen.any():
         return None
     return sample_places(face_arrays_of(surface), chosen[surface.group_of_face])
+
+
+def _turning_groups(case: Case, shape: Shape) -> NDArray[np.bool_]:
+    """Groups with one absolute velocity a face or in all, on a surface that turns: relative to it that varies."""
+    found = np.zeros(len(case.groups), np.bool_)
+    if case.frame is None or case.frame.rotation is None:
+        return found
+    entry = case.flow.velocity
+    if entry is not None and entry.frame == "absolute":
+        found[:] = entry.at != "nodes" and entry.array[0] in shape.arrays.face
+    for k, section in enumerate(case.groups.values()):
+        if section.velocity is not None and section.velocity_frame == "absolute":
+            found[k] = True
+    return found
 
 
 def _fields(case: Case, shape: Shape, samples: Samples | None, sampled: Sampled | None) -> Flow:
@@ -92,6 +163,9 @@ def _fields(case: Case, shape: Shape, samples: Samples | None, sampled: Sampled 
         velocity = _field(
             shape, sampled, "velocity", 3, asked.velocity.array, asked.velocity.at, asked.velocity.unit.factor
         )
+    frame = frame_of(case)
+    if frame is not None and asked.velocity is not None and asked.velocity.frame == "absolute":
+        velocity = relative_velocity(surface, velocity, frame, samples=samples)
     pressure, meaning = absent_field(surface, "pressure", 1), PressureMeaning()
     if asked.pressure is not None:
         entry = asked.pressure
@@ -108,6 +182,7 @@ def _fields(case: Case, shape: Shape, samples: Samples | None, sampled: Sampled 
         gravity=case.fluid.gravity,
         viscosity=None if case.fluid.viscosity is None else float(case.fluid.viscosity),
         sample_start=np.empty(0, np.int64) if samples is None else samples.start,
+        frame=frame,
     )
 
 
@@ -139,18 +214,10 @@ def _density(case: Case, shape: Shape, sampled: Sampled | None) -> Field:
     return density
 
 
-def _gas_density(case: Case, shape: Shape, flow: Flow, samples: Samples | None, sampled: Sampled | None) -> Field:
+def _gas_density(case: Case, shape: Shape, flow: Flow, sampled: Sampled | None) -> Field:
     """Density of an ideal gas, with the densities that groups supply in place of it."""
-    surface, fluid, entry = shape.surface, case.fluid, case.flow.temperature
-    temperature = absent_field(surface, "temperature", 1)
-    if entry is not None:
-        temperature = _field(shape, sampled, "temperature", 1, (entry.array,), entry.at, entry.unit.factor)
-    if fluid.temperature is not None:
-        constant = constant_field(surface, "temperature", 1, float(fluid.temperature))
-        temperature = constant if entry is None else _filled(temperature, constant)
-    for k, section in enumerate(case.groups.values()):
-        if section.temperature is not None:
-            temperature = supply(temperature, k, float(section.temperature))
+    surface, fluid = shape.surface, case.fluid
+    temperature = temperature_of(case, shape, sampled)
     assert fluid.gas_constant is not None
     assert flow.ambient is not None
     density = ideal_density(

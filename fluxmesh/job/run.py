@@ -3,120 +3,39 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field, replace
-from typing import TYPE_CHECKING, Any, Final
+from dataclasses import replace
+from typing import Final
 
 import numpy as np
 
 from fluxmesh.assess.assumptions import assumptions_of
-from fluxmesh.assess.comparison import Comparison, compare_reported
-from fluxmesh.assess.verdict import Verdict, verdict_of
-from fluxmesh.balance.balance import Balance, balance_table
+from fluxmesh.assess.comparison import compare_reported
+from fluxmesh.assess.verdict import verdict_of
+from fluxmesh.balance.balance import balance_table
+from fluxmesh.balance.losses import port_losses
 from fluxmesh.balance.setting import GroupData, Hardware, Setting
+from fluxmesh.balance.storage import Storage
 from fluxmesh.case.model import Case
 from fluxmesh.errors import FieldError
+from fluxmesh.field.contents import Contents
 from fluxmesh.field.flow import Flow, integrate_flow
+from fluxmesh.field.port_samples import sample_ports
 from fluxmesh.field.pressure import Head
 from fluxmesh.integral.layout import PER_GROUP
 from fluxmesh.integral.table import IntegralTable
-from fluxmesh.job.laid import lay_case
+from fluxmesh.job.fluid import named_fluid
+from fluxmesh.job.inside import contents_in, storage_in
+from fluxmesh.job.laid import lay_with_scalars
 from fluxmesh.job.mesh import Loaded
-from fluxmesh.job.shape import Shape, read_shape
-from fluxmesh.report.result import result_data
+from fluxmesh.job.outcome import Outcome
+from fluxmesh.job.scalars import Scalars, balance_scalars
+from fluxmesh.job.shape import read_shape
 from fluxmesh.surface.surface import ControlSurface
 
 __all__ = ["REVIEWED_FACES", "Outcome", "balance_of", "hardware_of", "run_case"]
 
-
-if TYPE_CHECKING:
-    from fluxmesh.assess.review import Doubt
-
 REVIEWED_FACES: Final = 300_000
 """Most faces that `balance` reviews for doubts on the way: beyond, that costs more than the balance."""
-
-
-@dataclass(frozen=True, eq=False)
-class Outcome:
-    """A job done.
-
-    Attributes
-    ----------
-    title : str
-        Title of the case.
-    surface : ControlSurface
-        The surface.
-    flow : Flow
-        The flow on it.
-    balance : Balance
-        Every law.
-    verdict : Verdict
-        Whether the numbers close.
-    assumptions : tuple of str
-        What the figures assume.
-    comparison : Comparison or None
-        A reported load beside ours.
-    source : dict
-        Names and hashes of the files that it came from.
-    shape : Shape or None
-        The surface with the arrays of its file; None without a case.
-    doubts : tuple of Doubt or None
-        What a review found; None where there was none.
-    """
-
-    title: str
-    surface: ControlSurface
-    flow: Flow
-    balance: Balance
-    verdict: Verdict
-    assumptions: tuple[str, ...]
-    comparison: Comparison | None = None
-    source: dict[str, Any] = field(default_factory=dict)
-    shape: Shape | None = None
-    doubts: tuple[Doubt, ...] | None = None
-
-    @property
-    def notes(self) -> tuple[str, ...]:
-        """What was mended, sampled or solved on the way, one sentence each."""
-        return (*self.surface.notes, *self.flow.notes)
-
-    def picture_notes(self) -> tuple[str, ...]:
-        """Return what must stand in a picture: verdict, moment of the reaction, assumptions."""
-        verdict = {True: "closes", False: "DOES NOT CLOSE", None: "cannot be judged in full"}[self.verdict.closes]
-        said = [f"Verdict: the balance {verdict}"]
-        said += [f"DOUBT: {doubt.seen}" for doubt in self.doubts or ()]
-        if self.balance.reaction is not None:
-            moment = ", ".join(f"{x:.4g}" for x in self.balance.reaction.wrench.moment)
-            said.append(f"With the reaction at the anchor goes a moment of ({moment}) N m")
-        return (*said, *self.assumptions)
-
-    def data(self) -> dict[str, Any]:
-        """Return everything as plain data, the content of ``balance.json``."""
-        return result_data(
-            self.balance,
-            self.verdict,
-            title=self.title,
-            assumptions=self.assumptions,
-            notes=self.notes,
-            comparison=self.comparison,
-            inputs=self.inputs(),
-            doubts=self.doubts,
-        )
-
-    def inputs(self) -> dict[str, Any]:
-        """Return what the figures were computed from, SI units."""
-        setting = self.balance.setting
-        hardware = setting.hardware
-        return {
-            "density": self.flow.uniform_density(),
-            "density_of_fluid_held": setting.fluid_density,
-            "ambient_pressure": self.flow.ambient,
-            "gravity": setting.gravity,
-            "pressure": {"kind": self.flow.meaning.kind.value, "head": self.flow.meaning.head.value},
-            "anchor": setting.anchor,
-            "hardware": None if hardware is None else {"mass": hardware.mass, "centre": hardware.centre},
-            "sampling": self.flow.sampling,
-            **self.source,
-        }
 
 
 def _held_density(flow: Flow, table: IntegralTable) -> tuple[float | None, bool]:
@@ -139,6 +58,11 @@ def balance_of(
     title: str = "",
     mirror: bool = False,
     heat_ratio: float | None = None,
+    gas_constant: float | None = None,
+    scalars: Scalars | None = None,
+    losses: Sequence[tuple[tuple[str, str], str | None]] = (),
+    storage: Storage | None = None,
+    contents: Contents | None = None,
     threads: int | None = None,
 ) -> Outcome:
     """Balance a flow over a surface and judge it.
@@ -162,7 +86,18 @@ def balance_of(
     mirror : bool, optional
         Whether a part model, cut at its symmetry groups, is reported whole.
     heat_ratio : float, optional
-        Ratio of the heats of an ideal gas, for Mach numbers.
+        Ratio of the heats of an ideal gas, for Mach numbers and total pressures.
+    gas_constant : float, optional
+        Of an ideal gas, J/(kg K), for temperatures.
+    scalars : Scalars, optional
+        What is known of temperature, enthalpy and other carried scalars.
+    losses : sequence of ((str, str), str or None), optional
+        Pairs of ports to give the loss between, and the port whose speed it refers to.
+    storage : Storage, optional
+        Rates of what the volume holds, seen from the control surface; steady by default.
+    contents : Contents, optional
+        What the volume holds, of velocity relative to the control surface: for what
+        the surface alone cannot tell where it turns, or where the density varies.
     threads : int, optional
         Threads; all cores by default. The result does not depend on it.
 
@@ -197,13 +132,18 @@ def balance_of(
         ),
         heat_ratio=heat_ratio,
         ambient=flow.ambient,
+        frame=flow.frame,
     )
     restored = flow.meaning.head is Head.REMOVED and bool(np.any(flow.gravity))
+    thermal = Scalars() if scalars is None else scalars
+    ports = sample_ports(
+        surface, flow, table, temperature=thermal.temperature, heat_ratio=heat_ratio, gas_constant=gas_constant
+    )
     if mirror:
         from fluxmesh.balance.mirror import whole_model
 
         table, setting = whole_model(table, setting, head_restored=restored)
-    done = balance_table(table, setting)
+    done = balance_table(table, setting, storage=storage, contents=contents, ports=ports)
     assumptions = assumptions_of(
         done,
         ambient=flow.ambient,
@@ -212,8 +152,20 @@ def balance_of(
         mirrored=mirror,
     )
     assumptions += tuple(_viscous_estimates(surface, flow, mirror))
-    verdict = verdict_of(done, tolerance=tolerance, encloses_hardware=encloses_hardware)
-    return Outcome(title, surface, flow, done, verdict, assumptions)
+    assumptions += tuple(f"At {name} {note}" for name, port in ports.items() for note in port.notes)
+    energy, carried = balance_scalars(surface, flow, done, thermal, storage=storage, mirror=mirror, threads=threads)
+    verdict = verdict_of(done, tolerance=tolerance, encloses_hardware=encloses_hardware, energy=energy, carried=carried)
+    return Outcome(
+        title,
+        surface,
+        flow,
+        done,
+        verdict,
+        assumptions,
+        energy=energy,
+        carried=carried,
+        losses=port_losses(done.table, done.setting, done.ports, losses),
+    )
 
 
 def _viscous_estimates(surface: ControlSurface, flow: Flow, mirrored: bool) -> list[str]:
@@ -245,7 +197,14 @@ def hardware_of(case: Case) -> Hardware | None:
     return Hardware(float(case.hardware.mass), case.hardware.centre or (0.0, 0.0, 0.0))
 
 
-def run_case(case: Case, *, loaded: Loaded | None = None, threads: int | None = None) -> Outcome:
+def run_case(
+    case: Case,
+    *,
+    loaded: Loaded | None = None,
+    threads: int | None = None,
+    storage: Storage | None = None,
+    contents: Contents | None = None,
+) -> Outcome:
     """Do the main job for a case.
 
     Parameters
@@ -256,6 +215,10 @@ def run_case(case: Case, *, loaded: Loaded | None = None, threads: int | None = 
         Its mesh, if it was read before.
     threads : int, optional
         Threads; all cores by default.
+    storage : Storage, optional
+        Rates of what the volume holds, in place of those that the case gives.
+    contents : Contents, optional
+        What the volume holds, in place of the volume that the case gives.
 
     Returns
     -------
@@ -267,8 +230,10 @@ def run_case(case: Case, *, loaded: Loaded | None = None, threads: int | None = 
     InputError
         The input is at fault; the message says where.
     """
+    case, said = named_fluid(case)
     shape = read_shape(case, loaded)
-    flow = lay_case(case, shape)
+    flow, scalars = lay_with_scalars(case, shape)
+    fluid = case.fluid
     done = balance_of(
         shape.surface,
         flow,
@@ -278,7 +243,12 @@ def run_case(case: Case, *, loaded: Loaded | None = None, threads: int | None = 
         encloses_hardware=case.closure.encloses_hardware,
         title=case.title or case.name,
         mirror=case.surface.mirror,
-        heat_ratio=None if case.fluid.heat_ratio is None else float(case.fluid.heat_ratio),
+        heat_ratio=None if fluid.heat_ratio is None else float(fluid.heat_ratio),
+        gas_constant=None if fluid.gas_constant is None else float(fluid.gas_constant),
+        scalars=scalars,
+        losses=[((loss.between[0], loss.between[1]), loss.speed_of) for loss in case.loss],
+        storage=storage_in(case, shape) if storage is None else storage,
+        contents=contents_in(case, shape) if contents is None else contents,
         threads=threads,
     )
     files = [case.surface.file, *(case.surface.files or {}).values()]
@@ -288,7 +258,7 @@ def run_case(case: Case, *, loaded: Loaded | None = None, threads: int | None = 
         "files": [file.name for file in files if file is not None],
         "length_unit": case.surface.length_unit.unit,
     }
-    done = replace(done, source=source, shape=shape)
+    done = replace(done, source=source, shape=shape, said=said)
     asked = case.reported
     if asked is None:
         return done

@@ -8,7 +8,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from fluxmesh.case.arrays import FlowSection, PointSource, VolumeSource
+from fluxmesh.case.arrays import PointSource, VolumeSource
 from fluxmesh.case.model import Case
 from fluxmesh.errors import FieldError, InputError
 from fluxmesh.field.field import Field, absent_field
@@ -19,9 +19,9 @@ from fluxmesh.surface.surface import ControlSurface, Role
 from fluxmesh.surface.wording import length_text
 from fluxmesh.units import unit_factor
 
-__all__ = ["Sampled", "sample_source", "sampled_field"]
+__all__ = ["Sampled", "carried_key", "sample_source", "sampled_field"]
 
-_QUANTITIES = ("velocity", "pressure", "traction", "density", "temperature", "stress", "velocity_gradient")
+_QUANTITIES = ("velocity", "pressure", "traction", "density", "temperature", "enthalpy", "stress", "velocity_gradient")
 _COMPONENTS = {"velocity": (3,), "traction": (3,), "stress": (6, 9), "velocity_gradient": (9,)}
 
 
@@ -71,13 +71,32 @@ class Sampled:
         return (f"Interpolated from {self.source}; points left out are predicted to (of the range): {told}",)
 
 
-def _names(asked: FlowSection) -> dict[str, tuple[str, ...]]:
-    names = {}
+def _wanted(case: Case) -> tuple[dict[str, tuple[str, ...]], dict[str, str]]:
+    """Arrays of each quantity that the case names, and where to look for them if it says so."""
+    names, places = {}, {}
     for quantity in _QUANTITIES:
-        entry = getattr(asked, quantity)
+        entry = getattr(case.flow, quantity)
         if entry is not None:
             names[quantity] = entry.array if isinstance(entry.array, tuple) else (entry.array,)
-    return names
+            if entry.at is not None:
+                places[quantity] = entry.at
+    for scalar in case.carried:
+        if scalar.array is not None:
+            names[carried_key(scalar.name)] = (scalar.array,)
+            if scalar.at is not None:
+                places[carried_key(scalar.name)] = scalar.at
+    return names, places
+
+
+def carried_key(name: str) -> str:
+    """Return the key that a carried scalar is sampled under.
+
+    Parameters
+    ----------
+    name : str
+        Its name in the case.
+    """
+    return f"carried {name}"
 
 
 def sample_source(case: Case, shape: Shape, samples: Samples) -> Sampled | None:
@@ -107,11 +126,11 @@ def sample_source(case: Case, shape: Shape, samples: Samples) -> Sampled | None:
     source = asked.volume or asked.points
     if source is None:
         return None
-    names = _names(asked)
+    names, places = _wanted(case)
     reach = None if source.reach is None else float(source.reach)
     try:
         if isinstance(source, VolumeSource):
-            return _from_volume(source, asked, names, samples, reach)
+            return _from_volume(source, places, names, samples, reach)
         return _from_points(source, names, samples, reach)
     except InputError as error:
         key = "flow.volume" if isinstance(source, VolumeSource) else "flow.points"
@@ -123,7 +142,7 @@ def sample_source(case: Case, shape: Shape, samples: Samples) -> Sampled | None:
 
 def _from_volume(
     source: VolumeSource,
-    asked: FlowSection,
+    places: Mapping[str, str],
     names: Mapping[str, tuple[str, ...]],
     samples: Samples,
     reach: float | None,
@@ -131,8 +150,7 @@ def _from_volume(
     from fluxmesh.field.volume import sample_volume
     from fluxmesh.surface.readers.volume_grid import read_volume
 
-    places = {quantity: getattr(asked, quantity).at for quantity in names}
-    at = {quantity: "cells" if at == "faces" else at for quantity, at in places.items() if at is not None}
+    at = {quantity: "cells" if place == "faces" else place for quantity, place in places.items()}
     found = sample_volume(
         read_volume(source.file),
         names,
@@ -140,7 +158,7 @@ def _from_volume(
         scale=source.unit.factor,
         reach=reach,
         at=at,
-        components={quantity: wanted for quantity, wanted in _COMPONENTS.items() if quantity in names},
+        components={quantity: _COMPONENTS.get(quantity, (1,)) for quantity in names},
     )
     inside = found.exact
     return Sampled(
@@ -201,7 +219,7 @@ def sampled_field(surface: ControlSurface, sampled: Sampled, quantity: str, comp
     sampled : Sampled
         What was sampled, at the quadrature points of all groups.
     quantity : str
-        A key of the case's [flow].
+        A key of the case's [flow], or that of `carried_key`.
     components : int
         How many it has.
     scale : float
@@ -225,5 +243,5 @@ def sampled_field(surface: ControlSurface, sampled: Sampled, quantity: str, comp
         where=where,
         sample=values,
         scale=scale,
-        label=f"{name} sampled from {sampled.source} (flow.{quantity})",
+        label=f"{name} sampled from {sampled.source}" + (f" (flow.{quantity})" if quantity in _QUANTITIES else ""),
     )

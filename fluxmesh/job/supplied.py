@@ -14,6 +14,7 @@ from fluxmesh.errors import FieldError
 from fluxmesh.field.field import Field, supply
 from fluxmesh.field.flow import Flow, integrate_flow, still_flow
 from fluxmesh.field.gas import sound_speed
+from fluxmesh.field.relative import relative_velocity
 from fluxmesh.field.supplied import require_direction, uniform_velocity
 from fluxmesh.integral.layout import ABSENT, AT_SAMPLE, PER_GROUP
 from fluxmesh.integral.samples import Samples
@@ -101,11 +102,13 @@ def supply_flow(
     solved = [k for k, section in enumerate(case.groups.values()) if section.from_continuity]
     if not moving and not solved:
         return flow, ()
-    areas = integrate_flow(surface, still_flow(surface)).column("area_vector")
+    still = integrate_flow(surface, still_flow(surface))
+    areas, sizes = still.column("area_vector"), still.column("area")
+    middles = still.origin + still.column("position") / np.where(sizes > 0, sizes, 1.0)[:, None]
     names = list(case.groups)
     sections = list(case.groups.values())
     for k in moving:
-        flow = _lay(surface, flow, k, sections[k], areas[k], samples)
+        flow = _lay(surface, flow, k, sections[k], areas[k], samples, middle=middles[k])
     notes: list[str] = []
     for k in solved:
         flow = replace(flow, velocity=_without(flow.velocity, k), mass_flux=_without(flow.mass_flux, k))
@@ -133,12 +136,17 @@ def _lay(
     area: NDArray[np.float64],
     samples: Samples | None,
     solved: float | None = None,
+    middle: NDArray[np.float64] | None = None,
 ) -> Flow:
     name = surface.groups[k].name
     velocity: Vector
+    absolute = flow.frame is not None and section.velocity is not None and section.velocity_frame == "absolute"
     if section.velocity is not None:
-        require_direction(name, section.role, area, section.velocity)
         velocity = section.velocity
+        through = np.asarray(velocity)
+        if absolute and flow.frame is not None and middle is not None:
+            through = through - flow.frame.at(middle)
+        require_direction(name, section.role, area, (float(through[0]), float(through[1]), float(through[2])))
     elif solved is not None:
         size = float(np.linalg.norm(area))
         velocity = uniform_velocity(name, Role.OPEN, area, speed=solved / size if size > 0 else 0.0)
@@ -153,6 +161,10 @@ def _lay(
             density=_one_density(flow, k, name) if section.mass_flow is not None else None,
         )
     flow = replace(flow, mass_flux=_without(flow.mass_flux, k))
+    if absolute and flow.frame is not None:
+        one = np.arange(len(surface.groups)) == k
+        even = supply(flow.velocity, k, velocity)
+        return replace(flow, velocity=relative_velocity(surface, even, flow.frame, groups=one, samples=samples))
     if section.profile == "uniform" or samples is None:
         return replace(flow, velocity=supply(flow.velocity, k, velocity))
     from fluxmesh.field.profiles.port import PortPatch

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from dataclasses import asdict
+from math import isnan
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final
 
@@ -13,8 +14,14 @@ from fluxmesh.assess.assumptions import CAUTIONS
 from fluxmesh.assess.comparison import Comparison
 from fluxmesh.assess.verdict import Verdict, relative_without_mean_pressure
 from fluxmesh.balance.balance import Balance
+from fluxmesh.balance.carried import CarriedBalance
+from fluxmesh.balance.energy import EnergyBalance
+from fluxmesh.balance.losses import Loss
 from fluxmesh.balance.momentum import Ledger
-from fluxmesh.balance.wrench import Wrench
+from fluxmesh.balance.wrench import Vector, Wrench
+from fluxmesh.errors import FieldError
+from fluxmesh.report.laws import carried_data, energy_data
+from fluxmesh.report.ports import losses_data, ports_data
 from fluxmesh.report.whole import write_whole
 
 __all__ = ["SCHEMA", "result_data", "write_json"]
@@ -34,7 +41,9 @@ def _plain(value: Any) -> Any:
     if isinstance(value, list | tuple):
         return [_plain(item) for item in value]
     if isinstance(value, np.floating | np.integer | np.bool_):
-        return value.item()
+        value = value.item()
+    if isinstance(value, float) and isnan(value):
+        return None  # what is not known
     return value
 
 
@@ -44,14 +53,19 @@ def _ledger(ledger: Ledger, complete: bool) -> dict[str, Any]:
         "pressure": ledger.pressure(),
         "viscous": ledger.viscous(),
         "weight": ledger.weight,
-        "storage": ledger.storage,
-        "residual": ledger.residual() if complete else None,
+        "storage": _whole(ledger.storage),
+        "residual": ledger.residual() if complete and ledger.known else None,
         "relative": ledger.relative() if complete else None,
     }
 
 
 def _load(wrench: Wrench | None) -> dict[str, Any] | None:
-    return None if wrench is None else {"force": wrench.force, "moment": wrench.moment}
+    return None if wrench is None else {"force": wrench.force, "moment": _whole(wrench.moment)}
+
+
+def _whole(vector: Vector) -> Vector | None:
+    """A vector, or None where it is not known."""
+    return vector if np.isfinite(vector).all() else None
 
 
 def _groups(balance: Balance) -> dict[str, Any]:
@@ -82,24 +96,6 @@ def _groups(balance: Balance) -> dict[str, Any]:
     return rows
 
 
-def _ports(balance: Balance) -> dict[str, Any]:
-    return {
-        name: {
-            "mean_pressure": {"area": port.mean_pressure_area, "mass_flow": port.mean_pressure_mass_flow},
-            "mean_total_pressure": {
-                "area": port.mean_total_pressure_area,
-                "mass_flow": port.mean_total_pressure_mass_flow,
-            },
-            "mean_speed": port.mean_speed,
-            "momentum_factor": port.momentum_factor,
-            "kinetic_energy_factor": port.kinetic_energy_factor,
-            "reversed_share": port.reversed_share,
-            "mach_number": port.mach_number,
-        }
-        for name, port in balance.ports.items()
-    }
-
-
 def _doubt(doubt: Doubt) -> dict[str, str]:
     return {"kind": doubt.kind, "seen": doubt.seen, "matters": doubt.matters, "settle": doubt.remedy()}
 
@@ -114,6 +110,9 @@ def result_data(
     comparison: Comparison | None = None,
     inputs: dict[str, Any] | None = None,
     doubts: tuple[Doubt, ...] | None = None,
+    energy: EnergyBalance | None = None,
+    carried: tuple[CarriedBalance, ...] = (),
+    losses: tuple[Loss, ...] = (),
 ) -> dict[str, Any]:
     """Return a balance as plain data, SI units throughout.
 
@@ -135,6 +134,12 @@ def result_data(
         What the figures were computed from.
     doubts : tuple of Doubt, optional
         What a review found; null in the file where there was none.
+    energy : EnergyBalance, optional
+        The energy law.
+    carried : tuple of CarriedBalance, optional
+        Carried scalars.
+    losses : tuple of Loss, optional
+        Losses between ports.
 
     Returns
     -------
@@ -168,7 +173,7 @@ def result_data(
         },
         "reaction": None,
         "fluid": asdict(balance.fluid) if balance.fluid else None,
-        "ports": _ports(balance),
+        "ports": ports_data(balance.ports),
         "verdict": asdict(verdict),
         "inputs": inputs or {},
         "assumptions": assumptions,
@@ -191,13 +196,27 @@ def result_data(
             "basis": balance.reaction.basis,
             "at": balance.reaction.wrench.at,
             "force": balance.reaction.wrench.force,
-            "moment": balance.reaction.wrench.moment,
-            "line_of_action": {"point": axis.point, "direction": axis.direction, "couple": axis.couple},
+            "moment": _whole(balance.reaction.wrench.moment),
+            "line_of_action": None
+            if isnan(axis.couple)
+            else {"point": axis.point, "direction": axis.direction, "couple": axis.couple},
         }
+    frame = balance.setting.frame
+    if frame is not None:
+        data["frame"] = {**asdict(frame), "power_on_hardware": asdict(balance.power) if balance.power else None}
+        if balance.axial is not None:
+            data["frame"]["about_axis"] = _ledger(balance.axial, balance.axial.known)
+    data["storage"] = {"basis": balance.storage.basis, "notes": balance.storage.notes}
     if balance.short_form is not None:
         data["short_form"] = asdict(balance.short_form)
     if balance.release is not None:
         data["release"] = asdict(balance.release)
+    if energy is not None:
+        data["energy"] = energy_data(energy, balance.setting)
+    if carried:
+        data["carried"] = carried_data(carried, balance.setting)
+    if losses:
+        data["losses"] = losses_data(losses)
     if comparison is not None:
         data["reported"] = asdict(comparison)
     plain: dict[str, Any] = _plain(data)
@@ -218,6 +237,13 @@ def write_json(data: dict[str, Any], path: Path) -> None:
     ------
     OutputError
         The folder or file cannot be written.
+    FieldError
+        A figure that has overflowed.
     """
-    text = json.dumps(data, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+    try:
+        text = json.dumps(data, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+    except ValueError as error:
+        raise FieldError(
+            "a figure overflows", remedy="Check the numbers of the case and the fields for absurd sizes"
+        ) from error
     write_whole(text.encode("utf-8"), path)

@@ -118,6 +118,10 @@ def _arrows(balance: Balance) -> list[Arrow]:
         arrows.append(
             Arrow("weight", "weight of fluid", "gravity on fluid", balance.fluid.centre, balance.fluid.weight)
         )
+    stored = balance.momentum.storage
+    if balance.momentum.known and np.any(stored) and balance.enclosed is not None:
+        inside = balance.fluid.centre if balance.fluid is not None else balance.enclosed.centroid
+        arrows.append(Arrow("momentum", "inertia of the fluid", "its change of momentum, turned", inside, -stored))
     hardware = setting.hardware
     if hardware is not None and np.any(setting.gravity):
         weight = hardware.mass * np.asarray(setting.gravity)
@@ -129,7 +133,8 @@ def _arrows(balance: Balance) -> list[Arrow]:
         axis = central_axis(load)
         # nearest to the body, not to the anchor: the line of action may pass far from it
         middle = table.origin if balance.enclosed is None else balance.enclosed.centroid
-        at = axis.point + axis.direction * float((middle - axis.point) @ axis.direction)
+        known = bool(np.isfinite(axis.point).all())
+        at = axis.point + axis.direction * float((middle - axis.point) @ axis.direction) if known else middle
         arrows.append(
             Arrow(
                 "resultant",

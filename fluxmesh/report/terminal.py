@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -11,8 +11,15 @@ from fluxmesh.assess.assumptions import CAUTIONS
 from fluxmesh.assess.comparison import Comparison
 from fluxmesh.assess.verdict import Verdict
 from fluxmesh.balance.balance import Balance
+from fluxmesh.balance.carried import CarriedBalance
+from fluxmesh.balance.energy import EnergyBalance
+from fluxmesh.balance.losses import Loss
 from fluxmesh.balance.weight import weight_wrench
-from fluxmesh.balance.wrench import Vector, Wrench
+from fluxmesh.balance.wrench import Wrench
+from fluxmesh.report.laws import carried_lines, carried_table, energy_lines, energy_table
+from fluxmesh.report.motion import motion_lines
+from fluxmesh.report.ports import losses_lines, losses_table, ports_tables
+from fluxmesh.report.tables import figure, place, row, stack, table
 from fluxmesh.surface.surface import ControlSurface
 
 if TYPE_CHECKING:
@@ -20,60 +27,7 @@ if TYPE_CHECKING:
 
     from fluxmesh.assess.review import Doubt
 
-__all__ = ["figure", "print_balance"]
-
-
-def figure(value: float | None, scale: float = 0.0) -> str:
-    """Return a number to five significant digits.
-
-    Parameters
-    ----------
-    value : float or None
-        The number; None prints as a dash.
-    scale : float, optional
-        Size of the quantities it stands among: what lies below 1e-12 of it is
-        round-off, and prints as 0.
-
-    Returns
-    -------
-    str
-        As "-1,234.5" or "1.2345e-07".
-    """
-    if value is None:
-        return "–"
-    if value == 0.0 or abs(value) <= 1e-12 * scale:
-        return "0"
-    if 1e-3 <= abs(value) < 1e7:
-        exponent = int(f"{abs(value):.4e}".partition("e")[2])  # of the rounded number
-        return f"{value:,.{max(0, 4 - exponent)}f}"
-    return f"{value:.4e}"
-
-
-def _stack(vector: Vector, scale: float) -> str:
-    return "\n".join(figure(float(x), scale) for x in vector)
-
-
-def _row(vector: Vector, scale: float | None = None) -> str:
-    size = float(np.linalg.norm(vector)) if scale is None else scale
-    return "(" + ", ".join(figure(float(x), size) for x in vector) + ")"
-
-
-def _place(point: Vector) -> str:
-    return "(" + ", ".join(f"{x if abs(x) > 1e-12 else 0.0:.5g}" for x in point.tolist()) + ")"
-
-
-def _table(title: str, columns: Sequence[tuple[str, str]], rows: Iterable[Sequence[str]]) -> Any:
-    from rich import box
-    from rich.table import Table
-    from rich.text import Text
-
-    table = Table(title=title, title_justify="left", title_style="bold", box=box.HORIZONTALS, pad_edge=False)
-    for heading, justify in columns:
-        table.add_column(heading, justify="right" if justify == "right" else "left", no_wrap=justify == "right")
-    for row in rows:
-        # Text and not markup: names come from outside
-        table.add_row(*(Text(cell) for cell in row))
-    return table
+__all__ = ["print_balance"]
 
 
 def _surface_lines(balance: Balance, surface: ControlSurface) -> list[str]:
@@ -83,10 +37,10 @@ def _surface_lines(balance: Balance, surface: ControlSurface) -> list[str]:
     lines = [f"Surface: {surface.face_count:,} faces, {state}{shells}, area {figure(area)} m²"]
     if balance.enclosed is not None:
         lines.append(
-            f"Volume inside: {figure(balance.enclosed.volume)} m³, centroid {_place(balance.enclosed.centroid)} m"
+            f"Volume inside: {figure(balance.enclosed.volume)} m³, centroid {place(balance.enclosed.centroid)} m"
         )
     if balance.fluid is not None:
-        lines.append(f"Fluid held: {figure(balance.fluid.mass)} kg, weight {_row(balance.fluid.weight)} N")
+        lines.append(f"Fluid held: {figure(balance.fluid.mass)} kg, weight {row(balance.fluid.weight)} N")
     return lines
 
 
@@ -103,16 +57,19 @@ def _ledger(balance: Balance) -> Any:
                 f"{group.name}\n{group.role.value}",
                 figure(float(flows[k]), through) if data.flux[k] or not group.role.is_port else "not given",
                 "x\ny\nz",
-                _stack(ledger.group_flux[k], size),
-                _stack(ledger.group_pressure[k], size) if data.pressure[k] else "not given",
-                _stack(ledger.group_viscous[k], size) if data.traction[k] else "not given",
+                stack(ledger.group_flux[k], size),
+                stack(ledger.group_pressure[k], size) if data.pressure[k] else "not given",
+                stack(ledger.group_viscous[k], size) if data.traction[k] else "not given",
             ]
         )
     if balance.mass is not None:
-        rows.append(["weight of fluid", "", "x\ny\nz", "", _stack(ledger.weight, size), ""])
-        residual = _stack(ledger.residual(), size) if balance.complete else "not known"
+        rows.append(["weight of fluid", "", "x\ny\nz", "", stack(ledger.weight, size), ""])
+        if np.any(ledger.storage) or balance.mass.storage != 0.0:
+            stored = stack(ledger.storage, size) if ledger.known else "not known"
+            rows.append(["stored inside", figure(balance.mass.storage, through), "x\ny\nz", stored, "", ""])
+        residual = stack(ledger.residual(), size) if balance.complete else "not known"
         rows.append(["residual", figure(balance.mass.residual, through), "x\ny\nz", residual, "", ""])
-    return _table(
+    return table(
         "Through and on each group",
         [
             ("group", "left"),
@@ -130,7 +87,7 @@ def _wrench_row(name: str, wrench: Wrench | None, scale: tuple[float, float]) ->
     if wrench is None:
         return [name, "not known", "", ""]
     size = float(np.linalg.norm(wrench.force))
-    return [name, _row(wrench.force, scale[0]), figure(size, scale[0]), _row(wrench.moment, scale[1])]
+    return [name, row(wrench.force, scale[0]), figure(size, scale[0]), row(wrench.moment, scale[1])]
 
 
 def _loads(balance: Balance) -> Any:
@@ -153,9 +110,14 @@ def _loads(balance: Balance) -> Any:
             at = np.asarray(balance.setting.anchor, dtype=np.float64)
             weight = weight_wrench(held.mass, np.asarray(held.centre), balance.setting.gravity, at)
             rows.append(_wrench_row("weight of hardware", weight, scale))
+            frame = balance.setting.frame
+            if frame is not None and frame.acceleration_at(held.centre).any():
+                pull = -frame.acceleration_at(held.centre)
+                inertia = weight_wrench(held.mass, np.asarray(held.centre), (pull[0], pull[1], pull[2]), at)
+                rows.append(_wrench_row("inertia of hardware", inertia, scale))
         rows.append(_wrench_row("ANCHOR ON HARDWARE", balance.reaction.wrench, scale))
-    return _table(
-        f"Loads, moments about the anchor {_place(np.asarray(balance.setting.anchor))} m",
+    return table(
+        f"Loads, moments about the anchor {place(np.asarray(balance.setting.anchor))} m",
         [
             ("who on whom", "left"),
             ("force (x, y, z), N", "right"),
@@ -172,19 +134,24 @@ def _reaction_lines(balance: Balance) -> list[str]:
         return ["No reaction: neither the walls nor the ports carry enough data for a load."]
     axis = reaction.line_of_action
     # what lies below round-off of force times size of the device prints as 0
-    reach = float(np.linalg.norm(reaction.wrench.moment)) + balance.angular.size() + balance.momentum.size()
+    reach = (
+        float(np.nan_to_num(np.linalg.norm(reaction.wrench.moment))) + balance.angular.size() + balance.momentum.size()
+    )
     basis = "from the momentum balance" if reaction.basis == "balance" else "from the walls"
-    lines = [
-        f"The reaction rests on the load {basis}; it acts along the line through {_place(axis.point)} m, "
-        f"direction {_row(axis.direction, 1e3)}, with a couple of {figure(axis.couple, reach)} N m about it."
-    ]
+    if np.isfinite(axis.couple):
+        lines = [
+            f"The reaction rests on the load {basis}; it acts along the line through {place(axis.point)} m, "
+            f"direction {row(axis.direction, 1e3)}, with a couple of {figure(axis.couple, reach)} N m about it."
+        ]
+    else:
+        lines = [f"The reaction rests on the load {basis}; its moment and line of action are not known."]
     release = balance.release
     if release is not None:
-        line = f"If the anchor let go, hardware and fluid would start along {_row(release.direction, 1e3)}"
+        line = f"If the anchor let go, hardware and fluid would start along {row(release.direction, 1e3)}"
         if release.acceleration is not None:
             line += f" at {figure(float(np.linalg.norm(release.acceleration)))} m/s²"
         if release.turning_moment is not None:
-            line += f", turned by {_row(release.turning_moment, reach)} N m about their common centre"
+            line += f", turned by {row(release.turning_moment, reach)} N m about their common centre"
         lines.append(line + ".")
     short = balance.short_form
     if short is not None:
@@ -193,8 +160,8 @@ def _reaction_lines(balance: Balance) -> list[str]:
         share = f", {effect / rate:.2%} of it" if rate > 0 else ""
         lines.append(
             f"Short form, {short.inlet} to {short.outlet}: mass flow × (V2 - V1) = {figure(short.mass_flow)} kg/s × "
-            f"{_row(short.outlet_velocity - short.inlet_velocity)} m/s = {_row(short.rate)} N; "
-            f"the shape of the profiles adds {_row(short.profile_effect, effect + rate)} N{share}."
+            f"{row(short.outlet_velocity - short.inlet_velocity)} m/s = {row(short.rate)} N; "
+            f"the shape of the profiles adds {row(short.profile_effect, effect + rate)} N{share}."
         )
     return lines
 
@@ -207,41 +174,15 @@ def _comparison_lines(comparison: Comparison | None) -> list[str]:
     if comparison.reported_force is not None:
         apart = "" if comparison.relative is None else f", {comparison.relative:.2%} apart"
         lines.append(
-            f"Reported by the solver on {on}: force {_row(comparison.reported_force)} N, "
-            f"here {_row(comparison.force)} N{apart} (compared, not used)."
+            f"Reported by the solver on {on}: force {row(comparison.reported_force)} N, "
+            f"here {row(comparison.force)} N{apart} (compared, not used)."
         )
     if comparison.reported_moment is not None:
         lines.append(
-            f"Reported by the solver on {on}: moment {_row(comparison.reported_moment)} N m, "
-            f"here {_row(comparison.moment)} N m (compared, not used)."
+            f"Reported by the solver on {on}: moment {row(comparison.reported_moment)} N m, "
+            f"here {row(comparison.moment)} N m (compared, not used)."
         )
     return lines
-
-
-def _ports(balance: Balance) -> Any:
-    gas = any(port.mach_number is not None for port in balance.ports.values())
-    rows = []
-    for name, port in balance.ports.items():
-        row = [
-            name,
-            figure(port.mean_speed),
-            figure(port.mean_pressure_area),
-            figure(port.mean_total_pressure_mass_flow),
-            figure(port.momentum_factor),
-            figure(port.kinetic_energy_factor),
-            "–" if port.reversed_share is None else f"{port.reversed_share:.2%}",
-        ]
-        rows.append([*row, figure(port.mach_number)] if gas else row)
-    columns = [
-        ("port", "left"),
-        ("speed, m/s", "right"),
-        ("gauge pressure, Pa", "right"),
-        ("total (gauge), Pa", "right"),
-        ("momentum factor", "right"),
-        ("energy factor", "right"),
-        ("reversed", "right"),
-    ]
-    return _table("Ports", [*columns, ("Mach", "right")] if gas else columns, rows)
 
 
 def _verdict_line(verdict: Verdict) -> tuple[str, str]:
@@ -263,6 +204,9 @@ def print_balance(
     notes: Sequence[str] = (),
     comparison: Comparison | None = None,
     doubts: Sequence[Doubt] | None = None,
+    energy: EnergyBalance | None = None,
+    carried: Sequence[CarriedBalance] = (),
+    losses: Sequence[Loss] = (),
 ) -> None:
     """Print a balance, its loads beside their assumptions, and its verdict.
 
@@ -286,6 +230,12 @@ def print_balance(
         A reported load beside ours.
     doubts : sequence of Doubt, optional
         What a review found; None when there was no review.
+    energy : EnergyBalance, optional
+        The energy law.
+    carried : sequence of CarriedBalance, optional
+        Carried scalars.
+    losses : sequence of Loss, optional
+        Losses between ports.
     """
     from rich.text import Text
 
@@ -297,10 +247,22 @@ def print_balance(
         say(line)
     console.print()
     console.print(_ledger(balance))
-    if balance.ports:
-        console.print(_ports(balance))
+    for ports in ports_tables(balance.ports, width=min(console.width, 120)):
+        console.print(ports)
+    if losses:
+        console.print(losses_table(losses))
+        for line in losses_lines(losses):
+            say(line)
+    if energy is not None:
+        console.print(energy_table(energy, balance.setting))
+        for line in energy_lines(energy, verdict.tolerance):
+            say(line)
+    if carried:
+        console.print(carried_table(carried, balance.setting))
+        for line in carried_lines(carried):
+            say(line)
     console.print(_loads(balance))
-    for line in [*_reaction_lines(balance), *_comparison_lines(comparison)]:
+    for line in [*_reaction_lines(balance), *motion_lines(balance), *_comparison_lines(comparison)]:
         say(line)
     say("Assumed: " + "; ".join(text[0].lower() + text[1:] for text in assumptions) + ".")
     for caution in CAUTIONS:

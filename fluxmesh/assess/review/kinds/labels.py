@@ -83,7 +83,7 @@ def label_doubts(evidence: Evidence) -> Iterator[Doubt]:
         if named.quantity == "pressure":
             yield from _kind_doubts(evidence, hints, called)
         for hint, title in _TITLES.items():
-            if hint in hints:
+            if hint in hints and not (hint == "relative" and evidence.flow.frame is not None):
                 settle = other_array(evidence, named.quantity, frozenset({hint}))
                 yield Doubt(
                     "name of another quantity",

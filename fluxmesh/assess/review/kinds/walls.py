@@ -16,6 +16,7 @@ __all__ = ["RigidMotion", "rigid_motion", "wall_doubts"]
 
 # common practice, no source
 _LEAK = 1e-3  # net flow through a wall, over that through the ports
+_SLANTED = 0.1  # of what the speeds along a group could carry: about 6 degrees (common practice, no source)
 _BOTH_WAYS = 0.02  # the same for flow in and out, seen face by face
 _ROUND_OFF = 1e-6  # of what the speeds along the wall could carry
 _RIGID = 0.05  # root mean square misfit of a rigid motion
@@ -101,7 +102,9 @@ def wall_doubts(evidence: Evidence) -> Iterator[Doubt]:
         net = abs(float(table.column("mass_flow")[k]))
         gross = max(net, _gross(evidence, int(k)))
         enough = evidence.through if evidence.through > 0 else float(sweep.sum())
-        leaking = net > max(_LEAK * enough, _ROUND_OFF * float(sweep.sum())) or gross > _BOTH_WAYS * enough
+        # a velocity along a curved wall crosses its flat facets to and fro, at small angles
+        crossing = gross > _BOTH_WAYS * enough and gross > _SLANTED * float(sweep[k])
+        leaking = crossing or net > max(_LEAK * enough, _ROUND_OFF * float(sweep.sum()))
         if not leaking:
             continue
         group = evidence.groups[int(k)]
