@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from fluxmesh.errors import FileError
 from fluxmesh.surface.readers.ply import _header as ply_header
 from fluxmesh.surface.readers.ply import _read_element as read_ply_element
+from fluxmesh.surface.readers.vtk_dataset import plain_text
 from fluxmesh.surface.readers.vtk_legacy import check_vtk_legacy
 from fluxmesh.surface.readers.vtk_messages import captured_messages
 from fluxmesh.surface.readers.vtk_xml import check_vtk_xml
@@ -79,7 +80,7 @@ def read_vtk_points(path: Path) -> PointArrays:
     data, arrays = output.GetPointData(), {}
     for index in range(data.GetNumberOfArrays()):
         array = data.GetAbstractArray(index)
-        name = array.GetName() or f"unnamed {index}"
+        name = plain_text(array.GetName() or f"unnamed {index}")
         if name == _GHOST_ARRAY:
             continue
         if isinstance(array, vtkDataArray):
@@ -87,7 +88,7 @@ def read_vtk_points(path: Path) -> PointArrays:
         else:
             arrays[name] = np.full(places.shape[0], "", dtype=np.str_)
     cells = output.GetCellData()
-    on_cells = [cells.GetArrayName(index) or "" for index in range(cells.GetNumberOfArrays())]
+    on_cells = [plain_text(cells.GetArrayName(index) or "") for index in range(cells.GetNumberOfArrays())]
     hint = f"its cells carry {', '.join(on_cells)}: read it as a volume instead" if on_cells else ""
     return PointArrays(places, arrays, hint)
 

@@ -89,6 +89,11 @@ def read_table(path: Path, *, nameless: bool = False) -> Table:
             where,
             "Save it as UTF-8, or export it without special signs",
         ) from error
+    if not values:
+        first = next(iter(faults.values()), "")
+        raise FileError(
+            f"has no column of numbers{'; ' if first else ''}{first}", where, "Export the points as numbers"
+        )
     return Table(
         names=tuple(name for name in layout.names if name),
         columns={layout.names[k]: column for k, column in values.items() if layout.names[k] and k not in faults},

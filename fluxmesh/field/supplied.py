@@ -11,9 +11,13 @@ from fluxmesh.surface.surface import Role
 __all__ = ["outward_speed", "require_direction", "uniform_velocity"]
 
 
-def _axis(name: str, area_vector: NDArray[np.float64]) -> tuple[float, NDArray[np.float64]]:
+_ROUNDOFF = 1e-9
+"""Share of the area of a group below which the sum of its area vectors is round-off."""
+
+
+def _axis(name: str, area_vector: NDArray[np.float64], whole: float) -> tuple[float, NDArray[np.float64]]:
     size = float(np.linalg.norm(area_vector))
-    if size == 0.0:
+    if not size > _ROUNDOFF * whole:
         raise GroupError(
             "the faces enclose no net area, so a supplied flow has no direction",
             where=f"group '{name}'",
@@ -76,6 +80,7 @@ def uniform_velocity(
     mass_flow: float | None = None,
     speed: float | None = None,
     density: float | None = None,
+    whole: float = 0.0,
 ) -> tuple[float, float, float]:
     """Return the uniform velocity of a port with a supplied flow.
 
@@ -91,6 +96,8 @@ def uniform_velocity(
         One of them: m³/s, kg/s, m/s.
     density : float, optional
         kg/m³.
+    whole : float, optional
+        Sum of the areas of the group's faces, m²: an area vector below 1e-9 of it is round-off.
 
     Returns
     -------
@@ -101,11 +108,11 @@ def uniform_velocity(
     Raises
     ------
     GroupError
-        Faces whose area vectors cancel.
+        Faces whose area vectors cancel, to round-off of `whole`.
     FieldError
         A mass flow without a density.
     """
-    area, normal = _axis(name, area_vector)
+    area, normal = _axis(name, area_vector, whole)
     out = outward_speed(role, flow_rate=flow_rate, mass_flow=mass_flow, speed=speed, density=density, area=area)
     vector = out * normal
     return float(vector[0]), float(vector[1]), float(vector[2])

@@ -15,6 +15,7 @@ from fluxmesh.field.field import Field, absent_field
 from fluxmesh.integral.layout import ABSENT, AT_SAMPLE
 from fluxmesh.integral.samples import Samples
 from fluxmesh.job.shape import Shape
+from fluxmesh.surface.readers.ending import ending_notes
 from fluxmesh.surface.surface import ControlSurface, Role
 from fluxmesh.surface.wording import length_text
 from fluxmesh.units import unit_factor
@@ -22,6 +23,7 @@ from fluxmesh.units import unit_factor
 __all__ = ["Sampled", "carried_key", "sample_source", "sampled_field"]
 
 _QUANTITIES = ("velocity", "pressure", "traction", "density", "temperature", "enthalpy", "stress", "velocity_gradient")
+_TEXT_TABLES = (".csv", ".txt", ".dat", ".xyz")
 _COMPONENTS = {"velocity": (3,), "traction": (3,), "stress": (6, 9), "velocity_gradient": (9,)}
 
 
@@ -42,6 +44,8 @@ class Sampled:
     leave_out : dict of str to float
         By quantity the root-mean-square error of points predicted from the
         others, over the range of the quantity; empty for a volume.
+    ending : tuple of str
+        That the file may be cut short, where it may be.
     """
 
     source: str
@@ -49,6 +53,7 @@ class Sampled:
     share_exact: float | None
     farthest: float
     leave_out: dict[str, float] = field(default_factory=dict)
+    ending: tuple[str, ...] = ()
 
     def data(self) -> dict[str, object]:
         """Return the same as plain data, for the result file."""
@@ -68,7 +73,8 @@ class Sampled:
             )
             return (f"{self.share_exact:.2%} of the quadrature points lie inside the cells of {self.source}{outside}",)
         told = ", ".join(f"{quantity} {error:.2%}" for quantity, error in self.leave_out.items())
-        return (f"Interpolated from {self.source}; points left out are predicted to (of the range): {told}",)
+        said = f"Interpolated from {self.source}; points left out are predicted to (of the range): {told}"
+        return (said, *self.ending)
 
 
 def _wanted(case: Case) -> tuple[dict[str, tuple[str, ...]], dict[str, str]]:
@@ -206,6 +212,7 @@ def _from_points(
         None,
         float(found.distance.max(initial=0.0)),
         {quantity: error.relative for quantity, error in found.leave_out.items()},
+        ending_notes(source.file) if source.file.suffix.lower() in _TEXT_TABLES else (),
     )
 
 

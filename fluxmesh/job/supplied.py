@@ -108,7 +108,7 @@ def supply_flow(
     names = list(case.groups)
     sections = list(case.groups.values())
     for k in moving:
-        flow = _lay(surface, flow, k, sections[k], areas[k], samples, middle=middles[k])
+        flow = _lay(surface, flow, k, sections[k], areas[k], samples, middle=middles[k], whole=float(sizes[k]))
     notes: list[str] = []
     for k in solved:
         flow = replace(flow, velocity=_without(flow.velocity, k), mass_flux=_without(flow.mass_flux, k))
@@ -123,7 +123,7 @@ def supply_flow(
         outflow = -float(integrate_flow(surface, flow).total("mass_flow"))
         _require_way(names[k], sections[k].role, outflow)
         density = _one_density(flow, k, names[k])
-        flow = _lay(surface, flow, k, sections[k], areas[k], samples, outflow / density)
+        flow = _lay(surface, flow, k, sections[k], areas[k], samples, outflow / density, whole=float(sizes[k]))
         notes.append(_told(case, flow, k, names[k], outflow, density, float(np.linalg.norm(areas[k]))))
     return flow, tuple(notes)
 
@@ -137,6 +137,7 @@ def _lay(
     samples: Samples | None,
     solved: float | None = None,
     middle: NDArray[np.float64] | None = None,
+    whole: float = 0.0,
 ) -> Flow:
     name = surface.groups[k].name
     velocity: Vector
@@ -149,7 +150,7 @@ def _lay(
         require_direction(name, section.role, area, (float(through[0]), float(through[1]), float(through[2])))
     elif solved is not None:
         size = float(np.linalg.norm(area))
-        velocity = uniform_velocity(name, Role.OPEN, area, speed=solved / size if size > 0 else 0.0)
+        velocity = uniform_velocity(name, Role.OPEN, area, speed=solved / size if size > 0 else 0.0, whole=whole)
     else:
         velocity = uniform_velocity(
             name,
@@ -159,6 +160,7 @@ def _lay(
             mass_flow=None if section.mass_flow is None else float(section.mass_flow),
             speed=None if section.speed is None else float(section.speed),
             density=_one_density(flow, k, name) if section.mass_flow is not None else None,
+            whole=whole,
         )
     flow = replace(flow, mass_flux=_without(flow.mass_flux, k))
     if absolute and flow.frame is not None:

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from fluxmesh.errors import GroupError, SurfaceError
 from fluxmesh.surface.duplicates import find_duplicates
 from fluxmesh.surface.edges import EdgePairing
+from fluxmesh.surface.extent import used_box
 from fluxmesh.surface.holes import describe_openings, find_holes
 from fluxmesh.surface.orient import faces_against_majority
 from fluxmesh.surface.shells import ShellMeasures, measure_shells, nesting_depths
@@ -24,9 +25,11 @@ from fluxmesh.surface.workpiece import Workpiece
 
 __all__ = ["Mended", "mend"]
 
-_NEARNESS = 1e-6  # of the diagonal of the box round all points: default tolerance of the second joining
+_NEARNESS = 1e-6  # of the diagonal of the box round the points that faces use: default tolerance of the second joining
 _GAP = 1e-6  # of the edge's length: mid-side points further apart than this leave a gap
 _MOST_SHELLS_TOLD = 5
+_LOST = 0.1  # share of a volume that rounding of the coordinates may be
+_ABSURD = "Check coordinates and length_unit for absurd sizes, or move the surface near the origin"
 
 
 @dataclass(frozen=True, eq=False)
@@ -117,7 +120,7 @@ def mend(
         False accepts an open surface and notes its holes.
     weld_tolerance : float, optional
         Distance of the second joining, m; 1e-6 of the diagonal of the box round
-        all points by default, 0 for none.
+        the points that faces use by default, 0 for none.
     source : str, optional
         File name, for messages.
 
@@ -162,6 +165,7 @@ def _mend(piece: Workpiece, require_closed: bool, weld_tolerance: float | None) 
         piece.note(f"{counted(flat, 'face')} {verb} no area: {piece.groups_text(measures.flat_faces)}")
     shells = pairing.shell_count
     if pairing.closed:
+        _require_volume(measures, require_closed)
         _point_outward(piece, pairing, measures)
         # thin walls of no thickness may be many shells by their edges, but bound nothing
         shells = int(np.count_nonzero(~measures.empty)) or shells
@@ -200,7 +204,8 @@ def _join_equal(piece: Workpiece, pairing: EdgePairing) -> EdgePairing:
 def _join_near(piece: Workpiece, pairing: EdgePairing, tolerance: float | None) -> EdgePairing:
     """Join points within a tolerance on open edges, and move them together, if that closes the surface."""
     if tolerance is None:
-        tolerance = _NEARNESS * float(np.linalg.norm(np.ptp(piece.points, axis=0)))
+        low, high = used_box(piece.points, piece.connectivity)
+        tolerance = _NEARNESS * float(np.linalg.norm(high - low))
     before = np.arange(piece.points.shape[0]) if piece.representative is None else piece.representative
     joined = join_near_points(piece.points, _candidates(piece, pairing), before, tolerance, piece.facets[1:])
     moved = joined != before
@@ -282,6 +287,31 @@ def _run_one_way(piece: Workpiece, pairing: EdgePairing) -> EdgePairing:
     verb = "was" if count == 1 else "were"
     piece.note(f"{counted(count, 'face')} {verb} turned to match the neighbours: {piece.groups_text(mask)}")
     return piece.pair()
+
+
+def _require_volume(measures: ShellMeasures, require_closed: bool) -> None:
+    """Refuse closed shells whose volume is nothing, or lost in the rounding of the coordinates."""
+    if not (np.isfinite(measures.volume).all() and np.isfinite(measures.area).all()):
+        raise SurfaceError("areas and volumes overflow", remedy=_ABSURD)
+    empty = measures.empty
+    if empty.all() and require_closed:
+        far = float(np.maximum(np.abs(measures.low), np.abs(measures.high)).max())
+        raise SurfaceError(
+            "the surface encloses no volume: it is flat, or the sides of a wall of no thickness, "
+            f"with coordinates up to {length_text(far)}",
+            remedy="Export the whole surface round the fluid, with correct coordinates, "
+            "or set closed = false to get the integrals of each group only",
+        )
+    lost = np.flatnonzero(~empty & (measures.rounding > _LOST * np.abs(measures.volume)))
+    if lost.size:
+        shell = int(lost[0])
+        far = float(np.maximum(np.abs(measures.low[shell]), np.abs(measures.high[shell])).max())
+        raise SurfaceError(
+            f"the volume of {abs(measures.volume[shell]):.3g} m³ is lost in rounding: "
+            f"coordinates of {length_text(far)} are known to {length_text(float(np.spacing(far)) / 2)} only, "
+            f"on a shell {length_text(float(measures.diagonal[shell]))} across",
+            remedy=_ABSURD,
+        )
 
 
 def _point_outward(piece: Workpiece, pairing: EdgePairing, measures: ShellMeasures) -> None:

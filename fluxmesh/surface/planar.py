@@ -27,6 +27,7 @@ MERGE_SHARE = 1e-6
 # bend is a part of a bent chain at the full angle, and stands alone at a narrower one.
 _NARROWER = (1.0, 0.1, 0.01)
 _REFITS = 8
+_SHARP = np.cos(np.radians(45.0))  # between neighbours: the edge of a step
 
 
 @dataclass(frozen=True, eq=False)
@@ -114,7 +115,10 @@ def planar_region_around(
     distance: float,
     merge: float,
 ) -> NDArray[np.int64]:
-    """Return the connected faces that lie in one plane with a face.
+    """Return the connected faces that lie in one plane with a face, and those that go on smoothly from there.
+
+    Only the normals of `faces` say how far it may be bent: across a sharp edge
+    (45 degrees) a face must lie in the plane.
 
     Parameters
     ----------
@@ -127,7 +131,7 @@ def planar_region_around(
     seed : int
         The face to start from.
     distance : float
-        How far a corner may be from the plane, in the points' unit.
+        How far a corner may be from the plane across a sharp edge, in the points' unit.
     merge : float
         Distance within which points coincide.
 
@@ -152,7 +156,10 @@ def planar_region_around(
         if np.array_equal(before, region):
             break
         normal, origin = _mean_plane(geometry, faces[region])
-    return faces[region]
+    smooth = np.einsum("ij,ij->i", *(geometry.normals[faces[pairs[:, side]]] for side in (0, 1))) >= _SHARP
+    label = region_of(pairs[smooth | region[pairs].all(axis=1)], faces.size)
+    taken: NDArray[np.int64] = faces[label == label[start]]
+    return taken
 
 
 def _mean_plane(geometry: FaceGeometry, faces: NDArray[np.int64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from fluxmesh.compiling import run_parts
 from fluxmesh.errors import SurfaceError
 from fluxmesh.surface import facet_kernels
+from fluxmesh.surface.extent import used_box
 from fluxmesh.surface.wording import counted
 
 __all__ = ["Facets", "ShellMeasures", "measure_shells", "nesting_depths"]
@@ -29,6 +30,11 @@ _EMPTINESS = 1e-12  # a shell below this times area times diagonal has no volume
 _FARNESS = 3.0  # cells further off than this times their radius are seen as dipoles
 _LARGE_SHELL = 20_000  # faces, from which cells pay for a second query
 _CLEAR = 0.1  # how far a winding number may lie from a whole number
+_TRIED = ((16, 256), (128, 32))  # points tried in a box, by the number of shells there are at most
+_FEW = 4  # points tried for each of even more shells
+_SLIVER = 0.05  # share of points: less is the gap between two meshes of one curved interface
+_ALIKE = 0.05  # shells whose boxes and volumes differ by less may be one shell given twice
+_ADDENDS = 1.2207440846057596 ** -np.arange(1.0, 4.0)
 
 
 class Facets(NamedTuple):
@@ -82,8 +88,18 @@ class ShellMeasures:
     @property
     def empty(self) -> NDArray[np.bool_]:
         """Shells that enclose no volume: thin walls of no thickness."""
-        diagonal = np.linalg.norm(self.high - self.low, axis=1)
-        return np.asarray(np.abs(self.volume) <= _EMPTINESS * self.area * diagonal)
+        return np.asarray((np.abs(self.volume) <= _EMPTINESS * self.area * self.diagonal) | (self.area <= 0.0))
+
+    @property
+    def diagonal(self) -> NDArray[np.float64]:
+        """Diagonal of the box round each shell, m."""
+        return np.asarray(np.linalg.norm(self.high - self.low, axis=1))
+
+    @property
+    def rounding(self) -> NDArray[np.float64]:
+        """What rounding 64-bit coordinates to their last digit may change in each volume, m³: that digit times area."""
+        largest = np.maximum(np.abs(self.low), np.abs(self.high)).max(axis=1)
+        return np.asarray(0.5 * float(np.finfo(np.float64).eps) * largest * self.area)
 
 
 def measure_shells(facets: Facets, shell_of_face: NDArray[np.int32], shell_count: int) -> ShellMeasures:
@@ -124,22 +140,19 @@ def measure_shells(facets: Facets, shell_of_face: NDArray[np.int32], shell_count
     )
     total = sums.sum(axis=0)
     if not boxed:
-        return ShellMeasures(total[:, 0], total[:, 1], *_box_of_points(facets), flat)
+        low, high = used_box(facets.points, facets.connectivity)
+        return ShellMeasures(total[:, 0], total[:, 1], low[None], high[None], flat)
     return ShellMeasures(total[:, 0], total[:, 1], lows.min(axis=0), highs.max(axis=0), flat)
-
-
-def _box_of_points(facets: Facets) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    # of a single shell the box serves as a length only, so points that no face uses do no harm
-    columns = facets.points.T
-    return np.array([[c.min() for c in columns]]), np.array([[c.max() for c in columns]])
 
 
 def nesting_depths(facets: Facets, shell_of_face: NDArray[np.int32], measures: ShellMeasures) -> NDArray[np.int64]:
     """Count the shells round each shell of a closed surface.
 
-    A shell lies within another when its box does and a point of it has a
-    winding number other than zero there. Shells do not cut one another, so the
-    depth is one more than that of the smallest shell round it.
+    A shell lies within another when its box does and the points tried inside it
+    lie inside the other, by their winding numbers. The depth is one more than
+    that of the smallest shell round it. Shells that overlap are refused as far
+    as the points tried show it: a set spread evenly over the common box, of
+    which a share of 0.05 must tell.
 
     Parameters
     ----------
@@ -158,7 +171,7 @@ def nesting_depths(facets: Facets, shell_of_face: NDArray[np.int32], measures: S
     Raises
     ------
     SurfaceError
-        All points tried of a shell lie on another: faces given twice.
+        A shell lies on another (faces given twice), or two shells overlap.
     """
     count = measures.volume.size
     depths = np.zeros(count, np.int64)
@@ -172,27 +185,95 @@ def nesting_depths(facets: Facets, shell_of_face: NDArray[np.int32], measures: S
     by_size = np.argsort(-np.abs(measures.volume), kind="stable")
     by_size = by_size[~measures.empty[by_size]]
     low, high = measures.low[by_size], measures.high[by_size]
+    tried = next((points for most, points in _TRIED if count <= most), _FEW)
     for place in range(1, by_size.size):
-        around = np.flatnonzero(low[:place, 0] <= low[place, 0])
-        around = around[np.all(low[around] <= low[place], axis=1) & np.all(high[around] >= high[place], axis=1)]
+        common = np.all((low[:place] < high[place]) & (high[:place] > low[place]), axis=1)
         shell = int(by_size[place])
-        for outer in by_size[around[::-1]].tolist():
-            if _contains(windings[outer], windings[shell], outer, shell):
+        # the smallest first: what overlaps one further out overlaps the one round it too
+        for at in np.flatnonzero(common)[::-1].tolist():
+            outer = int(by_size[at])
+            pair = _Pair(windings[outer], windings[shell], outer, shell)
+            if not (np.all(low[at] <= low[place]) and np.all(high[at] >= high[place])):
+                pair.require_apart(np.maximum(low[at], low[place]), np.minimum(high[at], high[place]), tried)
+            elif pair.nested(low[place], high[place], tried):
+                if _alike(measures, outer, shell):
+                    pair.require_distinct()
                 depths[shell] = depths[outer] + 1
                 break
     return depths
 
 
-def _contains(outer: _Winding, inner: _Winding, outer_shell: int, inner_shell: int) -> bool:
-    for place in inner.sample_points():
-        winding = outer.number(place)
-        if abs(winding - round(winding)) < _CLEAR:
-            return round(winding) != 0
-    raise SurfaceError(
-        f"shell {inner_shell + 1} ({counted(inner.faces.size, 'face')}) lies on shell {outer_shell + 1} "
-        f"({counted(outer.faces.size, 'face')}): the same faces seem to be there twice",
-        remedy="Export each face once",
+def _alike(measures: ShellMeasures, one: int, other: int) -> bool:
+    most = _ALIKE * measures.diagonal[one]
+    return bool(
+        np.abs(measures.low[one] - measures.low[other]).max() < most
+        and np.abs(measures.high[one] - measures.high[other]).max() < most
+        and abs(measures.volume[other]) > (1.0 - _ALIKE) * abs(measures.volume[one])
     )
+
+
+class _Pair(NamedTuple):
+    """Two shells, the second no larger than the first."""
+
+    outer: _Winding
+    inner: _Winding
+    outer_shell: int
+    inner_shell: int
+
+    def nested(self, low: NDArray[np.float64], high: NDArray[np.float64], tried: int) -> bool:
+        """Return whether the second lies within the first; `low` and `high` are the corners of its box."""
+        inside = [place for place in _spread(low, high, tried) if self.inner.holds(place)]
+        held = [held for place in inside if (held := self.outer.holds(place)) is not None]
+        if held:
+            share = sum(held) / len(held)
+            if _SLIVER < share < 1.0 - _SLIVER:
+                raise self._overlap(f"{sum(held)} of {len(held)} points tried within the one lie within the other")
+            return share > 0.5
+        # too thin for any point to fall inside
+        for place in self.inner.sample_points():
+            within = self.outer.holds(place)
+            if within is not None:
+                return within
+        raise self._doubled()
+
+    def require_apart(self, low: NDArray[np.float64], high: NDArray[np.float64], tried: int) -> None:
+        """Raise if the two hold a part of a box, the common one of both, together."""
+        shared = sum(bool(self.inner.holds(place) and self.outer.holds(place)) for place in _spread(low, high, tried))
+        if shared > max(2.0, _SLIVER * tried):
+            raise self._overlap(f"{shared} of {tried} points tried in the box common to both lie within both")
+
+    def require_distinct(self) -> None:
+        """Raise if the second, as large as the first, does not lie wholly within it: a narrow gap is no copy."""
+        held = [self.outer.holds(place) for place in self.inner.sample_points(corners=True)]
+        # of two meshes of one body, one may lie within the other but for the points they share
+        if False in held or 4 * held.count(None) >= len(held):
+            raise self._doubled()
+
+    def _names(self) -> tuple[str, str]:
+        sizes = (counted(winding.faces.size, "face") for winding in (self.inner, self.outer))
+        inner, outer = (f"shell {n + 1} ({size})" for n, size in zip((self.inner_shell, self.outer_shell), sizes))
+        return inner, outer
+
+    def _doubled(self) -> SurfaceError:
+        return SurfaceError(
+            "{} lies on {}: the same faces seem to be there twice".format(*self._names()),
+            remedy="Export each face once",
+        )
+
+    def _overlap(self, seen: str) -> SurfaceError:
+        return SurfaceError(
+            "{} and {} overlap ({seen}): fluid there would count twice".format(*self._names(), seen=seen),
+            remedy="Unite the bodies before the export, or export the wetted surface only",
+        )
+
+
+def _spread(low: NDArray[np.float64], high: NDArray[np.float64], count: int) -> Iterator[NDArray[np.float64]]:
+    """Yield points spread evenly over a box: multiples of irrational steps, modulo one.
+
+    The steps are powers of the root of x⁴ = x + 1, the extension of the golden ratio to three axes (from memory).
+    """
+    for number in range(1, count + 1):
+        yield low + np.mod(0.5 + number * _ADDENDS, 1.0) * (high - low)
 
 
 class _Winding:
@@ -216,15 +297,22 @@ class _Winding:
                 return float(lumped)
         return float(facet_kernels.solid_angle(0, self.faces.size, self.faces, *self.facets, at)) / (4 * np.pi)
 
-    def sample_points(self) -> Iterator[NDArray[np.float64]]:
-        """Yield points on faces that reach furthest and on faces spread over the shell, m."""
-        corners = self.facets.first_points(self.faces)
+    def holds(self, place: NDArray[np.float64]) -> bool | None:
+        """Return whether a point lies inside the shell; None where it is too near to it to tell."""
+        winding = self.number(place)
+        return bool(round(winding)) if abs(winding - round(winding)) < _CLEAR else None
+
+    def sample_points(self, *, corners: bool = False) -> Iterator[NDArray[np.float64]]:
+        """Yield points on faces that reach furthest and on faces spread over the shell, m; corners too, if asked."""
+        first = self.facets.first_points(self.faces)
         spread = np.linspace(0, self.faces.size - 1, min(8, self.faces.size)).astype(np.int64)
-        chosen = np.concatenate([spread[:1], corners.argmin(axis=0), corners.argmax(axis=0), spread[1:]])
+        chosen = np.concatenate([spread[:1], first.argmin(axis=0), first.argmax(axis=0), spread[1:]])
         for face in self.faces[chosen].tolist():
             centre = np.empty(3)
             facet_kernels.face_centre(face, *self.facets, centre)
             yield centre
+        if corners:
+            yield from first[chosen]
 
     def _lump(self) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.float64]]:
         """Sort the faces into the cells of a grid, about as many cells as faces in the near ones."""

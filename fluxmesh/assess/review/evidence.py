@@ -13,6 +13,7 @@ from fluxmesh.assess.review.faces import Floats, Indices, some_faces, some_geome
 from fluxmesh.balance.balance import Balance
 from fluxmesh.field.field import Field
 from fluxmesh.field.flow import Flow
+from fluxmesh.surface.extent import used_box
 from fluxmesh.surface.face_geometry import FaceGeometry
 from fluxmesh.surface.surface import ControlSurface, Group
 
@@ -128,6 +129,16 @@ class Evidence:
     def groups(self) -> tuple[Group, ...]:
         """The groups of the surface."""
         return self.surface.groups
+
+    @cached_property
+    def box(self) -> tuple[Floats, Floats]:
+        """Lowest and highest coordinates of the points that faces use, m."""
+        return used_box(self.surface.points, self.surface.connectivity)
+
+    @property
+    def size(self) -> float:
+        """Diagonal of that box, m."""
+        return float(np.linalg.norm(self.box[1] - self.box[0]))
 
     @cached_property
     def walls(self) -> tuple[int, ...]:

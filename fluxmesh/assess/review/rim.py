@@ -11,6 +11,8 @@ from fluxmesh.assess.review.faces import Floats, Indices, corner_faces
 from fluxmesh.field.field import Field
 from fluxmesh.field.flow import near_origin
 from fluxmesh.integral.layout import PER_GROUP
+from fluxmesh.surface.extent import used_box
+from fluxmesh.surface.surface import ControlSurface
 from fluxmesh.surface.touching import edge_neighbours
 
 __all__ = ["rim_agreement"]
@@ -49,7 +51,7 @@ def rim_agreement(evidence: Evidence) -> float | None:
         return None
     faces = np.concatenate([port_faces, wall_faces])
     connectivity, offsets = corner_faces(surface, faces)
-    reach = _NEAR * float(np.linalg.norm(np.ptp(surface.points, axis=0)))
+    reach = _NEAR * _diagonal(surface)
     pairs = edge_neighbours(surface.points, connectivity, offsets, np.arange(faces.size), reach)
     pairs.sort(axis=1)
     across = (pairs[:, 0] < port_faces.size) & (pairs[:, 1] >= port_faces.size)
@@ -71,7 +73,7 @@ def _touching(evidence: Evidence, port_faces: Indices, wall_faces: Indices) -> I
     surface = evidence.surface
     # about a near origin: far from it a distance of 1e-6 of the size would drown
     points = surface.points - near_origin(surface)
-    reach = _NEAR * float(np.linalg.norm(np.ptp(points, axis=0)))
+    reach = _NEAR * _diagonal(surface)
     port = points[np.unique(corner_faces(surface, port_faces)[0])]
     connectivity, offsets = corner_faces(surface, wall_faces)
     used = np.unique(connectivity)
@@ -91,3 +93,8 @@ def _by_group(evidence: Evidence, of: Field, faces: Indices) -> Floats:
     for k in np.unique(owner):
         values[owner == k] = evidence.values(of, faces[owner == k])
     return values
+
+
+def _diagonal(surface: ControlSurface) -> float:
+    low, high = used_box(surface.points, surface.connectivity)
+    return float(np.linalg.norm(high - low))

@@ -14,6 +14,8 @@ from fluxmesh.field.profiles.wall_distance import wall_distance
 
 __all__ = ["power_law_shape"]
 
+_SMALLEST = 0.05  # below it, nothing but the very middle of the port would flow
+
 
 def power_law_shape(patch: PortPatch, options: ProfileOptions) -> NDArray[np.float64]:
     """Return ``(d/d_max)^(1/n)`` at the samples, `d` the distance from the nearest wall.
@@ -23,7 +25,7 @@ def power_law_shape(patch: PortPatch, options: ProfileOptions) -> NDArray[np.flo
     patch : PortPatch
         The port, planar, of any outline.
     options : ProfileOptions
-        `exponent` is n, above zero.
+        `exponent` is n, 0.05 or more.
 
     Returns
     -------
@@ -33,7 +35,7 @@ def power_law_shape(patch: PortPatch, options: ProfileOptions) -> NDArray[np.flo
     Raises
     ------
     FieldError
-        An exponent that is not above zero, a port that is not planar or that
+        An exponent below 0.05, a port that is not planar or that
         no wall meets.
 
     Notes
@@ -45,11 +47,11 @@ def power_law_shape(patch: PortPatch, options: ProfileOptions) -> NDArray[np.flo
     the supplied one and does not err.
     """
     n = options.exponent
-    if not (math.isfinite(n) and n > 0.0):
+    if not (math.isfinite(n) and n >= _SMALLEST):
         raise FieldError(
             f"the exponent of the power law is {n:g}",
             where=f"group '{patch.name}'",
-            remedy="Give n > 0 of u ~ d^(1/n), such as 7",
+            remedy="Give n of u ~ d^(1/n), such as 7",
         )
     require_plane(patch)
     distance = wall_distance(patch, patch.samples.places)

@@ -8,8 +8,10 @@ import struct
 import zlib
 from collections.abc import Iterable, Iterator
 from contextlib import contextmanager, redirect_stderr, redirect_stdout
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
+from warnings import catch_warnings, simplefilter
 from xml.etree.ElementTree import ParseError
 
 import numpy as np
@@ -19,7 +21,9 @@ from fluxmesh.errors import FieldError, FileError
 from fluxmesh.surface.rawmesh import RawMesh
 from fluxmesh.surface.readers.cell_shapes import SHAPES
 from fluxmesh.surface.readers.content import FileContent, surface_of
+from fluxmesh.surface.readers.ending import ending_notes
 from fluxmesh.surface.readers.faces import Faces, join_blocks
+from fluxmesh.surface.readers.gmsh_counts import require_gmsh_counts
 from fluxmesh.surface.readers.volume import CellBlock, Volume
 from fluxmesh.surface.surface import FaceKind
 
@@ -50,6 +54,7 @@ _DAMAGE = (
     OSError,
     ParseError,
     RuntimeError,
+    RuntimeWarning,
     StopIteration,
     SystemExit,
     TypeError,
@@ -109,7 +114,9 @@ def read_meshio(path: Path, skin: bool | None = None) -> RawMesh:
     FieldError
         An array has the wrong length.
     """
-    return surface_of(_content(_read(path), path.name, str(path)), str(path), skin)
+    content = _content(_read(path), path.name, str(path))
+    notes = ending_notes(path) if path.suffix.lower() in _TEXT else ()
+    return surface_of(replace(content, notes=(*content.notes, *notes)), str(path), skin)
 
 
 def _content(mesh: Any, source: str, where: str) -> FileContent:
@@ -189,7 +196,9 @@ def _read(path: Path) -> Any:
     for name in _formats(path):
         said = io.StringIO()
         try:
-            with _opened(path, name) as source, redirect_stdout(said), redirect_stderr(said):
+            with _opened(path, name) as source, redirect_stdout(said), redirect_stderr(said), catch_warnings():
+                if name == "gmsh":
+                    simplefilter("error", RuntimeWarning)  # a point number that is no whole number
                 mesh = meshio.read(source, file_format=name)
         except ImportError as error:
             raise FileError(
@@ -210,6 +219,9 @@ def _read(path: Path) -> Any:
                 str(path),
                 "It was cut short or is still being written; export or copy it again",
             )
+        if name == "gmsh":
+            cells = [np.shape(block.data) for block in mesh.cells]
+            require_gmsh_counts(path, len(mesh.points), [shape[:2] for shape in cells if len(shape) == 2])
         return mesh
     raise FileError(
         f"cannot be read as a {path.suffix} file ({'; '.join(reasons)})",

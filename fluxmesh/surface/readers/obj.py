@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import FileError
 from fluxmesh.surface.rawmesh import RawMesh
+from fluxmesh.surface.readers.ending import ending_notes
 from fluxmesh.surface.readers.faces import require_faces
 
 __all__ = ["read_obj"]
@@ -78,6 +79,7 @@ def read_obj(path: Path) -> RawMesh:
             kinds=None,
             face_sets=_sets(spans),
             skipped=skipped,
+            notes=ending_notes(path),
         ),
         str(path),
     )

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import FileError
 from fluxmesh.surface.rawmesh import RawMesh
+from fluxmesh.surface.readers.ending import ending_notes
 from fluxmesh.surface.readers.faces import require_faces
 
 __all__ = ["read_ply"]
@@ -149,6 +150,7 @@ def read_ply(path: Path) -> RawMesh:
             node_arrays=_arrays(vertex),
             face_arrays=_arrays(face),
             skipped=skipped,
+            notes=() if source.binary else ending_notes(path),
         ),
         where,
     )

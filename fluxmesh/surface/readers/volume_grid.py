@@ -15,6 +15,7 @@ from fluxmesh.errors import FieldError, FileError
 from fluxmesh.surface.readers.meshio_formats import _read as read_by_meshio
 from fluxmesh.surface.readers.meshio_formats import meshio_suffixes
 from fluxmesh.surface.readers.vtk_cells import cell_arrays, cell_type_name, cell_types
+from fluxmesh.surface.readers.vtk_dataset import plain_text
 from fluxmesh.surface.readers.vtk_legacy import check_vtk_legacy
 from fluxmesh.surface.readers.vtk_messages import captured_messages
 from fluxmesh.surface.readers.vtk_xml import check_vtk_xml
@@ -234,9 +235,9 @@ def _arrays(attributes: Any, count: int, on: str, where: str) -> Iterator[tuple[
             continue
         tuples = int(array.GetNumberOfTuples())
         if tuples != count:
-            found = f"array {array.GetName()!r} holds {tuples} values, but there are {count} {on}"
+            found = f"array {plain_text(array.GetName())!r} holds {tuples} values, but there are {count} {on}"
             raise FieldError(found, where, "Export it again")
-        yield array.GetName(), vtk_to_numpy(array)
+        yield plain_text(array.GetName()), vtk_to_numpy(array)
 
 
 def _read_vtk(path: Path) -> Any:

@@ -6,6 +6,7 @@ importing a package built on them, and nothing in between copies an array.
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -104,7 +105,7 @@ def read_vtk_legacy(path: Path, skin: bool | None = None) -> RawMesh:
     FieldError
         An array has the wrong length.
     """
-    check_vtk_legacy(path)
+    notes = check_vtk_legacy(path)
     from vtkmodules.vtkIOLegacy import vtkGenericDataObjectReader
 
     reader = vtkGenericDataObjectReader()
@@ -113,7 +114,8 @@ def read_vtk_legacy(path: Path, skin: bool | None = None) -> RawMesh:
         getattr(reader, f"ReadAll{kind}On")()
     if legacy_holds_polyhedra(path):
         try_reader(reader, path)
-    return surface_of(_read(reader, path), str(path), skin)
+    content = _read(reader, path)
+    return surface_of(replace(content, notes=(*content.notes, *notes)), str(path), skin)
 
 
 def _read(reader: Any, path: Path) -> FileContent:

@@ -52,7 +52,7 @@ def faces_of_polydata(data: Any, where: str) -> Faces:
     before = sum(skipped.values())
     skipped = {name: count for name, count in skipped.items() if count}
     count = int(data.GetNumberOfPolys())
-    connectivity, offsets = cell_arrays(polygons)
+    connectivity, offsets = cell_arrays(polygons, where)
     sound = offsets is None or bool((offsets[1:] - offsets[:-1]).min(initial=3) >= 3)
     if before == 0 and sound and data.GetNumberOfStrips() == 0:
         return Faces(connectivity, offsets, None, None, skipped)
@@ -64,7 +64,7 @@ def faces_of_polydata(data: Any, where: str) -> Faces:
         connectivity, offsets = gather(connectivity, offsets, rows)
     cells = before + rows
     if data.GetNumberOfStrips():
-        triangles, strip = strip_triangles(*_with_offsets(*cell_arrays(strips)))
+        triangles, strip = strip_triangles(*_with_offsets(*cell_arrays(strips, where)))
         sizes = np.full(rows.size, 3) if offsets is None else np.diff(offsets)
         connectivity = np.concatenate([connectivity, triangles.ravel()])
         offsets = _starts(np.concatenate([sizes, np.full(strip.size, 3)]))
@@ -94,7 +94,7 @@ def faces_of_grid(data: Any, where: str) -> Faces:
         the points of its type.
     """
     types = cell_types(data)
-    connectivity, offsets = cell_arrays(data.GetCells())
+    connectivity, offsets = cell_arrays(data.GetCells(), where)
     counts = np.bincount(types, minlength=256)
     if offsets is None and counts[_TRIANGLE] == types.size:
         return Faces(connectivity, None, None)
@@ -159,13 +159,15 @@ def _sort_in(
         kind_of_cell[cells[sizes[cells] == size]] = shapes[int(size)]
 
 
-def cell_arrays(cells: Any) -> tuple[NDArray[np.int64], NDArray[np.int64] | None]:
+def cell_arrays(cells: Any, where: str = "") -> tuple[NDArray[np.int64], NDArray[np.int64] | None]:
     """View a VTK cell array.
 
     Parameters
     ----------
     cells : vtkCellArray or None
         Cells of any size.
+    where : str, optional
+        File, for messages.
 
     Returns
     -------
@@ -173,6 +175,11 @@ def cell_arrays(cells: Any) -> tuple[NDArray[np.int64], NDArray[np.int64] | None
         Points of the cells, one after the other.
     offsets : ndarray, shape (n_cells + 1,), int64, or None
         Where each cell starts; None when all cells have three points, or there is none.
+
+    Raises
+    ------
+    FileError
+        Cells that do not lie within the list of their points.
     """
     from vtkmodules.util.numpy_support import vtk_to_numpy
 
@@ -185,7 +192,12 @@ def cell_arrays(cells: Any) -> tuple[NDArray[np.int64], NDArray[np.int64] | None
     if size > 0:
         # offsets of equal cells may be stored as a formula that NumPy cannot view
         return connectivity, np.arange(0, connectivity.size + 1, size, dtype=np.int64)
-    return connectivity, vtk_to_numpy(cells.GetOffsetsArray()).astype(np.int64, copy=False)
+    offsets = vtk_to_numpy(cells.GetOffsetsArray()).astype(np.int64, copy=False)
+    if offsets[0] != 0 or offsets[-1] != connectivity.size or (offsets[1:] < offsets[:-1]).any():
+        raise FileError(
+            "its cells do not lie within the list of their points", where, "The file is damaged; export it again"
+        )
+    return connectivity, offsets
 
 
 def _with_offsets(

@@ -14,11 +14,12 @@ from fluxmesh.surface.readers.faces import Faces, gather
 from fluxmesh.surface.readers.vtk_cells import faces_of_grid, faces_of_polydata
 from fluxmesh.surface.readers.vtk_volume import volume_cell_count, volume_of_grid
 
-__all__ = ["content_of_dataset"]
+__all__ = ["content_of_dataset", "plain_text"]
 
 # Bits of the open "vtkGhostType" cell array: a copy of another piece's cell, a cell to be left out.
 _GHOST_ARRAY = "vtkGhostType"
 _GHOST_BITS = 1 | 32
+_LONGEST_WORD = 4096
 
 
 def content_of_dataset(data: Any, source: str, where: str) -> FileContent:
@@ -77,6 +78,17 @@ def content_of_dataset(data: Any, source: str, where: str) -> FileContent:
     )
 
 
+def plain_text(text: str | bytes) -> str:
+    """Return a name or word of a VTK file; what is no UTF-8 comes as bytes, and is taken as Latin-1.
+
+    Parameters
+    ----------
+    text : str or bytes
+        As VTK hands it over.
+    """
+    return text.decode("latin-1") if isinstance(text, bytes) else text
+
+
 def _view(array: Any) -> NDArray[Any]:
     """Return a VTK array as NumPy sees it, without a copy; the view keeps the memory alive."""
     from vtkmodules.util.numpy_support import vtk_to_numpy
@@ -95,7 +107,7 @@ def _arrays(attributes: Any, count: int, on: str, where: str) -> Iterator[tuple[
 
     for index in range(attributes.GetNumberOfArrays()):
         array = attributes.GetAbstractArray(index)
-        name = array.GetName() or f"unnamed {index}"
+        name = plain_text(array.GetName() or f"unnamed {index}")
         tuples = int(array.GetNumberOfTuples())
         if tuples != count:
             raise FieldError(
@@ -104,7 +116,10 @@ def _arrays(attributes: Any, count: int, on: str, where: str) -> Iterator[tuple[
         if isinstance(array, vtkDataArray):
             yield name, _view(array)
         elif isinstance(array, vtkStringArray):
-            text = np.array(list(map(array.GetValue, range(array.GetNumberOfValues()))), dtype=np.str_)
+            words = [plain_text(array.GetValue(place)) for place in range(array.GetNumberOfValues())]
+            if max(map(len, words), default=0) > _LONGEST_WORD:
+                raise FieldError(f"array {name!r} holds text of more than {_LONGEST_WORD} signs", where, "Leave it out")
+            text = np.array(words, dtype=np.str_)
             components = int(array.GetNumberOfComponents())
             yield name, text if components == 1 else text.reshape(-1, components)
 

@@ -1,34 +1,41 @@
-"""Whether a legacy VTK file in ASCII is whole: VTK itself reads a cut one without a word."""
+"""Whether a legacy VTK file is whole: VTK itself reads a cut one in ASCII without a word."""
 
 from __future__ import annotations
 
 import mmap
 import re
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
 from fluxmesh.errors import FileError
+from fluxmesh.surface.readers.ending import ending_notes
+from fluxmesh.surface.readers.vtk_legacy_blocks import KEYWORD, require_room
 
 __all__ = ["check_vtk_legacy", "legacy_holds_polyhedra"]
 
-# A line that starts with a letter opens a block, unless it is a value that is not finite.
-_KEYWORD = re.compile(rb"^[ \t]*(?!(?:[-+]?(?:nan|inf))\b)[A-Za-z_][^\r\n]*", re.MULTILINE | re.IGNORECASE)
 _COMPONENTS = {b"VECTORS": 3, b"NORMALS": 3, b"TENSORS": 9, b"TENSORS6": 6, b"GLOBAL_IDS": 1, b"PEDIGREE_IDS": 1}
 
 
-def check_vtk_legacy(path: Path) -> None:
-    """Check that the last block of a legacy VTK file in ASCII holds as many values as it announces.
+def check_vtk_legacy(path: Path) -> tuple[str, ...]:
+    """Check that a legacy VTK file can hold what it announces; in ASCII, that its last block does.
 
     Parameters
     ----------
     path : Path
-        An existing file, not empty. Binary files pass: VTK reports those itself.
+        An existing file, not empty.
+
+    Returns
+    -------
+    tuple of str
+        What to note: an ASCII file that may be cut within its last number.
 
     Raises
     ------
     FileError
-        The file is no legacy VTK file, or its last block is cut short.
+        The file is no legacy VTK file, announces more than it can hold, or
+        its last block is cut short.
     """
     with path.open("rb") as stream, mmap.mmap(stream.fileno(), 0, access=mmap.ACCESS_READ) as data:
         head = data[:1024].splitlines()
@@ -38,23 +45,30 @@ def check_vtk_legacy(path: Path) -> None:
                 str(path),
                 "Check that the suffix tells what the file is",
             )
-        if len(head) < 3 or not head[2].strip().upper().startswith(b"ASCII"):
-            return
-        body = data.find(b"\n", data.find(head[2], len(head[0])))
-        blocks = list(_KEYWORD.finditer(data, body)) if body >= 0 else []
-        if not blocks:
-            return
-        lines = [block[0].split() for block in blocks]
-        needed = _values_needed(lines)
-        if needed is None:
-            return
-        held = len(data[blocks[-1].end() :].split())
-        if held < needed:
-            raise FileError(
-                f"its last block '{b' '.join(lines[-1]).decode('utf-8', 'replace')}' holds {held} values of {needed}",
-                str(path),
-                "It was cut short or is still being written; export or copy it again",
-            )
+        kind = head[2].strip().upper() if len(head) > 2 else b""
+        body = data.find(b"\n", data.find(head[2], len(head[0]))) if kind else -1
+        text = kind.startswith(b"ASCII")
+        if body >= 0 and (text or kind.startswith(b"BINARY")):
+            blocks = list(KEYWORD.finditer(data, body)) if text else None
+            if blocks:
+                _require_last_block(data, blocks, str(path))
+            require_room(data, body, blocks, str(path))
+    return ending_notes(path) if text else ()
+
+
+def _require_last_block(data: Any, blocks: list[re.Match[bytes]], where: str) -> None:
+    """Raise if the last block of an ASCII file holds fewer values than it announces."""
+    lines = [block[0].split() for block in blocks]
+    needed = _values_needed(lines)
+    if needed is None:
+        return
+    held = len(data[blocks[-1].end() :].split())
+    if held < needed:
+        raise FileError(
+            f"its last block '{b' '.join(lines[-1]).decode('utf-8', 'replace')}' holds {held} values of {needed}",
+            where,
+            "It was cut short or is still being written; export or copy it again",
+        )
 
 
 def legacy_holds_polyhedra(path: Path) -> bool:

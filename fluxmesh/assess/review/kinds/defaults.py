@@ -119,10 +119,9 @@ def _gravity(evidence: Evidence) -> Doubt | None:
 
 
 def _anchor(evidence: Evidence) -> Doubt | None:
-    points = evidence.surface.points
     if "anchor.at" in evidence.stated or evidence.balance.reaction is None or not evidence.walls:
         return None
-    low, high = points.min(axis=0), points.max(axis=0)
+    low, high = evidence.box
     away, size = float(np.linalg.norm((low + high) / 2)), float(np.linalg.norm(high - low))
     if away <= _OUTSIDE * size:
         return None

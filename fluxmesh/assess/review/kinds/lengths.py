@@ -100,7 +100,7 @@ def _by_supplied_flow(evidence: Evidence) -> Doubt | None:
 
 
 def _by_size(evidence: Evidence) -> Doubt | None:
-    size = float(np.linalg.norm(np.ptp(evidence.surface.points, axis=0)))
+    size = float(evidence.size)
     seen = f"The surface is {size:.3g} m across, its coordinates read as {evidence.length_unit}"
     if size >= LARGEST and evidence.length_unit != "mm":
         return _unit_doubt(seen, "mm")

@@ -30,7 +30,7 @@ def precision_doubts(evidence: Evidence) -> Iterator[Doubt]:
     """
     if not evidence.single:
         return
-    far = float(np.abs(evidence.surface.points).max())
+    far = float(np.abs(evidence.box).max())
     face = float(np.sqrt(float(evidence.balance.table.total("area")) / evidence.surface.face_count))
     rounding = far * float(np.finfo(np.float32).eps) / 2
     if face > 0.0 and rounding > _COARSE * face:

@@ -153,7 +153,7 @@ def _wrong_frame(evidence: Evidence, moving: list[tuple[str, RigidMotion]]) -> D
     motion = moving[0][1]
     rate, speed = float(np.linalg.norm(motion.rotation)), float(np.linalg.norm(motion.velocity))
     parts = []
-    if rate > 0 and rate * float(np.linalg.norm(np.ptp(evidence.surface.points, axis=0))) > 1e-2 * speed:
+    if rate > 0 and rate * evidence.size > 1e-2 * speed:
         axis = np.round(motion.rotation / rate, 3) + 0.0
         parts.append(f"turns at {rate:.4g} rad/s about ({', '.join(f'{x:g}' for x in axis)})")
     if speed > 1e-2 * evidence.port_speed or not parts:
