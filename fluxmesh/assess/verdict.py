@@ -169,9 +169,7 @@ def verdict_of(
             measures.append(share)
             reasons.append(_compare(law, share, tolerance))
     if energy is not None and energy.gains(tolerance):
-        reasons.append(
-            "Doubt: the flow gains mechanical energy from nowhere: a drive is missing, or data are at fault"
-        )
+        reasons.append("Doubt: the flow gains mechanical energy from nowhere: a drive is missing, or data are at fault")
     measure = max(measures) if measures else None
     closes: bool | None = None
     if measure is not None and measure > tolerance:

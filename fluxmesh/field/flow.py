@@ -22,22 +22,23 @@ from fluxmesh.field.frame import Frame
 from fluxmesh.field.pressure import PressureMeaning, pressure_terms
 from fluxmesh.field.relative import needs_samples, relative_velocity
 from fluxmesh.integral.kernel import integrate
-from fluxmesh.integral.layout import (
-    ABSENT,
-    AT_SAMPLE,
-    PER_GROUP,
-    FaceArrays,
-    FlowArrays,
-    PressureTerms,
-    Runs,
-    make_runs,
-)
+from fluxmesh.integral.layout import ABSENT, AT_SAMPLE, PER_GROUP, FaceArrays, FlowArrays, PressureTerms, runs_over
 from fluxmesh.integral.samples import sample_places
 from fluxmesh.integral.table import IntegralTable
 from fluxmesh.surface.extent import used_box
 from fluxmesh.surface.surface import ControlSurface, Role
 
-__all__ = ["Flow", "face_arrays_of", "integrate_flow", "lay_flow", "near_origin", "require_flow", "still_flow"]
+__all__ = [
+    "Flow",
+    "face_arrays_of",
+    "gauge_terms",
+    "integrate_flow",
+    "lay_flow",
+    "near_origin",
+    "require_finite_table",
+    "require_flow",
+    "still_flow",
+]
 
 
 @dataclass(frozen=True, eq=False)
@@ -314,11 +315,25 @@ def face_arrays_of(surface: ControlSurface) -> FaceArrays:
     )
 
 
-def _runs_over(surface: ControlSurface, faces: NDArray[np.int64] | None) -> Runs:
-    if faces is None:
-        return make_runs(surface.group_of_face, surface.kinds)
-    runs = make_runs(surface.group_of_face[faces], None if surface.kinds is None else surface.kinds[faces])
-    return runs._replace(order=faces[runs.order] if runs.order.size else faces)
+def gauge_terms(flow: Flow, origin: NDArray[np.float64]) -> PressureTerms:
+    """Return what makes gauge pressure with its head out of the pressure of a flow.
+
+    Parameters
+    ----------
+    flow : Flow
+        The flow.
+    origin : ndarray, shape (3,), float64
+        Origin of the integration, m.
+    """
+    if not flow.pressure.present().any():
+        return PressureTerms(False, 0.0, 0.0, 0.0, 0.0)
+    return pressure_terms(
+        flow.meaning,
+        ambient=flow.ambient,
+        density=flow.uniform_density(),
+        gravity=np.asarray(flow.gravity),
+        origin=origin,
+    )
 
 
 def integrate_flow(
@@ -355,15 +370,7 @@ def integrate_flow(
         Integrals that overflow.
     """
     origin = near_origin(surface) if origin is None else origin
-    terms = PressureTerms(False, 0.0, 0.0, 0.0, 0.0)
-    if flow.pressure.present().any():
-        terms = pressure_terms(
-            flow.meaning,
-            ambient=flow.ambient,
-            density=flow.uniform_density(),
-            gravity=np.asarray(flow.gravity),
-            origin=origin,
-        )
+    terms = gauge_terms(flow, origin)
     mesh = face_arrays_of(surface)
     arrays = FlowArrays(
         velocity=flow.velocity.arrays(),
@@ -377,11 +384,25 @@ def integrate_flow(
     table = integrate(
         mesh=mesh,
         flow=arrays,
-        runs=_runs_over(surface, faces),
+        runs=runs_over(surface.group_of_face, surface.kinds, faces),
         origin=origin,
         still_groups=np.array([group.role in (Role.WALL, Role.SYMMETRY) for group in surface.groups]),
         threads=threads,
     )
+    require_finite_table(surface, table)
+    return table
+
+
+def require_finite_table(surface: ControlSurface, table: IntegralTable) -> None:
+    """Raise a `FieldError` if integrals overflow.
+
+    Parameters
+    ----------
+    surface : ControlSurface
+        The surface.
+    table : IntegralTable
+        Its integrals.
+    """
     if not np.isfinite(table.values).all():
         group = surface.groups[int(np.flatnonzero(~np.isfinite(table.values).all(axis=1))[0])].name
         raise FieldError(
@@ -389,4 +410,3 @@ def integrate_flow(
             where=f"group '{group}'",
             remedy="Check coordinates and field values for absurd sizes",
         )
-    return table

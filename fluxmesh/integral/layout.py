@@ -19,6 +19,7 @@ __all__ = [
     "PressureTerms",
     "Runs",
     "make_runs",
+    "runs_over",
     "sampled_groups",
 ]
 
@@ -174,6 +175,29 @@ def make_runs(group_of_face: NDArray[np.int32], kinds: NDArray[np.int8] | None, 
     curved = (heads % 2 == 1) if kinds is not None else np.zeros(start.size, dtype=np.bool_)
     group = (heads // 2 if kinds is not None else heads).astype(np.int32)
     return Runs(order, np.append(start, count), group, curved)
+
+
+def runs_over(
+    group_of_face: NDArray[np.int32], kinds: NDArray[np.int8] | None, faces: NDArray[np.int64] | None
+) -> Runs:
+    """Cut some of the faces into runs of one group and one family.
+
+    Parameters
+    ----------
+    group_of_face, kinds
+        As for `make_runs`.
+    faces : ndarray, shape (n,), int64, or None
+        Faces wanted; None for all.
+
+    Returns
+    -------
+    Runs
+        With the numbers that the faces have in the whole surface.
+    """
+    if faces is None:
+        return make_runs(group_of_face, kinds)
+    runs = make_runs(group_of_face[faces], None if kinds is None else kinds[faces])
+    return runs._replace(order=faces[runs.order] if runs.order.size else faces)
 
 
 def sampled_groups(flow: FlowArrays) -> NDArray[np.bool_]:
