@@ -13,7 +13,7 @@ import typer
 
 from fluxmesh.errors import FluxmeshError, FluxmeshWarning, PictureError
 
-__all__ = ["app", "balance", "check", "main", "start"]
+__all__ = ["app", "balance", "check", "convergence", "main", "start"]
 
 app = typer.Typer(
     help="Mass and momentum balance over a closed, tagged surface: loads on hardware, the reaction at the anchor, "
@@ -174,6 +174,35 @@ def check(
     review = check_case(read_case(case))
     print_review(_console(), review)
     raise typer.Exit(1 if strict and review.doubts else 0)
+
+
+@app.command(epilog="Example: fluxmesh convergence coarse.toml medium.toml fine.toml --figure reaction.force")
+def convergence(
+    cases: Annotated[
+        list[Path],
+        typer.Argument(metavar="CASE CASE CASE", help="The same flow on three meshes or more.", show_default=False),
+    ],
+    figures: Annotated[
+        list[str] | None,
+        typer.Option(
+            "--figure",
+            help='Key of balance.json, such as "reaction.force.x" or "groups.*.mass_flow"; may be given again.',
+            show_default="loads, port flows, volume",
+        ),
+    ] = None,
+    json: Annotated[Path | None, typer.Option("--json", help="File for the same as JSON.", show_default=False)] = None,
+) -> None:
+    """Say what the meshes leave open in a figure: apparent order, extrapolated value, grid convergence index."""
+    from fluxmesh.case.read import read_case
+    from fluxmesh.job.convergence import study_of
+    from fluxmesh.report.convergence import print_study
+    from fluxmesh.report.result import write_json
+
+    study = study_of([read_case(case) for case in cases], figures=figures or ())
+    print_study(_console(), study.cases, study.faces, study.sizes, study.figures, study.assumptions)
+    if json is not None:
+        write_json(study.data(), json)
+        typer.echo(f"\nWritten: {json}")
 
 
 @app.command(epilog='Example: fluxmesh start export.vtp --density "880 kg/m^3" --to case.toml')

@@ -104,7 +104,8 @@ def table(title: str, columns: Sequence[tuple[str, str]], rows: Iterable[Sequenc
 
     made = Table(title=title, title_justify="left", title_style="bold", box=box.HORIZONTALS, pad_edge=False)
     for heading, justify in columns:
-        made.add_column(heading, justify="right" if justify == "right" else "left", no_wrap=justify == "right")
+        right = justify == "right"
+        made.add_column(heading, justify="right" if right else "left", no_wrap=right, overflow="fold")
     for cells in rows:
         made.add_row(*(Text(cell) for cell in cells))
     return made
