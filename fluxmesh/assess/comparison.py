@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from fluxmesh.assess.telling import LoadParts, telling_differences
 from fluxmesh.balance.balance import Balance
 from fluxmesh.balance.wrench import Vector
 from fluxmesh.errors import GroupError
@@ -27,6 +28,8 @@ class Comparison:
         The same from the integrals over those groups.
     relative : float or None
         Length of the force's difference over that of the reported force.
+    explanations : tuple of str
+        What would explain the difference, best first; empty where the loads agree or nothing tells.
     """
 
     on: tuple[str, ...]
@@ -35,6 +38,7 @@ class Comparison:
     force: Vector
     moment: Vector
     relative: float | None
+    explanations: tuple[str, ...] = ()
 
 
 def compare_reported(
@@ -43,6 +47,8 @@ def compare_reported(
     force: tuple[float, float, float] | None,
     moment: tuple[float, float, float] | None,
     on: tuple[str, ...] | None,
+    density: float | None = None,
+    doubt: Vector | None = None,
 ) -> Comparison:
     """Compare a reported load with the integrals over the same groups.
 
@@ -54,6 +60,10 @@ def compare_reported(
         As reported: flow on hardware, N, and N m about the anchor.
     on : tuple of str or None
         Groups; all walls by default.
+    density : float, optional
+        Uniform density of the fluid, kg/m³.
+    doubt : ndarray, shape (3,), float64, optional
+        Half width of the doubt of our force on these groups, N.
 
     Returns
     -------
@@ -79,11 +89,38 @@ def compare_reported(
     turning = -(balance.angular.pressure(chosen) + balance.angular.viscous(chosen))
     theirs = None if force is None else np.asarray(force, dtype=np.float64)
     size = 0.0 if theirs is None else float(np.linalg.norm(theirs))
+    turned = None if moment is None else np.asarray(moment, dtype=np.float64)
+    parts = LoadParts(
+        pressure=-balance.momentum.pressure(chosen),
+        viscous=-balance.momentum.viscous(chosen),
+        pressure_moment=-balance.angular.pressure(chosen),
+        viscous_moment=-balance.angular.viscous(chosen),
+        area_vector=balance.table.total("area_vector", chosen),
+        weight=balance.momentum.weight,
+        density=density,
+        ambient=setting.ambient,
+    )
     return Comparison(
         names,
         theirs,
-        None if moment is None else np.asarray(moment, dtype=np.float64),
+        turned,
         ours,
         turning,
         float(np.linalg.norm(ours - theirs)) / size if theirs is not None and size > 0 else None,
+        telling_differences(parts, theirs, turned, points=_other_points(balance), doubt=doubt),
     )
+
+
+def _other_points(balance: Balance) -> dict[str, Vector]:
+    """Points that a solver may take moments about, as seen from the anchor."""
+    anchor = np.asarray(balance.setting.anchor, dtype=np.float64)
+    points = {"the origin of the coordinates": -anchor}
+    if balance.enclosed is not None:
+        points["the centre of the volume"] = balance.enclosed.centroid - anchor
+    if balance.setting.hardware is not None:
+        points["the centre of the hardware"] = np.asarray(balance.setting.hardware.centre) - anchor
+    area, position = balance.table.column("area"), balance.table.column("position")
+    for k, group in enumerate(balance.setting.groups):
+        if group.role.is_port and area[k] > 0:
+            points[f"the middle of {group.name}"] = balance.table.origin + position[k] / area[k] - anchor
+    return {name: arm for name, arm in points.items() if np.any(arm)}

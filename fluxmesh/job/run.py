@@ -262,4 +262,11 @@ def run_case(
     asked = case.reported
     if asked is None:
         return done
-    return replace(done, comparison=compare_reported(done.balance, force=asked.force, moment=asked.moment, on=asked.on))
+    comparison = compare_reported(
+        done.balance,
+        force=asked.force,
+        moment=asked.moment,
+        on=asked.on,
+        density=flow.uniform_density(),
+    )
+    return replace(done, comparison=comparison)

@@ -182,6 +182,7 @@ def _comparison_lines(comparison: Comparison | None) -> list[str]:
             f"Reported by the solver on {on}: moment {row(comparison.reported_moment)} N m, "
             f"here {row(comparison.moment)} N m (compared, not used)."
         )
+    lines += [f"Telling: {text}." for text in comparison.explanations]
     return lines
 
 
