@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import contextlib
 import gc
+import io
+import os
 import signal
 import sys
 import warnings
@@ -266,12 +269,35 @@ def main() -> None:
     warnings.simplefilter("ignore")
     warnings.simplefilter("once", FluxmeshWarning)
     warnings.formatwarning = lambda message, *_args, **_options: f"fluxmesh: {message}\n"
+    if sys.stdout is None:  # closed by whoever called us
+        sys.stdout = open(os.devnull, "w", encoding="utf-8")  # noqa: SIM115
+    for stream in (sys.stdout, sys.stderr):
+        # a name that the terminal cannot show is no reason to stop
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")
     try:
-        app(prog_name="fluxmesh")
+        try:
+            app(prog_name="fluxmesh")
+        finally:
+            if sys.stdout is not None:
+                sys.stdout.flush()
     except FluxmeshError as error:
-        typer.echo(f"fluxmesh: {error}", err=True)
-        sys.exit(2)
+        _end(str(error))
     except MemoryError:
-        said = "the memory does not suffice for this input. A count in a damaged file may ask for far too much"
+        _end("the memory does not suffice for this input. A count in a damaged file may ask for far too much")
+    except OSError as error:
+        # a path that no system call takes, or a terminal or disk that takes no more
+        what = f"{error.filename}: " if error.filename is not None else ""
+        _end(f"{what}{error.strerror or error}")
+    except RecursionError:
+        _end("the input is nested too deeply")
+
+
+def _end(said: str) -> None:
+    with contextlib.suppress(OSError, ValueError):
         typer.echo(f"fluxmesh: {said}", err=True)
-        sys.exit(2)
+    if sys.stdout is not None:
+        # what is left for a stream that cannot take it must not end in a message of the interpreter
+        with contextlib.suppress(OSError, ValueError):
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    sys.exit(2)

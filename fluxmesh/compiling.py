@@ -71,8 +71,8 @@ def _compiled(function: _Kernel, **options: str) -> _Kernel:
 def thread_count() -> int:
     """Return how many threads to use: ``FLUXMESH_THREADS`` or the cores this process may use."""
     asked = os.environ.get("FLUXMESH_THREADS", "")
-    if asked.isdecimal() and int(asked) > 0:
-        return min(int(asked), 256)
+    if asked.isdecimal() and asked.strip("0"):
+        return min(int(asked[:12]), 256)
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 

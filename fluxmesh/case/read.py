@@ -42,6 +42,9 @@ def read_case(path: Path) -> Case:
         A quantity has an unknown unit or the wrong dimension.
     """
     path = Path(path)
+    if path.is_fifo() or path.is_socket():
+        # it would wait for a writer, perhaps for ever
+        raise FileError("this is no regular file", where=str(path), remedy="Give the path of a case file")
     try:
         with path.open("rb") as stream:
             content = stream.read(_LARGEST_FILE + 1)
