@@ -57,6 +57,7 @@ title = "Oil distribution block, {level} mesh"
 [surface]
 file = "manifold_{level}.vtp"
 length_unit = "mm"                      # the export is in millimetres; all else is SI
+facets_are_geometry = true              # the flow was computed within these very facets
 groups = {{ array = "region" }}           # one integer a face
 
 [fluid]

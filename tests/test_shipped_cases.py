@@ -94,3 +94,23 @@ def test_the_lift_of_the_rotor_is_that_of_kutta_and_joukowski() -> None:
 
 def test_the_shipped_files_are_small() -> None:
     assert sum(path.stat().st_size for path in MESHES.rglob("*")) < 10e6
+
+
+@pytest.fixture(scope="module")
+def sharpened_rows() -> list[dict]:
+    return script("sharpened_table").rows()
+
+
+def test_sharpened_port_flows_are_far_nearer_to_the_computed_ones(sharpened_rows) -> None:
+    assert len(sharpened_rows) == 9
+    for row in sharpened_rows:
+        for column in ("mass_flow", "momentum_flux"):
+            assert row[f"{column} sharpened"] < row[f"{column} plain"] / 5, row
+
+
+def test_the_table_of_sharpened_flows_is_the_one_computed(sharpened_rows) -> None:
+    text = (MESHES / "README.md").read_text(encoding="utf-8")
+    for row in sharpened_rows:
+        line = next(line for line in text.splitlines() if line.startswith(f"| {row['mesh']} | {row['port']} |"))
+        for column in ("mass_flow", "momentum_flux"):
+            assert f"{row[f'{column} plain']:.3%} | {row[f'{column} sharpened']:.3%}" in line

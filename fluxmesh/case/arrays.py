@@ -328,6 +328,9 @@ class FlowSection(Table):
         Specific enthalpy, for the energy.
     stress, velocity_gradient : StressArray or GradientArray, or None
         What the viscous traction is made of, in place of `traction`.
+    reconstruction : {"linear", "quadratic"}
+        Whether the values reported are those of the fields as exported, or of
+        quadratic patches recovered from them.
     volume : VolumeSource or None
         Where the arrays are: in a volume file. By default in the file of the surface.
     points : PointSource or None
@@ -343,5 +346,6 @@ class FlowSection(Table):
     enthalpy: EnthalpyArray | None = None
     stress: StressArray | None = None
     velocity_gradient: GradientArray | None = None
+    reconstruction: Literal["linear", "quadratic"] = "linear"
     volume: Annotated[VolumeSource, BeforeValidator(file_alone)] | None = None
     points: Annotated[PointSource, BeforeValidator(file_alone)] | None = None

@@ -74,6 +74,9 @@ class SurfaceSection(Table):
         Whether the skin of the file's volume cells is the surface.
     mirror : bool
         Whether a part model cut at its symmetry groups is reported whole.
+    facets_are_geometry : bool
+        Whether the flow was computed within these very facets, so that they stand
+        for no curved surface.
     """
 
     file: FilePath | None = None
@@ -84,6 +87,7 @@ class SurfaceSection(Table):
     weld: Length | None = None
     skin: bool = False
     mirror: bool = False
+    facets_are_geometry: bool = False
 
 
 class FluidSection(Table):

@@ -121,6 +121,9 @@ def _surface(facts: Facts) -> Section:
     section.entries.append(Entry("file", facts.named))
     why = "as given" if facts.unit_given else f"guessed from the size: {size:.4g} m across"
     section.entries.append(Entry("length_unit", facts.length_unit, why))
+    if facts.best("velocity") is not None or facts.best("pressure") is not None:
+        remark = "a flow was computed within these facets; false where they only stand for a curved wall"
+        section.entries.append(Entry("facets_are_geometry", True, remark))
     if facts.found.naming is not None:
         section.entries.append(Entry("groups", facts.found.naming))
     if not facts.body.closed:
