@@ -28,6 +28,7 @@ if TYPE_CHECKING:
     from fluxmesh.job.outcome import Outcome
     from fluxmesh.job.run import balance_of, run_case
     from fluxmesh.job.scalars import Carried, Scalars
+    from fluxmesh.report.notebook import html_of
     from fluxmesh.surface.build import control_surface
     from fluxmesh.surface.surface import ControlSurface
 
@@ -47,6 +48,7 @@ __all__ = [
     "__version__",
     "balance_of",
     "control_surface",
+    "html_of",
     "lay_flow",
     "lay_scalar",
     "read_case",
@@ -70,6 +72,7 @@ _HOMES = {
     "Storage": "fluxmesh.balance.storage",
     "balance_of": "fluxmesh.job.run",
     "control_surface": "fluxmesh.surface.build",
+    "html_of": "fluxmesh.report.notebook",
     "lay_flow": "fluxmesh.field.flow",
     "lay_scalar": "fluxmesh.field.scalars",
     "read_case": "fluxmesh.case.read",

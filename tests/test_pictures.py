@@ -390,11 +390,13 @@ def test_points_far_out_do_not_shrink_the_picture() -> None:
     assert np.linalg.norm(pulled_in(scene, far) - [1.0, 0.5, 0.5]) < size
     near = np.array([0.0, 0.0, 0.0])
     assert pulled_in(scene, near) is near
-    reaction = replace(scene.arrows[6], at=far)
+    reaction = replace(scene.arrows[6], at=far, through=far)
     # A resultant slides along its line to where the line passes the surface: it is not moved off it.
-    load = replace(scene.arrows[5], at=np.array([1.0, 0.5, 0.4]) + 500.0 * np.array([1e3, 0.0, -900.0]) / 1345.36)
+    away = np.array([1.0, 0.5, 0.4]) + 500.0 * np.array([1e3, 0.0, -900.0]) / 1345.36
+    load = replace(scene.arrows[5], at=away, through=np.array([1.0, 0.5, 0.4]))
     items = drawn(replace(scene, arrows=(reaction, load)), front_view())
     assert items["R"].moved
+    assert items["R"].line is None
     assert not items["L"].moved
     assert items["L"].line is not None
     ahead = np.array([1e3, -900.0]) / np.hypot(1e3, 900.0)
@@ -416,19 +418,24 @@ def test_kinds_of_arrow_differ_in_form_and_roles_in_grey() -> None:
 
 def test_every_force_has_a_row_under_its_bodies() -> None:
     items = list(drawn(box_scene(), front_view()).values())
-    rows, shrink, left_out = stack_rows(items, 900.0)
-    assert shrink == 1.0
-    assert left_out == 0
-    assert [row.item.tag if row.item else row.heading for row in rows] == [
+    listing = stack_rows(items, 900.0)
+    assert (listing.shrink, listing.one_line, listing.left_out) == (1.0, False, 0)
+    assert [row.item.tag if row.item else row.heading for row in listing.rows] == [
         "surroundings on control volume", "P1", "P2", "M1", "M2",
         "earth on fluid", "W", "flow on hardware", "L", "anchor on hardware", "R",
     ]  # fmt: skip
-    rows, shrink, left_out = stack_rows(items, 250.0)
-    assert left_out > 0
-    assert 0.7 <= shrink <= 1.0
-    kept = [row.item.arrow.magnitude for row in rows if row.item]
-    assert min(kept) >= sorted(item.arrow.magnitude for item in items)[left_out]
-    assert stack_rows([], 100.0) == ([], 1.0, 0)
+    # with less room a force takes one line, and only then the smallest go
+    listing = stack_rows(items, 300.0)
+    assert (listing.one_line, listing.left_out) == (True, 0)
+    assert 0.7 <= listing.shrink <= 1.0
+    listing = stack_rows(items, 150.0)
+    assert listing.left_out > 0
+    assert 0.7 <= listing.shrink <= 1.0
+    kept = [row.item.arrow.magnitude for row in listing.rows if row.item]
+    assert min(kept) >= sorted(item.arrow.magnitude for item in items)[listing.left_out]
+    assert stack_rows([], 100.0).rows == []
+    only_ports = stack_rows([item for item in items if item.arrow.kind == "pressure"], 80.0)
+    assert only_ports.rows[0].heading == "surroundings on control volume: pressure at"
 
 
 # ---- view

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+import fluxmesh
 from fluxmesh.balance.frame import frame_terms, held_in, storage_about
 from fluxmesh.balance.hardware import HardwareLoad, Reaction, anchor_reaction, hardware_load
 from fluxmesh.balance.mass import MassBalance, mass_balance
@@ -85,6 +86,10 @@ class Balance:
     axial: Ledger | None = None
     power: Power | None = None
     contents: Contents | None = None
+
+    def _repr_html_(self) -> str:
+        """Show loads, mass and momentum in a notebook; the package's door loads what that needs."""
+        return fluxmesh.html_of(self)
 
 
 def balance_table(

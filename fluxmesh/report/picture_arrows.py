@@ -12,7 +12,7 @@ from fluxmesh.report.picture_ports import Port
 from fluxmesh.report.picture_view import View
 from fluxmesh.report.scene import ARROW_KINDS, Arrow, Scene
 
-__all__ = ["ARROW_STYLES", "ArrowStyle", "DrawnArrow", "Reach", "lay_out_arrows", "pulled_in", "reach_of"]
+__all__ = ["ARROW_STYLES", "ArrowStyle", "DrawnArrow", "Reach", "chained", "lay_out_arrows", "pulled_in", "reach_of"]
 
 # The longest arrow, as a share of the diagonal of the surface's box.
 _LONGEST_SHARE = 0.34
@@ -20,8 +20,16 @@ _LONGEST_SHARE = 0.34
 _LEAST_SHARE = 1e-6
 # Points farther than this from the middle of the surface's box, in diagonals, may not shrink the picture.
 _FARTHEST = 0.75
+# Room around a marker that arrows keep clear of, in pixels of a picture 1600 wide.
+_MARKER_ROOM = 12.0
+# An arrow steps aside at most so many times.
+_MOST_STEPS = 8
 # An arrow that keeps less than this share of its length in the picture becomes a point or a cross in a ring.
 _END_ON = 0.12
+
+
+# Two ends and half a width, in pixels.
+_Bar = tuple[NDArray[np.float64], NDArray[np.float64], float]
 
 
 @dataclass(frozen=True)
@@ -82,7 +90,7 @@ class DrawnArrow:
     drawn : bool
         False for a force too small to be drawn.
     line : ndarray, shape (2, 2), float64, or None
-        Two pixels on the line of action, for a resultant.
+        Two pixels on the line of action, where that is known and near.
     """
 
     tag: str
@@ -111,6 +119,8 @@ class Reach:
         Ends at that scale in metres.
     moved : ndarray, shape (n,), bool
         Whether the point had to be moved.
+    through : ndarray, shape (n, 3), float64
+        A point of the line of action; NaN where that is not known, or too far off to be shown.
     """
 
     metres_per_newton: float
@@ -118,6 +128,7 @@ class Reach:
     tail: NDArray[np.float64]
     tip: NDArray[np.float64]
     moved: NDArray[np.bool_]
+    through: NDArray[np.float64]
 
 
 def pulled_in(scene: Scene, point: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -144,7 +155,7 @@ def reach_of(scene: Scene, ports: Sequence[Port]) -> Reach:
     largest = max((arrow.magnitude for arrow in scene.arrows), default=0.0)
     scale = _LONGEST_SHARE * size / largest if largest > 0.0 else 0.0
     facing = {port.name: port.normal for port in ports}
-    points, tails, moved = [], [], []
+    points, tails, moved, through = [], [], [], []
     for arrow in scene.arrows:
         at, vector = arrow.at, arrow.vector
         if arrow.kind == "resultant" and arrow.magnitude > 0.0:
@@ -154,6 +165,8 @@ def reach_of(scene: Scene, ports: Sequence[Port]) -> Reach:
         shown = pulled_in(scene, at)
         moved.append(shown is not at)
         points.append(shown)
+        line = arrow.through
+        through.append(line if line is not None and pulled_in(scene, line) is line else np.full(3, np.nan))
         if arrow.kind == "reaction":
             arrives = float(vector @ (middle - shown)) > 0.0
         else:
@@ -161,7 +174,14 @@ def reach_of(scene: Scene, ports: Sequence[Port]) -> Reach:
         tails.append(shown - scale * vector if arrives else shown)
     tail = np.array(tails).reshape(-1, 3)
     vectors = np.array([arrow.vector for arrow in scene.arrows]).reshape(-1, 3)
-    return Reach(scale, np.array(points).reshape(-1, 3), tail, tail + scale * vectors, np.array(moved, dtype=bool))
+    return Reach(
+        metres_per_newton=scale,
+        at=np.array(points).reshape(-1, 3),
+        tail=tail,
+        tip=tail + scale * vectors,
+        moved=np.array(moved, dtype=bool),
+        through=np.array(through).reshape(-1, 3),
+    )
 
 
 def _tags(scene: Scene) -> list[str]:
@@ -182,6 +202,15 @@ def _tags(scene: Scene) -> list[str]:
     return tags
 
 
+def chained(arrows: Sequence[DrawnArrow]) -> DrawnArrow | None:
+    """Return the arrow whose line of action the picture shows: the reaction, or else the load, where they are drawn."""
+    for kind in ("reaction", "resultant"):
+        for item in arrows:
+            if item.drawn and item.arrow.kind == kind:
+                return item
+    return None
+
+
 def lay_out_arrows(scene: Scene, reach: Reach, view: View, unit: float) -> list[DrawnArrow]:
     """Place all arrows in the picture.
 
@@ -200,7 +229,8 @@ def lay_out_arrows(scene: Scene, reach: Reach, view: View, unit: float) -> list[
     -------
     list of DrawnArrow
         In the order of the scene's arrows. Arrows that would lie over one
-        another are shifted sideways by as little as will part them.
+        another, or over a marker that is not their own place, are shifted
+        sideways by as little as will part them.
     """
     if not scene.arrows:
         return []
@@ -208,7 +238,9 @@ def lay_out_arrows(scene: Scene, reach: Reach, view: View, unit: float) -> list[
     largest = max(arrow.magnitude for arrow in scene.arrows)
     start, end, at = view.project(reach.tail), view.project(reach.tip), view.project(reach.at)
     drawn: dict[int, DrawnArrow] = {}
-    placed: list[tuple[NDArray[np.float64], NDArray[np.float64], float]] = []
+    placed: list[_Bar] = []
+    room = _MARKER_ROOM * unit
+    markers = [view.project(pulled_in(scene, marker.at)) for marker in scene.markers]
     # ports first, then long before short: what is placed first stays at its own point
     order = sorted(
         range(len(tags)),
@@ -231,12 +263,14 @@ def lay_out_arrows(scene: Scene, reach: Reach, view: View, unit: float) -> list[
                 enlarged = true < least
                 step = direction[:2] / np.linalg.norm(direction[:2]) * least
                 tail, tip = (at[i] - step, at[i]) if fixed_tip else (at[i], at[i] + step)
-            shift = _sidestep(tail, tip, 0.5 * style.head_width * unit, placed, 6.0 * unit)
+            strange = [(one, one, room) for one in markers if float(np.linalg.norm(one - at[i])) > 2.0 * room]
+            shift = _sidestep(tail, tip, 0.5 * style.head_width * unit, [*placed, *strange], 6.0 * unit)
             tail, tip = tail + shift, tip + shift
             placed.append((tail, tip, 0.5 * style.head_width * unit))
         line = None
-        if arrow.kind == "resultant" and visible and not end_on and not reach.moved[i]:
-            line = np.array([at[i], at[i] + (tip - tail)])
+        if visible and not end_on and np.isfinite(reach.through[i]).all():
+            on_it = view.project(reach.through[i])
+            line = np.array([on_it, on_it + (tip - tail)])
         drawn[i] = DrawnArrow(tags[i], arrow, tail, tip, at[i], end_on, enlarged, bool(reach.moved[i]), visible, line)
     return [drawn[i] for i in range(len(tags))]
 
@@ -245,7 +279,7 @@ def _sidestep(
     tail: NDArray[np.float64],
     tip: NDArray[np.float64],
     half: float,
-    placed: list[tuple[NDArray[np.float64], NDArray[np.float64], float]],
+    placed: list[_Bar],
     gap: float,
 ) -> NDArray[np.float64]:
     """Return the smallest shift square to an arrow that frees it from those placed before."""
@@ -253,7 +287,16 @@ def _sidestep(
     side = np.array([1.0, 0.0]) if length == 0.0 else np.array([tail[1] - tip[1], tip[0] - tail[0]]) / length
     stations = np.linspace(0.0, 1.0, 25)[:, None]
     best, least = np.zeros(2), np.inf
-    for step in range(9):
+    # whatever lies farther off than the widest shift reaches cannot be in the way
+    low, high = np.minimum(tail, tip), np.maximum(tail, tip)
+    widest = half + gap + _MOST_STEPS * 0.7 * (half + gap)
+    placed = [
+        bar
+        for bar in placed
+        if (np.minimum(bar[0], bar[1]) < high + widest + bar[2]).all()
+        and (np.maximum(bar[0], bar[1]) > low - widest - bar[2]).all()
+    ]
+    for step in range(_MOST_STEPS + 1):
         for sign in (1.0, -1.0) if step else (1.0,):
             shift = side * (sign * step * (half + gap) * 0.7)
             mine = tail + shift + stations * (tip - tail)

@@ -129,7 +129,7 @@ def _cost(
     nearest = np.clip(anchor, boxes[:, :2], boxes[:, 2:])
     cost = np.linalg.norm(nearest - anchor, axis=1) / size[1]
     # a label over its own anchor hides it
-    cost += 3.0 * (nearest == anchor).all(axis=1)
+    cost += 6.0 * (nearest == anchor).all(axis=1)
     away = 0.5 * (boxes[:, :2] + boxes[:, 2:]) - anchor
     if wish.any():
         turn = (away @ wish) / np.maximum(np.linalg.norm(away, axis=1) * np.linalg.norm(wish), 1e-9)

@@ -8,13 +8,13 @@ from dataclasses import dataclass
 import numpy as np
 
 from fluxmesh.assess.assumptions import CAUTIONS
-from fluxmesh.report.picture_arrows import ARROW_STYLES, DrawnArrow
+from fluxmesh.report.picture_arrows import ARROW_STYLES, DrawnArrow, chained
 from fluxmesh.report.picture_pressure import Bands
 from fluxmesh.report.picture_sheet import Sheet
-from fluxmesh.report.picture_text import engineering_vector
+from fluxmesh.report.picture_text import engineering, engineering_vector
 from fluxmesh.report.scene import ARROW_KINDS, Scene
 
-__all__ = ["ROLE_TINTS", "Row", "draw_footer", "draw_legend", "stack_rows"]
+__all__ = ["ROLE_TINTS", "Listing", "Row", "draw_footer", "draw_legend", "stack_rows"]
 
 #: Tints of groups that are no wall, from the "bright" and "light" schemes of Paul Tol, "Colour Schemes"
 #: (SRON/EPS/TN/09-002; from memory), chosen so that their grey values differ.
@@ -28,9 +28,12 @@ ROLE_TINTS = {
 # Heights in pixels of a picture 1600 wide.
 _HEADING = 36.0
 _ROW = 50.0
-_SMALLEST_ROW = 0.7
+_ONE_LINE = 27.0
+# Least shrinking of rows of two lines before they become one, and of those before the smallest force goes.
+_SMALLEST_ROW = 0.8
+_SMALLEST_LINE = 0.7
 _NOTE_LINE = 21.0
-_MOST_NOTE_LINES = 6
+_MOST_NOTE_LINES = 9
 
 
 @dataclass(frozen=True, eq=False)
@@ -49,7 +52,29 @@ class Row:
     item: DrawnArrow | None
 
 
-def stack_rows(arrows: Sequence[DrawnArrow], room: float) -> tuple[list[Row], float, int]:
+@dataclass(frozen=True, eq=False)
+class Listing:
+    """The list of forces as it fits.
+
+    Attributes
+    ----------
+    rows : list of Row
+        Headings and forces from the top.
+    shrink : float
+        Factor on the heights, 1 at most.
+    one_line : bool
+        Whether a force takes one line, not two.
+    left_out : int
+        Forces for which there is no room: the smallest.
+    """
+
+    rows: list[Row]
+    shrink: float
+    one_line: bool
+    left_out: int
+
+
+def stack_rows(arrows: Sequence[DrawnArrow], room: float) -> Listing:
     """Order the forces by the bodies that act, and shrink or shorten the list to fit.
 
     Parameters
@@ -61,28 +86,28 @@ def stack_rows(arrows: Sequence[DrawnArrow], room: float) -> tuple[list[Row], fl
 
     Returns
     -------
-    rows : list of Row
-        Headings and forces from the top.
-    shrink : float
-        Factor on the heights, 1 at most.
-    left_out : int
-        Forces for which there is no room: the smallest.
+    Listing
+        Two lines a force where there is room, else one.
     """
     kept = list(arrows)
-    while True:
-        bodies = list(dict.fromkeys(item.arrow.body for item in kept))
-        height = _HEADING * len(bodies) + _ROW * len(kept)
-        shrink = min(1.0, room / height) if kept else 1.0
-        if shrink >= _SMALLEST_ROW or not kept:
+    shrink, one_line = 1.0, False
+    while kept:
+        heads = _HEADING * len({item.arrow.body for item in kept})
+        shrink, one_line = min(1.0, room / (heads + _ROW * len(kept))), False
+        if shrink >= _SMALLEST_ROW:
+            break
+        shrink, one_line = min(1.0, room / (heads + _ONE_LINE * len(kept))), True
+        if shrink >= _SMALLEST_LINE:
             break
         kept.remove(min(kept, key=lambda item: item.arrow.magnitude))
     rows: list[Row] = []
-    for body in bodies:
-        rows.append(Row(body, None))
+    for body in dict.fromkeys(item.arrow.body for item in kept):
         mine = [item for item in kept if item.arrow.body == body]
         mine.sort(key=lambda item: ARROW_KINDS.index(item.arrow.kind))
+        at_ports = one_line and all(item.arrow.group is not None for item in mine)
+        rows.append(Row(f"{body}: {mine[0].arrow.kind} at" if at_ports else body, None))
         rows.extend(Row(body, item) for item in mine)
-    return rows, shrink, len(arrows) - len(kept)
+    return Listing(rows, shrink if kept else 1.0, one_line, len(arrows) - len(kept))
 
 
 def draw_legend(
@@ -123,23 +148,27 @@ def draw_legend(
     notes_height = _NOTE_LINE * len(notes) * u
     tints = _tints(scene, bands, window)
     tints_height = (34.0 * ((len(tints) + 1) // 2) + 8.0) * u
-    rows, shrink, left_out = stack_rows(arrows, (top - bottom - notes_height - tints_height) / u - 40.0)
+    listing = stack_rows(arrows, (top - bottom - notes_height - tints_height) / u - 40.0)
+    shrink = listing.shrink
     y = top
-    for row in rows:
+    for row in listing.rows:
         if row.item is None:
             y -= _HEADING * shrink * u
             text = sheet.ruler.cut(row.heading, 18 * shrink * u, right - left, True)
             sheet.text(left, y + 6 * shrink * u, text, 18 * shrink * u, bold=True)
             sheet.line([(left, y), (right, y)], 1.0 * u, colour="#999999")
+        elif listing.one_line:
+            y -= _ONE_LINE * shrink * u
+            _draw_line(sheet, row.item, left, right, y, shrink)
         else:
             y -= _ROW * shrink * u
             _draw_row(sheet, row.item, left, right, y, shrink)
-    if left_out:
+    if listing.left_out:
         y -= 24 * u
         sheet.text(
             left,
             y,
-            f"{left_out} smaller forces are drawn but not listed: see the result file",
+            f"{listing.left_out} smaller forces are drawn but not listed: see the result file",
             15 * u,
             colour="#444444",
         )
@@ -167,7 +196,7 @@ def _draw_row(sheet: Sheet, item: DrawnArrow, left: float, right: float, y: floa
     name = item.arrow.label + (" ‡" if item.moved else "")
     if not item.drawn:
         name += " (too small to draw)"
-    sheet.text(x, y + 27 * f, sheet.ruler.cut(name, 18 * f, right - x), 18 * f)
+    sheet.text(x, y + 27 * f, sheet.ruler.shorten(name, 18 * f, right - x), 18 * f)
     length, parts = engineering_vector([float(v) for v in item.arrow.vector], "N")
     sheet.text(x, y + 5 * f, length, 17 * f, bold=True)
     gap = sheet.ruler.width(length, 17 * f, True) + 12 * u
@@ -178,9 +207,37 @@ def _draw_row(sheet: Sheet, item: DrawnArrow, left: float, right: float, y: floa
     sheet.text(x + gap, y + 5 * f, parts, size)
 
 
+def _draw_line(sheet: Sheet, item: DrawnArrow, left: float, right: float, y: float, shrink: float) -> None:
+    """Draw one force in one line: a short sample of its arrow, its tag, its name and its numbers."""
+    u = sheet.unit
+    f = shrink * u
+    size = 15 * f
+    if item.drawn:
+        middle = y + 11 * f
+        ends = np.array([left + 2 * u, middle]), np.array([left + 38 * u, middle])
+        sheet.arrow(ARROW_STYLES[item.arrow.kind], *ends, 0.55 * shrink)
+    sheet.text(left + 46 * u, y + 6 * f, item.tag + ("†" if item.enlarged else ""), size, bold=True)
+    length, parts = engineering_vector([float(v) for v in item.arrow.vector], "N")
+    # numbers stand flush right and whole; the name takes what they leave
+    wide = min(sheet.ruler.width(parts, size), 230 * u)
+    fit = min(1.0, wide / sheet.ruler.width(parts, size))
+    sheet.text(right, y + 6 * f, parts, size * fit, across="right")
+    sheet.text(right - wide - 8 * u, y + 6 * f, length, size, bold=True, across="right")
+    x = left + 94 * u
+    room = right - wide - 18 * u - sheet.ruler.width(length, size, True) - x
+    name = item.arrow.label if item.arrow.group is None else item.arrow.group
+    name += (" ‡" if item.moved else "") + ("" if item.drawn else " (not drawn)")
+    sheet.text(x, y + 6 * f, sheet.ruler.shorten(name, size, room), size)
+
+
 def _remarks(arrows: Sequence[DrawnArrow]) -> list[str]:
     """Say what a reader must know to read the arrows that are there."""
     remarks = []
+    if any(item.arrow.kind == "momentum" and item.arrow.group is not None for item in arrows):
+        remarks.append(
+            "Pressure and momentum are drawn as forces on the fluid: momentum is the push of what passes a port, "
+            "minus the “momentum out” of the tables."
+        )
     if any(item.drawn for item in arrows):
         remarks.append(
             "Components are along x, y, z. Arrows are to scale in space, so they look shorter where they "
@@ -192,9 +249,21 @@ def _remarks(arrows: Sequence[DrawnArrow]) -> list[str]:
         remarks.append("‡ its point of application lies farther out than shown.")
     if any(item.end_on for item in arrows):
         remarks.append("Ring with a dot: towards the viewer; ring with a cross: away.")
-    if any(item.line is not None for item in arrows):
-        remarks.append("Chain line: line of action of the load.")
-    return remarks
+    chain = chained(arrows)
+    return remarks if chain is None else [*remarks, _on_the_line(chain)]
+
+
+def _on_the_line(item: DrawnArrow) -> str:
+    """Say what the chain line is, or why there is none."""
+    what = f"line of action of the {'reaction' if item.arrow.kind == 'reaction' else 'load'} {item.tag}"
+    if item.line is not None:
+        couple = f", with a couple of {engineering(item.arrow.couple, 'N·m')} about it" if item.arrow.couple else ""
+        return f"Chain line: {what}{couple}."
+    if item.arrow.through is None:
+        return f"The {what} is not known."
+    if item.end_on:
+        return f"The {what} is seen from its end."
+    return f"The {what} passes farther out than is shown."
 
 
 def _tints(scene: Scene, bands: Bands | None, window: float) -> list[tuple[str, tuple[float, ...], str]]:

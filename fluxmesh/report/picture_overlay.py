@@ -2,25 +2,27 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
 
-from fluxmesh.report.picture_arrows import ARROW_STYLES, DrawnArrow, pulled_in
+from fluxmesh.report.picture_arrows import ARROW_STYLES, DrawnArrow, chained, pulled_in
 from fluxmesh.report.picture_labels import place_labels
 from fluxmesh.report.picture_ports import Port
 from fluxmesh.report.picture_sheet import Sheet
+from fluxmesh.report.picture_text import clean_text
 from fluxmesh.report.picture_view import View
 from fluxmesh.report.scene import Scene
 
-__all__ = ["draw_overlay"]
+__all__ = ["clear_place", "draw_overlay"]
 
-# Darker than this is part of the surface.
-_WHITE = 250
 _TEXT = 18.0
 _WIDEST_LABEL = 260.0
+# With more ports than this, labels leave out the role: the tint tells it.
+_MANY_PORTS = 8
 
 
 @dataclass(frozen=True, eq=False)
@@ -41,7 +43,7 @@ def draw_overlay(
     ports: list[Port],
     arrows: list[DrawnArrow],
     view: View,
-    image: NDArray[np.uint8],
+    busy: NDArray[np.bool_],
     area: tuple[float, float, float, float],
 ) -> None:
     """Draw arrows, markers and labels over the image of the surface.
@@ -58,8 +60,8 @@ def draw_overlay(
         From `lay_out_arrows`.
     view : View
         The projection of the image.
-    image : ndarray, shape (height, width, 3), uint8
-        The picture of the surface in the area, on white, first row at the top.
+    busy : ndarray, shape (height, width), bool
+        Pixels of the area that the surface covers, first row at the bottom.
     area : tuple of float
         Left, bottom, right, top that all must stay in.
     """
@@ -70,9 +72,11 @@ def draw_overlay(
             for rim in port.rims:
                 sheet.line(view.project(rim), 2.0 * u, dashes=(9 * u, 5 * u), halo=2.0 * u)
     shown = [item for item in arrows if item.drawn]
-    for item in shown:
-        if item.line is not None:
-            _draw_line_of_action(sheet, item.line, area)
+    chain = chained(arrows)
+    line = None if chain is None or chain.line is None else _across(chain.line, sheet.size)
+    if line is not None:
+        dashes = (16 * u, 4 * u, 3 * u, 4 * u)
+        sheet.line(line.reshape(2, 2), 1.6 * u, colour="#333333", dashes=dashes, halo=2.0 * u, clip=area)
     for item in shown:
         if not item.end_on:
             foot = _nearest_on(item.at, item.start, item.end)
@@ -91,27 +95,27 @@ def draw_overlay(
 
     labels = [_tag_label(sheet, item) for item in shown]
     heart = view.project(0.5 * (scene.points.min(axis=0) + scene.points.max(axis=0)))
-    labels += [_port_label(sheet, port, view, heart) for port in ports]
+    rims = [view.project(rim) for port in ports for rim in port.rims]
+    labels += [_port_label(sheet, port, view, heart, rims, len(ports) <= _MANY_PORTS) for port in ports]
     for marker, at in markers:
         far = pulled_in(scene, marker.at) is not marker.at
         text = f"{marker.label} (farther out this way)" if far else marker.label
         labels.append(_label(sheet, text, at, np.zeros(2), edge="#bbbbbb"))
     r = 12.0 * u
     boxes = [np.concatenate([at - r, at + r]) for _, at in markers]
-    # the heads of arrows stay free
-    boxes += [_head_box(item, u) for item in shown]
+    # arrows stay free
+    boxes += [box for item in shown for box in _covering(item, u)]
     lines = [line for item in shown for line in _outline(item, u)]
     lines += [line for port in ports for line in _chords(port, view)]
-    busy = (image.min(axis=2) < _WHITE)[::-1]
+    lines += [] if line is None else [line]
     _draw_labels(sheet, labels, boxes, lines, busy, area)
 
 
-def _draw_line_of_action(sheet: Sheet, line: NDArray[np.float64], area: tuple[float, float, float, float]) -> None:
-    u = sheet.unit
+def _across(line: NDArray[np.float64], size: tuple[int, int]) -> NDArray[np.float64]:
+    """Return the ends, shape (4,), of a line through two pixels that runs across the whole sheet."""
     ahead = (line[1] - line[0]) / np.linalg.norm(line[1] - line[0])
-    reach = float(np.hypot(*sheet.size))
-    ends = [line[0] - reach * ahead, line[0] + reach * ahead]
-    sheet.line(ends, 1.6 * u, colour="#333333", dashes=(16 * u, 4 * u, 3 * u, 4 * u), halo=2.0 * u, clip=area)
+    reach = float(np.hypot(*size))
+    return np.concatenate([line[0] - reach * ahead, line[0] + reach * ahead])
 
 
 def _nearest_on(
@@ -122,16 +126,19 @@ def _nearest_on(
     return start + share * step
 
 
-def _head_box(item: DrawnArrow, unit: float) -> NDArray[np.float64]:
-    """Return the rectangle about the middle of an arrow's head."""
+def _covering(item: DrawnArrow, unit: float) -> list[NDArray[np.float64]]:
+    """Return small rectangles that cover an arrow."""
     style = ARROW_STYLES[item.arrow.kind]
-    middle = item.end
-    if not item.end_on:
-        middle = item.end - 0.5 * style.head_length * unit * (item.end - item.start) / np.linalg.norm(
-            item.end - item.start
-        )
-    half = 0.4 * style.head_width * unit
-    return np.concatenate([middle - half, middle + half])
+    if item.end_on:
+        half = 0.5 * style.head_width * unit
+        return [np.concatenate([item.start - half, item.start + half])]
+    length = float(np.linalg.norm(item.end - item.start))
+    ahead = (item.end - item.start) / length
+    half, tall = 0.5 * style.width * unit, 0.4 * style.head_width * unit
+    stations = np.linspace(0.0, length, math.ceil(length / (2.0 * half)) + 1)
+    boxes = [np.concatenate([at - half, at + half]) for at in item.start + stations[:, None] * ahead]
+    middle = item.end - 0.5 * style.head_length * unit * ahead
+    return [*boxes, np.concatenate([middle - tall, middle + tall])]
 
 
 def _outline(item: DrawnArrow, unit: float) -> list[NDArray[np.float64]]:
@@ -171,13 +178,23 @@ def _tag_label(sheet: Sheet, item: DrawnArrow) -> _Label:
     return _label(sheet, item.tag + mark, free, free - other, bold=True, edge=edge, extent=extent)
 
 
-def _port_label(sheet: Sheet, port: Port, view: View, heart: NDArray[np.float64]) -> _Label:
+def _port_label(
+    sheet: Sheet,
+    port: Port,
+    view: View,
+    heart: NDArray[np.float64],
+    rims: list[NDArray[np.float64]],
+    with_role: bool,
+) -> _Label:
     """Make number, name and role of a port, anchored inside of its rim on the side away from the middle."""
     u = sheet.unit
     middle = view.project(port.centroid)
     wanted = middle - heart
     anchor = middle
-    if port.rims:
+    if not port.normal.any() or (len(port.facing) and float((port.facing @ port.normal).min()) < 0.5):
+        # a group that is not one plane: its outline encloses places that are none of its own
+        anchor, wanted = clear_place(port, view, rims, middle), np.zeros(2)
+    elif port.rims:
         rim = view.project(np.vstack(port.rims))
         # of the port's outline the part that lies outward, but not where an arrow along the normal would lie
         normal = view.axes[:2] @ port.normal
@@ -186,9 +203,40 @@ def _port_label(sheet: Sheet, port: Port, view: View, heart: NDArray[np.float64]
         outward = wanted / max(float(np.linalg.norm(wanted)), 1e-9) + 2.0 * sideways
         anchor = middle + 0.75 * (rim[int(np.argmax(rim @ outward))] - middle)
         wanted = outward
-    room = (_WIDEST_LABEL - 30.0) * u - sheet.ruler.width(f"  · {port.role}", _TEXT * u)
-    short = sheet.ruler.cut(port.name, _TEXT * u, room)
-    return _label(sheet, f"{port.number} {short} · {port.role}", anchor, wanted, edge="#888888")
+    role = f" · {port.role}"
+    room = (_WIDEST_LABEL - 30.0) * u
+    # a long name needs the room of the role more
+    if not with_role or sheet.ruler.width(clean_text(port.name) + role, _TEXT * u) > room:
+        role = ""
+    short = sheet.ruler.shorten(port.name, _TEXT * u, room - sheet.ruler.width(role, _TEXT * u))
+    return _label(sheet, f"{port.number} {short}{role}", anchor, wanted, edge="#888888")
+
+
+def clear_place(
+    port: Port, view: View, rims: list[NDArray[np.float64]], middle: NDArray[np.float64]
+) -> NDArray[np.float64]:
+    """Return the pixel of a port that is turned to the viewer and lies farthest from all rims.
+
+    Parameters
+    ----------
+    port : Port
+        The port.
+    view : View
+        The projection.
+    rims : list of ndarray, shape (n, 2), float64
+        Pixels of the rims of all ports.
+    middle : ndarray, shape (2,), float64
+        Pixel to take where there is no better.
+    """
+    turned = port.facing @ view.axes[2] > 0.05
+    own = view.project(port.places[turned] if turned.any() else port.places)
+    if not len(own):
+        return middle
+    if not rims:
+        return np.asarray(own[int(np.argmin(np.linalg.norm(own - middle, axis=1)))])
+    lines = np.vstack([rim[:: max(1, len(rim) // 100)] for rim in rims])
+    clear = np.linalg.norm(own[:, None] - lines[None], axis=-1).min(axis=1)
+    return np.asarray(own[int(np.argmax(clear))])
 
 
 def _chords(port: Port, view: View) -> list[NDArray[np.float64]]:
@@ -229,7 +277,7 @@ def _draw_labels(
         nears = np.clip(ends, place[:2], place[2:])
         shortest = int(np.argmin(np.linalg.norm(nears - ends, axis=1)))
         end, near = ends[shortest], nears[shortest]
-        if float(np.linalg.norm(near - end)) > (10.0 if label.extent is None else 20.0) * u:
+        if float(np.linalg.norm(near - end)) > (3.0 if label.extent is None else 20.0) * u:
             sheet.line([end, near], 1.5 * u, colour="#444444", halo=2.5 * u)
             sheet.disc(end, 2.6 * u, "#444444", edge="white", width=1.0 * u)
     for label, place in zip(labels, places):

@@ -15,6 +15,8 @@ __all__ = ["Port", "find_ports"]
 _CLOSED = 1e-6
 # Shorter rims, as shares of the longest, are flaws of the mesh or of its thinning.
 _LEAST_RIM = 0.05
+# Most places of a port that are kept to hang its label on.
+_MOST_PLACES = 400
 
 
 @dataclass(frozen=True, eq=False)
@@ -33,6 +35,8 @@ class Port:
         Unit normal out of the fluid; zero for a group that closes on itself.
     rims : tuple of ndarray, shape (n, 3), float64
         Closed lines around the group, in metres; the last point repeats the first.
+    places, facing : ndarray, shape (n, 3), float64
+        Middles of some of its triangles, in metres, and the unit normals there.
     """
 
     number: int
@@ -41,6 +45,8 @@ class Port:
     centroid: NDArray[np.float64]
     normal: NDArray[np.float64]
     rims: tuple[NDArray[np.float64], ...]
+    places: NDArray[np.float64]
+    facing: NDArray[np.float64]
 
 
 def find_ports(scene: Scene) -> list[Port]:
@@ -60,6 +66,8 @@ def find_ports(scene: Scene) -> list[Port]:
         middles = scene.points[triangles].mean(axis=1)
         vector = vectors.sum(axis=0)
         length = float(np.linalg.norm(vector))
+        some = np.flatnonzero(areas > 0.0)
+        some = some[:: max(1, some.size // _MOST_PLACES)]
         ports.append(
             Port(
                 number=number,
@@ -68,6 +76,8 @@ def find_ports(scene: Scene) -> list[Port]:
                 centroid=areas @ middles / total if total > 0.0 else middles.mean(axis=0),
                 normal=vector / length if length > _CLOSED * total else np.zeros(3),
                 rims=_rims(scene.points, triangles),
+                places=middles[some],
+                facing=vectors[some] / areas[some, None],
             )
         )
     return ports

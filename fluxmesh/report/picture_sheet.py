@@ -16,17 +16,23 @@ __all__ = ["Sheet"]
 
 _INK = "#222222"
 _FONT = "DejaVu Sans"
+# On paper a pixel of the sheet is this many millimetres: 1600 of them are 256 mm, and text of 15 is 6.8 points.
+_PIXEL_MM = 0.16
+# Distance of the lines of a hatching, in pixels of a sheet 1600 by 1200.
+_HATCH = 6.0
 
 _Pair = NDArray[np.float64] | tuple[float, float]
 
 
 class Sheet:
-    """A white sheet in pixels, x to the right, y up; later marks lie over earlier ones.
+    """A sheet in pixels, x to the right, y up; later marks lie over earlier ones.
 
     Parameters
     ----------
     size : tuple of int
         Width and height in pixels.
+    paper : tuple of int or None
+        Colour of the sheet, red, green and blue up to 255; None for no paper at all.
 
     Attributes
     ----------
@@ -34,9 +40,13 @@ class Sheet:
         Pixels of this sheet for one of a sheet 1600 by 1200.
     ruler : Ruler
         Measures text.
+    halo : str
+        Colour of the rims that set a mark off from what lies below it.
+    figure : matplotlib.figure.Figure
+        All that was drawn, at its size on paper.
     """
 
-    def __init__(self, size: tuple[int, int]) -> None:
+    def __init__(self, size: tuple[int, int], paper: tuple[int, int, int] | None = (255, 255, 255)) -> None:
         """Lay out an empty sheet."""
         from matplotlib.backends.backend_agg import FigureCanvasAgg
         from matplotlib.figure import Figure
@@ -44,10 +54,18 @@ class Sheet:
         self.size = size
         self.unit = min(size[0] / 1600.0, size[1] / 1200.0)
         self.ruler = Ruler()
-        # At 72 dots an inch, points and pixels are the same; the small part keeps sizes from rounding down.
-        self._figure = Figure(figsize=((size[0] + 1e-3) / 72.0, (size[1] + 1e-3) / 72.0), dpi=72, facecolor="white")
-        self._canvas: Any = FigureCanvasAgg(self._figure)
-        self._axes: Any = self._figure.add_axes((0.0, 0.0, 1.0, 1.0))
+        self.paper = paper
+        self.halo = "white" if paper is None else "#{:02x}{:02x}{:02x}".format(*paper)
+        # points on paper of a pixel; the small part keeps sizes from rounding down
+        self._point = 72.0 * _PIXEL_MM / 25.4
+        inches = [(pixels + 1e-3) * _PIXEL_MM / 25.4 for pixels in size]
+        self.figure = Figure(
+            figsize=(inches[0], inches[1]),
+            dpi=25.4 / _PIXEL_MM,
+            facecolor="none" if paper is None else self.halo,
+        )
+        self._canvas: Any = FigureCanvasAgg(self.figure)
+        self._axes: Any = self.figure.add_axes((0.0, 0.0, 1.0, 1.0))
         self._axes.set_xlim(0, size[0])
         self._axes.set_ylim(0, size[1])
         self._axes.set_autoscale_on(False)
@@ -78,7 +96,7 @@ class Sheet:
             x,
             y,
             clean_text(text),
-            fontsize=size,
+            fontsize=size * self._point,
             family=_FONT,
             weight="bold" if bold else "normal",
             color=colour,
@@ -88,7 +106,8 @@ class Sheet:
             zorder=self._next(),
         )
         if halo:
-            mark.set_path_effects([patheffects.withStroke(linewidth=halo, foreground="white")])
+            stroke = patheffects.withStroke(linewidth=halo * self._point, foreground=self.halo)
+            mark.set_path_effects([stroke])
 
     def line(
         self,
@@ -104,13 +123,12 @@ class Sheet:
         from matplotlib.patches import Rectangle
 
         xy = np.asarray(points, dtype=np.float64)
-        for extra, shade, pattern in ((halo, "white", None), (0.0, colour, dashes)):
-            if shade == "white" and not halo:
-                continue
+        strokes = [(halo, self.halo, None)] if halo else []
+        for extra, shade, pattern in (*strokes, (0.0, colour, dashes)):
             (mark,) = self._axes.plot(
                 xy[:, 0],
                 xy[:, 1],
-                linewidth=width + extra,
+                linewidth=(width + extra) * self._point,
                 color=shade,
                 linestyle=(0, tuple(dash / (width + extra) for dash in pattern)) if pattern else "solid",
                 solid_capstyle="butt",
@@ -129,7 +147,7 @@ class Sheet:
         *,
         edge: str | None = _INK,
         width: float = 1.0,
-        hatch: str | None = None,
+        hatched: bool = False,
         halo: float = 0.0,
     ) -> None:
         """Fill a polygon."""
@@ -137,20 +155,29 @@ class Sheet:
 
         xy = np.asarray(points, dtype=np.float64)
         if halo:
-            self._axes.add_patch(
-                Polygon(xy, facecolor="white", edgecolor="white", linewidth=width + halo, zorder=self._next())
-            )
-        self._axes.add_patch(
-            Polygon(
-                xy,
-                facecolor=fill,
-                edgecolor=edge or "none",
-                linewidth=width if edge else 0.0,
-                hatch=hatch,
-                joinstyle="miter",
-                zorder=self._next(),
-            )
+            around: dict[str, Any] = {"linewidth": (width + halo) * self._point, "zorder": self._next()}
+            self._axes.add_patch(Polygon(xy, facecolor=self.halo, edgecolor=self.halo, **around))
+        filled = Polygon(xy, facecolor=fill, edgecolor="none", linewidth=0.0, zorder=self._next())
+        self._axes.add_patch(filled)
+        if hatched:
+            self._hatch(xy, filled)
+        if edge:
+            outline: dict[str, Any] = {"linewidth": width * self._point, "joinstyle": "miter", "zorder": self._next()}
+            self._axes.add_patch(Polygon(xy, facecolor="none", edgecolor=edge, **outline))
+
+    def _hatch(self, xy: NDArray[np.float64], within: Any) -> None:
+        """Draw slanting lines within a shape: drawn as lines, they look alike in every kind of file."""
+        low, high = xy.min(axis=0), xy.max(axis=0)
+        rise = float(high[1] - low[1])
+        starts = np.arange(low[0] - rise, high[0], _HATCH * self.unit)
+        lines = np.full((len(starts), 3, 2), np.nan)
+        lines[:, 0], lines[:, 1] = low[1], high[1]
+        lines[:, 0, 0], lines[:, 1, 0] = starts, starts + rise
+        flat = lines.reshape(-1, 2)
+        (mark,) = self._axes.plot(
+            flat[:, 0], flat[:, 1], linewidth=1.2 * self.unit * self._point, color="black", zorder=self._next()
         )
+        mark.set_clip_path(within)
 
     def box(
         self,
@@ -179,26 +206,27 @@ class Sheet:
         from matplotlib.patches import Circle
 
         if halo:
-            self._axes.add_patch(Circle(tuple(centre), radius + 0.5 * halo, color="white", zorder=self._next()))
+            self._axes.add_patch(Circle(tuple(centre), radius + 0.5 * halo, color=self.halo, zorder=self._next()))
         self._axes.add_patch(
             Circle(
                 tuple(centre),
                 radius,
                 facecolor=fill,
                 edgecolor=edge,
-                linewidth=width,
+                linewidth=width * self._point,
                 linestyle=(0, (2.0, 1.2)) if dashed else "solid",
                 zorder=self._next(),
             )
         )
 
     def image(self, pixels: NDArray[np.uint8], area: Sequence[float]) -> None:
-        """Lay an image of exactly the area's size on it."""
+        """Lay an image on an area: of its size, or some times finer for files that keep it so."""
         left, bottom, right, top = area
+        same = pixels.shape[1] == round(right - left)
         self._axes.imshow(
             pixels,
             extent=(left, right, bottom, top),
-            interpolation="nearest",
+            interpolation="nearest" if same else "none",
             aspect="auto",
             zorder=self._next(),
         )
@@ -229,10 +257,10 @@ class Sheet:
             tail - side * half,
         ]
         if style.shaft in ("block", "hatched"):
-            hatch = "////" if style.shaft == "hatched" else None
-            self.polygon(whole, style.colour, edge="black", width=1.8 * u, hatch=hatch, halo=5.0 * u)
+            hatched = style.shaft == "hatched"
+            self.polygon(whole, style.colour, edge="black", width=1.8 * u, hatched=hatched, halo=5.0 * u)
             return
-        self.polygon(whole, "white", edge="white", width=5.0 * u)
+        self.polygon(whole, self.halo, edge=self.halo, width=5.0 * u)
         if style.shaft == "solid":
             self.polygon(whole, style.colour, edge=style.colour, width=0.5 * u)
         elif style.shaft == "dashed":
@@ -314,8 +342,8 @@ class Sheet:
 
         with boxes_for_missing_letters():
             self._canvas.draw()
-        pixels = np.asarray(self._canvas.buffer_rgba())[..., :3]
+        pixels = np.asarray(self._canvas.buffer_rgba())[..., : 3 if self.paper else 4]
         stream = io.BytesIO()
-        # 1600 pixels make 203 mm: text of 15 pixels is then about 5.4 points
-        Image.fromarray(np.ascontiguousarray(pixels)).save(stream, "PNG", dpi=(200, 200))
+        dots = 25.4 / _PIXEL_MM
+        Image.fromarray(np.ascontiguousarray(pixels)).save(stream, "PNG", dpi=(dots, dots))
         return stream.getvalue()

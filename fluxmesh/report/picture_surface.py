@@ -145,8 +145,9 @@ def draw_surface(
     view: View,
     area: tuple[int, int, int, int],
     line_width: float,
+    paper: tuple[int, int, int] | None = (255, 255, 255),
 ) -> NDArray[np.uint8]:
-    """Draw a surface on white.
+    """Draw a surface on plain paper, or on none.
 
     Parameters
     ----------
@@ -162,11 +163,13 @@ def draw_surface(
         Left, bottom, right, top of the image within the picture, in pixels.
     line_width : float
         Width of creases in pixels; rims are twice as wide.
+    paper : tuple of int, or None, optional
+        Red, green and blue of the paper up to 255; white by default.
 
     Returns
     -------
-    ndarray, shape (top - bottom, right - left, 3), uint8
-        First row at the top.
+    ndarray, shape (top - bottom, right - left, 3 or 4), uint8
+        First row at the top; with a fourth value, the opacity, where there is no paper.
 
     Raises
     ------
@@ -187,7 +190,6 @@ def draw_surface(
             off_screen=True, window_size=(_FINER * (right - left), _FINER * (top - bottom)), lighting="none"
         )
         try:
-            plotter.set_background("white")
             # the averaging smooths edges; samples of the driver's own would spoil the peeling
             plotter.render_window.SetMultiSamples(0)
             for position, strength in (((-0.5, 0.8, 1.2), 0.75), ((0.8, -0.2, 0.6), 0.25)):
@@ -199,13 +201,29 @@ def draw_surface(
             _set_camera(plotter, float(np.abs(local).max()))
             for layer in layers:
                 _add_layer(plotter, local, joined[layer.members], layer, _FINER * line_width)
-            image = plotter.screenshot(return_img=True)
+            papers = [paper] if paper is not None else [(255, 255, 255), (0, 0, 0)]
+            images = [_shot(plotter, one, right - left, top - bottom) for one in papers]
         finally:
             plotter.close()
-    height, width = top - bottom, right - left
-    fine = np.asarray(image, dtype=np.float64)[: _FINER * height, : _FINER * width, :3]
-    means = fine.reshape(height, _FINER, width, _FINER, 3).mean(axis=(1, 3))
-    return np.asarray(np.round(means), dtype=np.uint8)
+    if paper is not None:
+        return np.asarray(np.round(images[0]), dtype=np.uint8)
+    return _lifted(*images)
+
+
+def _shot(plotter: Any, paper: tuple[int, int, int], width: int, height: int) -> NDArray[np.float64]:
+    """Return the image on one paper, averaged down to its size, shape (height, width, 3), up to 255."""
+    plotter.set_background([value / 255.0 for value in paper])
+    plotter.render()
+    fine = np.asarray(plotter.screenshot(return_img=True), dtype=np.float64)[: _FINER * height, : _FINER * width, :3]
+    return np.asarray(fine.reshape(height, _FINER, width, _FINER, 3).mean(axis=(1, 3)))
+
+
+def _lifted(on_white: NDArray[np.float64], on_black: NDArray[np.float64]) -> NDArray[np.uint8]:
+    """Return the image off its paper: what a pixel lets through of white it does not let through of black."""
+    opacity = np.clip(1.0 - (on_white - on_black).max(axis=2) / 255.0, 0.0, 1.0)
+    colour = on_black / np.maximum(opacity, 1.0 / 255.0)[..., None]
+    found = np.concatenate([np.clip(colour, 0.0, 255.0), 255.0 * opacity[..., None]], axis=2)
+    return np.asarray(np.round(found), dtype=np.uint8)
 
 
 def _set_camera(plotter: Any, reach: float) -> None:

@@ -127,6 +127,12 @@ def boxes_for_missing_letters() -> Iterator[None]:
         yield
 
 
+def _without_middle(text: str, kept: int) -> str:
+    """Return the ends of a text, so many letters in all, about an ellipsis."""
+    last = kept // 2
+    return text[: kept - last].rstrip() + _ELLIPSIS + (text[-last:].lstrip() if last else "")
+
+
 class Ruler:
     """Measures text as it will be drawn, in pixels."""
 
@@ -163,6 +169,20 @@ class Ruler:
             else:
                 high = middle - 1
         return text[:low].rstrip() + _ELLIPSIS
+
+    def shorten(self, name: str, size: float, room: float, bold: bool = False) -> str:
+        """Return a name cleaned, and with an ellipsis inside when it is wider than the room: its ends tell it apart."""
+        text = clean_text(name)
+        if self.width(text, size, bold) <= room:
+            return text
+        low, high = 0, len(text)
+        while low < high:
+            kept = (low + high + 1) // 2
+            if self.width(_without_middle(text, kept), size, bold) <= room:
+                low = kept
+            else:
+                high = kept - 1
+        return _without_middle(text, low)
 
     def wrap(self, text: str, size: float, room: float) -> list[str]:
         """Break a sentence into lines that fit; a word wider than the room is cut."""

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["View", "axes_for", "choose_direction", "fit"]
+from fluxmesh.errors import PictureError
+
+__all__ = ["View", "axes_for", "choose_direction", "direction_from", "fit"]
 
 # Elevations and the step of azimuth, in degrees, of the directions that are tried.
 _ELEVATIONS = (12.0, 22.0, 32.0, 45.0, 60.0, -20.0)
@@ -53,7 +56,8 @@ def axes_for(toward: NDArray[np.float64], up: NDArray[np.float64]) -> NDArray[np
     toward : ndarray, shape (3,), float64
         Direction from the surface to the viewer.
     up : ndarray, shape (3,), float64
-        Direction that shall point up; must not be parallel to `toward`.
+        Direction that shall point up. Seen along it, the axis of coordinates that lies
+        most square to it points up in its place, y before x.
 
     Returns
     -------
@@ -62,8 +66,50 @@ def axes_for(toward: NDArray[np.float64], up: NDArray[np.float64]) -> NDArray[np
     """
     toward = toward / np.linalg.norm(toward)
     right = np.cross(up, toward)
+    if float(np.linalg.norm(right)) < 1e-6 * float(np.linalg.norm(up)):
+        right = np.cross(min(np.eye(3)[[1, 0, 2]], key=lambda axis: round(abs(float(axis @ toward)), 6)), toward)
     right /= np.linalg.norm(right)
     return np.array([right, np.cross(toward, right), toward])
+
+
+def direction_from(words: str, up: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return the direction to the viewer that somebody asked for in words or numbers.
+
+    Parameters
+    ----------
+    words : str
+        "from +x" or "+x" (any axis and sign), "from above", "from below", or three
+        numbers, from the surface towards the viewer: "1, -2, 0.5".
+    up : ndarray, shape (3,), float64
+        Direction that is up.
+
+    Returns
+    -------
+    ndarray, shape (3,), float64
+        Unit vector from the surface to the viewer.
+
+    Raises
+    ------
+    PictureError
+        Words that are none of these, or numbers that are no direction.
+    """
+    said = words.strip().lower().removeprefix("from").strip()
+    if said in ("above", "below"):
+        return up / np.linalg.norm(up) * (1.0 if said == "above" else -1.0)
+    if re.fullmatch(r"[+-]?[xyz]", said):
+        return np.asarray(np.eye(3)["xyz".index(said[-1])] * (-1.0 if said[0] == "-" else 1.0))
+    try:
+        numbers = np.array([float(part) for part in re.split(r"[,;\s]+", said.strip("()[] "))])
+    except ValueError:
+        numbers = np.empty(0)
+    size = float(np.linalg.norm(numbers)) if numbers.size == 3 else 0.0
+    if not np.isfinite(size) or size == 0.0:
+        raise PictureError(
+            f"the view is {words!r}",
+            remedy='Give "automatic", "from +x" (or another axis), "from above", "from below", or three numbers '
+            'that point to the viewer, such as "1, -2, 0.5"',
+        )
+    return numbers / size
 
 
 def choose_direction(

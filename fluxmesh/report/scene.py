@@ -6,12 +6,24 @@ surface; every arrow names the body that acts and the body acted upon.
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["ARROW_KINDS", "MARKER_KINDS", "Arrow", "Marker", "Scene", "area_vectors", "merge_points", "thin"]
+__all__ = [
+    "ARROW_KINDS",
+    "MARKER_KINDS",
+    "Arrow",
+    "Marker",
+    "Scene",
+    "area_vectors",
+    "in_words",
+    "merge_points",
+    "only_kinds",
+    "thin",
+]
 
 #: Kinds of arrow, in the order in which they are tagged and listed.
 ARROW_KINDS = ("pressure", "momentum", "weight", "resultant", "reaction")
@@ -32,20 +44,26 @@ class Arrow:
     kind : str
         One of `ARROW_KINDS`: ``pressure``, the pressure force at a port on the
         control volume; ``momentum``, the rate of momentum through a port as
-        the force it exerts (minus the outward flux); ``weight``, of the fluid
-        or of the hardware at its centre; ``resultant``, the load of the flow
-        on the hardware, on its line of action; ``reaction``, the force of the
-        anchor on the hardware.
+        the force it exerts (minus the outward flux), or the inertia of what
+        is inside; ``weight``, of the fluid or of the hardware at its centre;
+        ``resultant``, the load of the flow on the hardware; ``reaction``, the
+        force of the anchor on the hardware.
     label : str
         Name for the legend.
     body : str
         Which body acts on which: "flow on hardware", "anchor on hardware".
     at : ndarray, shape (3,), float64
-        Point of application, or a point of the line of action, in metres.
+        Point where it is drawn, in metres: of a resultant on its line of action, where
+        that is known, and of a reaction the anchor.
     vector : ndarray, shape (3,), float64
         Force in newtons.
     group : str or None
         The port that the force belongs to.
+    through : ndarray, shape (3,), float64, or None
+        A point of the line of action near the surface, for a resultant or a
+        reaction whose line is known, in metres.
+    couple : float
+        Moment about that line that is left with the force, in newton metres.
     """
 
     kind: str
@@ -54,12 +72,16 @@ class Arrow:
     at: NDArray[np.float64]
     vector: NDArray[np.float64]
     group: str | None = None
+    through: NDArray[np.float64] | None = None
+    couple: float = 0.0
 
     def __post_init__(self) -> None:
         """Refuse a kind that no drawing knows, and numbers that are no force."""
         if self.kind not in ARROW_KINDS:
             raise ValueError(f"arrow kind {self.kind!r} is none of {', '.join(ARROW_KINDS)}")
         _require_vectors(f"arrow {self.label!r}", self.at, self.vector)
+        if self.through is not None:
+            _require_vectors(f"the line of {self.label!r}", self.through)
 
     @property
     def magnitude(self) -> float:
@@ -161,6 +183,39 @@ def _require_vectors(name: str, *vectors: NDArray[np.float64]) -> None:
     for vector in vectors:
         if np.shape(vector) != (3,) or not np.isfinite(vector).all():
             raise ValueError(f"{name} needs three finite numbers, found {vector}")
+
+
+def only_kinds(scene: Scene, kinds: Iterable[str]) -> Scene:
+    """Return the scene with some kinds of arrows alone; a note says what is left out.
+
+    Parameters
+    ----------
+    scene : Scene
+        With all its arrows.
+    kinds : iterable of str
+        Some of `ARROW_KINDS`.
+    """
+    chosen = set(kinds)
+    left = [arrow for arrow in scene.arrows if arrow.kind not in chosen]
+    if not left:
+        return scene
+    names = ", ".join(dict.fromkeys(arrow.label for arrow in left))
+    note = f"By choice not all forces are shown. Left out: {names}"
+    return replace(
+        scene,
+        arrows=tuple(arrow for arrow in scene.arrows if arrow.kind in chosen),
+        notes=(note, *scene.notes),
+    )
+
+
+def in_words(scene: Scene) -> str:
+    """Return what a picture of the scene shows, for those who do not see it."""
+    ports = ", ".join(f"{name} ({role})" for name, role in scene.groups if role != "wall")
+    said = [f"A control surface with the ports {ports}." if ports else "A control surface without ports."]
+    for arrow in scene.arrows:
+        force = ", ".join(f"{x:.4g}" for x in arrow.vector)
+        said.append(f"{arrow.body}: {arrow.label}, force ({force}) N.")
+    return " ".join([*said, *(f"{note.rstrip(' .')}." for note in scene.notes)])
 
 
 def area_vectors(points: NDArray[np.float64], triangles: NDArray[np.int64]) -> NDArray[np.float64]:

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fluxmesh.balance.balance import Balance
-from fluxmesh.balance.wrench import central_axis
+from fluxmesh.balance.wrench import CentralAxis, central_axis
 from fluxmesh.field.field import Field
 from fluxmesh.field.flow import Flow
 from fluxmesh.field.pressure import pressure_terms
@@ -16,7 +16,7 @@ from fluxmesh.integral.layout import AT_FACE, AT_NODE, AT_SAMPLE, PER_GROUP
 from fluxmesh.report.scene import Arrow, Marker, Scene
 from fluxmesh.surface.surface import ControlSurface
 
-__all__ = ["scene_of"]
+__all__ = ["arrows_of", "scene_of", "scene_of_surface"]
 
 
 def _fan_triangles(surface: ControlSurface) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
@@ -85,7 +85,22 @@ def _mean_values(
     return values
 
 
-def _arrows(balance: Balance) -> list[Arrow]:
+def _line(axis: CentralAxis, middle: NDArray[np.float64], noise: float) -> tuple[NDArray[np.float64] | None, float]:
+    """Return the point of a line of action nearest to another, and the couple; no point where it is not known."""
+    if not np.isfinite([*axis.point, *axis.direction, axis.couple]).all():
+        return None, 0.0
+    nearest = axis.point + axis.direction * float((middle - axis.point) @ axis.direction)
+    return nearest, axis.couple if abs(axis.couple) > noise else 0.0
+
+
+def arrows_of(balance: Balance) -> list[Arrow]:
+    """Return the forces of a balance as arrows: at ports and of weight, inertia, load and reaction.
+
+    Parameters
+    ----------
+    balance : Balance
+        The balance.
+    """
     table, setting = balance.table, balance.setting
     arrows = []
     for k, group in enumerate(setting.groups):
@@ -121,7 +136,7 @@ def _arrows(balance: Balance) -> list[Arrow]:
     stored = balance.momentum.storage
     if balance.momentum.known and np.any(stored) and balance.enclosed is not None:
         inside = balance.fluid.centre if balance.fluid is not None else balance.enclosed.centroid
-        arrows.append(Arrow("momentum", "inertia of the fluid", "its change of momentum, turned", inside, -stored))
+        arrows.append(Arrow("momentum", "inertia of what is inside", "its own inertia on fluid", inside, -stored))
     hardware = setting.hardware
     if hardware is not None and np.any(setting.gravity):
         weight = hardware.mass * np.asarray(setting.gravity)
@@ -129,24 +144,21 @@ def _arrows(balance: Balance) -> list[Arrow]:
     load = balance.load.best()
     weighed = balance.fluid is not None and bool(np.any(balance.fluid.weight)) and balance.load.from_balance is load
     heavy = ", weight of fluid included" if weighed else ""
+    # nearest to the body, not to the anchor: the line of action may pass far from it
+    middle = table.origin if balance.enclosed is None else balance.enclosed.centroid
+    # a couple below round-off on a lever of the size of the surface is none
+    noise = 1e-12 * float(np.sqrt(table.total("area")))
     if load is not None:
-        axis = central_axis(load)
-        # nearest to the body, not to the anchor: the line of action may pass far from it
-        middle = table.origin if balance.enclosed is None else balance.enclosed.centroid
-        known = bool(np.isfinite(axis.point).all())
-        at = axis.point + axis.direction * float((middle - axis.point) @ axis.direction) if known else middle
-        arrows.append(
-            Arrow(
-                "resultant",
-                "load of the flow" + heavy,
-                "flow on hardware",
-                at,
-                load.force,
-            )
-        )
+        through, couple = _line(central_axis(load), middle, noise * float(np.linalg.norm(load.force)))
+        at = middle if through is None else through
+        label, body = "load of the flow" + heavy, "flow on hardware"
+        arrows.append(Arrow("resultant", label, body, at, load.force, through=through, couple=couple))
     if balance.reaction is not None:
         wrench = balance.reaction.wrench
-        arrows.append(Arrow("reaction", "reaction", "anchor on hardware", wrench.at, wrench.force))
+        small = noise * float(np.linalg.norm(wrench.force))
+        through, couple = _line(balance.reaction.line_of_action, middle, small)
+        label, body = "reaction", "anchor on hardware"
+        arrows.append(Arrow("reaction", label, body, wrench.at, wrench.force, through=through, couple=couple))
     return arrows
 
 
@@ -184,8 +196,28 @@ def scene_of(title: str, surface: ControlSurface, flow: Flow, balance: Balance, 
         group_of_triangle=surface.group_of_face[face],
         groups=tuple((group.name, group.role.value) for group in surface.groups),
         pressure=_pressure_of(surface, flow, triangles, face, balance.table.origin),
-        arrows=tuple(_arrows(balance)),
+        arrows=tuple(arrows_of(balance)),
         markers=tuple(markers),
         notes=tuple(notes),
         up=-gravity / size if size > 0 else np.array([0.0, 0.0, 1.0]),
+    )
+
+
+def scene_of_surface(surface: ControlSurface, title: str = "") -> Scene:
+    """Return what a picture of a surface alone shows: its groups.
+
+    Parameters
+    ----------
+    surface : ControlSurface
+        The surface.
+    title : str, optional
+        Heading.
+    """
+    triangles, face = _fan_triangles(surface)
+    return Scene(
+        title=title,
+        points=surface.points,
+        triangles=triangles,
+        group_of_triangle=surface.group_of_face[face],
+        groups=tuple((group.name, group.role.value) for group in surface.groups),
     )

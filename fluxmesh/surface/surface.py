@@ -14,6 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+import fluxmesh
 from fluxmesh.errors import GroupError, SurfaceError
 
 __all__ = ["ControlSurface", "FaceKind", "Group", "Role"]
@@ -131,6 +132,10 @@ class ControlSurface:
     def point_count(self) -> int:
         """Number of points, used or not."""
         return int(self.points.shape[0])
+
+    def _repr_html_(self) -> str:
+        """Show groups and shape in a notebook; the package's door loads what that needs."""
+        return fluxmesh.html_of(self)
 
 
 def _require_points(points: NDArray[Any]) -> None:
