@@ -16,7 +16,7 @@ import typer
 
 from fluxmesh.errors import FluxmeshError, FluxmeshWarning, PictureError
 
-__all__ = ["app", "balance", "check", "convergence", "main", "start"]
+__all__ = ["app", "balance", "causes", "check", "convergence", "export", "main", "picture", "start"]
 
 app = typer.Typer(
     help="Mass and momentum balance over a closed, tagged surface: loads on hardware, the reaction at the anchor, "
@@ -45,6 +45,11 @@ def balance(
         Path | None, typer.Option(help="Folder for balance.json and pictures.", show_default="results/<case name>")
     ] = None,
     pictures: Annotated[bool, typer.Option("--pictures/--no-pictures", help="Draw the force vectors.")] = True,
+    draws: Annotated[
+        int,
+        typer.Option(min=0, max=10_000_000, help="Draws of the doubtful inputs (Monte Carlo).", show_default="none"),
+    ] = 0,
+    seed: Annotated[int, typer.Option(help="Of the draws: the same seed gives the same figures.")] = 0,
 ) -> None:
     """Balance a case: tables here, balance.json and pictures in a folder.
 
@@ -68,8 +73,13 @@ def balance(
     done = run_case(read, loaded=loaded)
     if done.surface.face_count <= REVIEWED_FACES:
         from fluxmesh.job.check import with_doubts
+        from fluxmesh.job.doubted import with_budget
 
-        done = with_doubts(read, done, loaded=loaded)
+        done = with_budget(read, with_doubts(read, done, loaded=loaded), draws=draws, seed=seed)
+    elif draws or read.flow.reconstruction == "quadratic":
+        from fluxmesh.job.doubted import with_budget
+
+        done = with_budget(read, done, draws=draws, seed=seed)
     data = done.data()
     for old in ("vectors.png", "pressure.png"):
         # pictures of an earlier run would not belong to the figures beside them
@@ -85,6 +95,7 @@ def balance(
 def _balance_series(case: Any, folder: Path, pictures: bool) -> int:
     """Balance every instant of a series; return the exit code."""
     from fluxmesh.job.check import with_doubts
+    from fluxmesh.job.doubted import with_budget
     from fluxmesh.job.governing import governing_instant
     from fluxmesh.job.run import REVIEWED_FACES
     from fluxmesh.job.series import run_series
@@ -97,7 +108,7 @@ def _balance_series(case: Any, folder: Path, pictures: bool) -> int:
     done = run_series(case, progress=_instants_done if sys.stderr.isatty() else None)
     at, largest = governing_instant(case, done)
     if largest.surface.face_count <= REVIEWED_FACES:
-        largest = with_doubts(at, largest)
+        largest = with_budget(at, with_doubts(at, largest))
     for old in ("vectors.png", "pressure.png", "series.png"):
         (folder / old).unlink(missing_ok=True)
     write_json(done.data(), folder / "series.json")
@@ -129,6 +140,13 @@ def _instants_done(done: int, count: int) -> None:
 def _print(done: Any) -> None:
     from fluxmesh.report.terminal import print_balance
 
+    shown = None
+    if done.doubt is not None:
+        from fluxmesh.assess.doubt.figures import figures
+        from fluxmesh.report.doubt import DoubtShown
+
+        sharp = None if done.doubt.sharpened is None else figures(done.doubt.sharpened)
+        shown = DoubtShown.of(done.doubt.budget, sharp, done.sharpened_reported, done.doubt.notes)
     print_balance(
         _console(),
         done.balance,
@@ -142,6 +160,7 @@ def _print(done: Any) -> None:
         energy=done.energy,
         carried=done.carried,
         losses=done.losses,
+        budget=shown,
     )
 
 
@@ -179,6 +198,32 @@ def check(
     raise typer.Exit(1 if strict and review.doubts else 0)
 
 
+@app.command(epilog="Example: fluxmesh causes case.toml --json causes.json")
+def causes(
+    case: CaseFile,
+    json: Annotated[Path | None, typer.Option("--json", help="File for the same as JSON.", show_default=False)] = None,
+) -> None:
+    """Rank what would explain that a balance does not close, and say which line of the case to change.
+
+    Exit code 0: the balance closes, or cannot be judged; 1: it does not close; 2: the input is at fault.
+    """
+    from fluxmesh.case.read import read_case
+    from fluxmesh.job.causes import causes_of_case
+    from fluxmesh.report.causes import causes_data, print_causes
+
+    read = read_case(case)
+    found = causes_of_case(read)
+    title = read.title or read.name
+    if json is not None:
+        from fluxmesh.report.result import write_json
+
+        write_json(causes_data(found, title=title), json)
+    print_causes(_console(), found, title=title)
+    if json is not None:
+        typer.echo(f"\nWritten: {json}")
+    raise typer.Exit(1 if found.residual is not None and found.residual > found.tolerance else 0)
+
+
 @app.command(epilog="Example: fluxmesh convergence coarse.toml medium.toml fine.toml --figure reaction.force")
 def convergence(
     cases: Annotated[
@@ -206,6 +251,57 @@ def convergence(
     if json is not None:
         write_json(study.data(), json)
         typer.echo(f"\nWritten: {json}")
+
+
+@app.command(epilog="Example: fluxmesh picture meshes/manifold/manifold_fine.toml --to block.svg --view 'from above'")
+def picture(
+    case: CaseFile,
+    to: Annotated[
+        Path | None,
+        typer.Option(
+            help="File to write: .png, or for print .svg or .pdf.", show_default="results/<case name>/picture.png"
+        ),
+    ] = None,
+    view: Annotated[
+        str,
+        typer.Option(
+            help='Where it is seen from: "automatic" (shows all ports), "from +x" (or another axis), "from above", '
+            '"from below", or three numbers that point to the viewer, such as "1, -2, 0.5".'
+        ),
+    ] = "automatic",
+    size: Annotated[str, typer.Option(help="Width and height in pixels; on paper a pixel is 0.16 mm.")] = "1600x1200",
+    background: Annotated[
+        str, typer.Option(help='"white", "transparent", or a light colour such as "#f4f1ea".')
+    ] = "white",
+    show: Annotated[
+        str,
+        typer.Option(
+            help="Which forces: all, none, or some of pressure, momentum, weight, load, reaction with commas between."
+        ),
+    ] = "all",
+    colours: Annotated[
+        str, typer.Option(help="What the colours of the surface tell: its groups, or the gauge pressure.")
+    ] = "groups",
+) -> None:
+    """Draw one picture of a case: its surface with the force vectors, to look at or for print."""
+    from fluxmesh.job.picture import picture_of_case
+
+    written = picture_of_case(case, to=to, view=view, size=size, background=background, show=show, colours=colours)
+    typer.echo(f"Written: {written}")
+
+
+@app.command(epilog="Example: fluxmesh export meshes/manifold/manifold_fine.toml --out results/manifold/export")
+def export(
+    case: CaseFile,
+    out: Annotated[
+        Path | None, typer.Option(help="Folder for the files.", show_default="results/<case name>/export")
+    ] = None,
+) -> None:
+    """Hand a result to other programs: surface with all face fields and force vectors (.vtp), ledgers (.csv)."""
+    from fluxmesh.job.export import export_case
+
+    for written in export_case(case, out=out):
+        typer.echo(f"Written: {written}")
 
 
 @app.command(epilog='Example: fluxmesh start export.vtp --density "880 kg/m^3" --to case.toml')

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from fluxmesh.assess.comparison import Comparison
-from fluxmesh.assess.verdict import Verdict
+from fluxmesh.assess.verdict import Verdict, verdict_words
 from fluxmesh.balance.balance import Balance
 from fluxmesh.balance.carried import CarriedBalance
 from fluxmesh.balance.energy import EnergyBalance
@@ -21,6 +21,7 @@ from fluxmesh.surface.surface import ControlSurface
 __all__ = ["Outcome"]
 
 if TYPE_CHECKING:
+    from fluxmesh.assess.doubt.told import DoubtOfFigures
     from fluxmesh.assess.review import Doubt
 
 
@@ -56,6 +57,10 @@ class Outcome:
         One a scalar.
     losses : tuple of Loss
         Those that were asked for.
+    doubt : DoubtOfFigures or None
+        The doubt of every figure; None where it was not looked for.
+    sharpened_reported : bool
+        Whether the balance is that of quadratic patches.
     said : tuple of str
         Further notes: of the fluid's properties, say.
     """
@@ -73,6 +78,8 @@ class Outcome:
     energy: EnergyBalance | None = None
     carried: tuple[CarriedBalance, ...] = ()
     losses: tuple[Loss, ...] = ()
+    doubt: DoubtOfFigures | None = None
+    sharpened_reported: bool = False
     said: tuple[str, ...] = ()
 
     @property
@@ -82,12 +89,12 @@ class Outcome:
 
     def picture_notes(self) -> tuple[str, ...]:
         """Return what must stand in a picture: verdict, moment of the reaction, assumptions."""
-        verdict = {True: "closes", False: "DOES NOT CLOSE", None: "cannot be judged in full"}[self.verdict.closes]
-        said = [f"Verdict: the balance {verdict}"]
+        said = [f"Verdict: the balance {verdict_words(self.verdict)}"]
         said += [f"DOUBT: {doubt.seen}" for doubt in self.doubts or ()]
         if self.balance.reaction is not None:
             turning = self.balance.reaction.wrench.moment
-            moment = ", ".join(f"{x:.4g}" for x in turning)
+            least = 1e-12 * (self.balance.angular.size() + self.balance.momentum.size())
+            moment = ", ".join(f"{x if abs(x) > least else 0.0:.4g}" for x in turning)
             known = bool(np.isfinite(turning).all())
             said.append(
                 f"With the reaction at the anchor goes a moment of ({moment}) N m"
@@ -96,9 +103,24 @@ class Outcome:
             )
         return (*said, *self.assumptions)
 
+    def _repr_html_(self) -> str:
+        """Show all of it in a notebook."""
+        from fluxmesh.report.notebook import outcome_html
+
+        return outcome_html(
+            self.title,
+            self.surface,
+            self.flow,
+            self.balance,
+            self.verdict,
+            self.assumptions,
+            notes=self.notes,
+            doubts=[doubt.seen for doubt in self.doubts or ()],
+        )
+
     def data(self) -> dict[str, Any]:
         """Return everything as plain data, the content of ``balance.json``."""
-        return result_data(
+        data = result_data(
             self.balance,
             self.verdict,
             title=self.title,
@@ -110,7 +132,9 @@ class Outcome:
             energy=self.energy,
             carried=self.carried,
             losses=self.losses,
+            sharpened=None if self.doubt is None else self.doubt.sharpened,
         )
+        return data if self.doubt is None else self.doubt.beside(data, sharpened=self.sharpened_reported)
 
     def inputs(self) -> dict[str, Any]:
         """Return what the figures were computed from, SI units."""

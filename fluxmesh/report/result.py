@@ -113,6 +113,7 @@ def result_data(
     energy: EnergyBalance | None = None,
     carried: tuple[CarriedBalance, ...] = (),
     losses: tuple[Loss, ...] = (),
+    sharpened: Balance | None = None,
 ) -> dict[str, Any]:
     """Return a balance as plain data, SI units throughout.
 
@@ -140,6 +141,8 @@ def result_data(
         Carried scalars.
     losses : tuple of Loss, optional
         Losses between ports.
+    sharpened : Balance, optional
+        The balance of quadratic patches recovered from the data.
 
     Returns
     -------
@@ -211,6 +214,8 @@ def result_data(
         data["short_form"] = asdict(balance.short_form)
     if balance.release is not None:
         data["release"] = asdict(balance.release)
+    if sharpened is not None:
+        data["sharpened"] = _sharpened(sharpened)
     if energy is not None:
         data["energy"] = energy_data(energy, balance.setting)
     if carried:
@@ -221,6 +226,25 @@ def result_data(
         data["reported"] = asdict(comparison)
     plain: dict[str, Any] = _plain(data)
     return plain
+
+
+def _sharpened(balance: Balance) -> dict[str, Any]:
+    """The higher-order values, in the shapes of the plain ones."""
+    load = balance.load
+    reaction = balance.reaction
+    return {
+        "groups": _groups(balance),
+        "mass": asdict(balance.mass) if balance.mass else None,
+        "momentum": _ledger(balance.momentum, balance.complete) if balance.setting.closed else None,
+        "hardware_load": {"from_walls": _load(load.from_walls), "from_balance": _load(load.from_balance)},
+        "reaction": None
+        if reaction is None
+        else {
+            "at": reaction.wrench.at,
+            "force": reaction.wrench.force,
+            "moment": _whole(reaction.wrench.moment),
+        },
+    }
 
 
 def write_json(data: dict[str, Any], path: Path) -> None:

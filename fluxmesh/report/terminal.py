@@ -9,13 +9,14 @@ import numpy as np
 
 from fluxmesh.assess.assumptions import CAUTIONS
 from fluxmesh.assess.comparison import Comparison
-from fluxmesh.assess.verdict import Verdict
+from fluxmesh.assess.verdict import State, Verdict, verdict_words
 from fluxmesh.balance.balance import Balance
 from fluxmesh.balance.carried import CarriedBalance
 from fluxmesh.balance.energy import EnergyBalance
 from fluxmesh.balance.losses import Loss
 from fluxmesh.balance.weight import weight_wrench
 from fluxmesh.balance.wrench import Wrench
+from fluxmesh.report.doubt import DoubtShown, doubt_lines, doubt_table
 from fluxmesh.report.laws import carried_lines, carried_table, energy_lines, energy_table
 from fluxmesh.report.motion import motion_lines
 from fluxmesh.report.ports import losses_lines, losses_table, ports_tables
@@ -187,11 +188,9 @@ def _comparison_lines(comparison: Comparison | None) -> list[str]:
 
 
 def _verdict_line(verdict: Verdict) -> tuple[str, str]:
-    if verdict.closes is None:
-        return "VERDICT: cannot be judged in full", "bold yellow"
-    if verdict.closes:
-        return "VERDICT: closes", "bold green"
-    return "VERDICT: DOES NOT CLOSE", "bold red"
+    styles = {None: "bold yellow", True: "bold green", False: "bold red"}
+    style = "bold yellow" if verdict.state is State.WITHIN_DOUBT else styles[verdict.closes]
+    return f"VERDICT: {verdict_words(verdict)}", style
 
 
 def print_balance(
@@ -208,6 +207,7 @@ def print_balance(
     energy: EnergyBalance | None = None,
     carried: Sequence[CarriedBalance] = (),
     losses: Sequence[Loss] = (),
+    budget: DoubtShown | None = None,
 ) -> None:
     """Print a balance, its loads beside their assumptions, and its verdict.
 
@@ -237,6 +237,8 @@ def print_balance(
         Carried scalars.
     losses : sequence of Loss, optional
         Losses between ports.
+    budget : DoubtShown, optional
+        The doubt of the figures, and what it is made of.
     """
     from rich.text import Text
 
@@ -263,6 +265,10 @@ def print_balance(
         for line in carried_lines(carried):
             say(line)
     console.print(_loads(balance))
+    if budget is not None:
+        console.print(doubt_table(budget))
+        for line in doubt_lines(budget):
+            say(line)
     for line in [*_reaction_lines(balance), *motion_lines(balance), *_comparison_lines(comparison)]:
         say(line)
     say("Assumed: " + "; ".join(text[0].lower() + text[1:] for text in assumptions) + ".")
