@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 from functools import cache
 from typing import Any
@@ -535,15 +535,6 @@ PLANTS: dict[str, tuple[str, Plant]] = {
     "gravity in cm/s²": ("gravity-direction", _gravity(lambda g: 100.0 * g)),
 }
 """Slips by what they are: the id that must be found, and how they are planted."""
-
-
-def planted() -> Iterator[tuple[str, str, Sound, Sound]]:
-    """Every slip in every sound flow that can have it: name, id, sound, planted."""
-    for slip, (kind, plant) in PLANTS.items():
-        for sound in sounds().values():
-            made = plant(sound)
-            if made is not None:
-                yield slip, kind, sound, made
 
 
 # ---- plants in the table itself -------------------------------------------------------------

@@ -12,24 +12,28 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
-from fluxmesh import balance_of, run_case
+from fluxmesh import balance_of, lay_flow, run_case
 from fluxmesh.assess.doubt import Budget, Contribution, figures, with_uncertainties
+from fluxmesh.assess.doubt.budget import left_after_sharpening
 from fluxmesh.assess.doubt.draws import draw_inputs
 from fluxmesh.assess.doubt.inputs import NORMAL_95
 from fluxmesh.assess.doubt.levers import parts_of
 from fluxmesh.assess.doubt.model import BalanceModel
+from fluxmesh.assess.doubt.off_facets import off_facets
 from fluxmesh.assess.doubt.sampling import SampledErrors, sampling_contributions
 from fluxmesh.balance.balance import balance_table
 from fluxmesh.case.model import Case
 from fluxmesh.case.read import parse_case, read_case
 from fluxmesh.errors import FieldError
+from fluxmesh.field.patches import sharpened_table
+from fluxmesh.integral.table import IntegralTable, column_slice
 from fluxmesh.job.doubt import DoubtOfFigures, doubt_of
 from fluxmesh.job.doubtful import doubtful_inputs
 from fluxmesh.job.measured import measured_in, moved_case
 from fluxmesh.job.outcome import Outcome
 from tests.conftest import CASE
 from tests.flows import beltrami
-from tests.solids import odd_body, pipe
+from tests.solids import frustum, odd_body, pipe
 
 MESHES = Path(__file__).parent.parent / "meshes"
 FEED, DRAIN, SHELL = 'role = "inlet"\n', 'role = "outlet"\n', 'role = "wall"\n'
@@ -306,6 +310,8 @@ def test_linear_law_and_draws_agree_where_doubts_are_small(rough) -> None:
     _, told = doubted(rough, text, draws=100_000, seed=2)
     linear, drawn = told.budget.half_widths, told.drawn
     checked = 0
+    for ends in (drawn.symmetric, drawn.shortest):
+        assert (ends[:, 0] <= ends[:, 1])[np.isfinite(drawn.mean)].all()
     for spot in told.figures.spots:
         if "relative" in spot.path[-1]:
             continue  # cannot fall below zero
@@ -452,6 +458,65 @@ def test_errors_of_the_mesh_add_with_their_signs_and_all_else_in_quadrature(bloc
     assert both(8.0, -4.0) == pytest.approx(sqrt(25 + (1.5 * 4) ** 2))
     # errors that seem to cancel are not believed to do so wholly
     assert both(8.0, -8.0) == pytest.approx(sqrt(25 + (1.5 * 0.25 * 16) ** 2))
+
+
+def test_shares_are_of_what_the_sources_make_together(block) -> None:
+    _, outcome = done(block, CASE)
+    told = figures(outcome.balance)
+    count = told.values.size
+    parts = (
+        Contribution("a", "interpolation", np.full(count, 12.0), np.full(count, 8.0)),
+        Contribution("b", "geometry", np.full(count, 6.0), np.full(count, -4.0)),
+        Contribution("c", "input", np.full(count, 3.0)),
+    )
+    # interpolation and geometry leave 1.5 × 4 = 6 together, which they share as 12² : 6²
+    shares = {one.name: one for one in Budget(told, parts).shares(("mass", "residual"))}
+    whole = 36.0 + 9.0
+    assert [shares[name].share for name in "abc"] == pytest.approx([0.8 * 36 / whole, 0.2 * 36 / whole, 9 / whole])
+    assert shares["a"].half_width == pytest.approx(sqrt(0.8 * 36))
+    sharp = Budget(told, parts, 0.25)
+    assert sharp.sharpened[told.spot(("mass", "residual")).start] == pytest.approx(sqrt((0.25 * 6) ** 2 + 9))
+
+
+def test_a_mesh_that_sharpening_changes_much_is_little_the_better_for_it(rough) -> None:
+    _, outcome = done(rough, CASE)
+    table = outcome.balance.table
+
+    def changed(share: float) -> IntegralTable:
+        values = table.values.copy()
+        values[0, column_slice("dynamic_pressure_area")] *= 1 + share
+        return IntegralTable(values, table.origin)
+
+    assert left_after_sharpening(table, changed(0.01), None) == pytest.approx(0.18, rel=1e-9)
+    assert left_after_sharpening(table, changed(1e-6), None) == 0.05
+    assert left_after_sharpening(table, changed(0.3), None) == 0.5
+    larger = table.values.copy()
+    larger[:, column_slice("area")] *= 1.02
+    assert left_after_sharpening(table, changed(0.01), IntegralTable(larger, table.origin)) == pytest.approx(0.36)
+    values = table.values.copy()
+    values[:, column_slice("dynamic_pressure_area")] = 0.0
+    still = IntegralTable(values, table.origin)
+    assert left_after_sharpening(still, still, None) == 0.5
+
+
+def test_plane_facets_tell_all_of_their_fields_and_uniform_fields_nothing_new(rough) -> None:
+    _, outcome = done(rough, CASE)
+    flat = outcome.balance.table
+    values = flat.values.copy()
+    values[:, column_slice("mass_flow")] += 7.0
+    bent = IntegralTable(values, flat.origin)
+    found = off_facets(flat, bent).column("mass_flow") - flat.column("mass_flow")
+    assert_allclose(found, [0.0, 0.0, 7.0], atol=1e-9)  # the ports are plane, the shell is not
+    # a bent surface under fields that are uniform differs by its geometry alone, and that does not count
+    surface = frustum(0.5, 0.7, 1.0, 12, 2).surface({"wall": "wall"})
+    origin = np.zeros(3)
+    flow = lay_flow(surface, density=900.0, velocity=(1.0, 2.0, -0.5), pressure=3000.0)
+    patches = [sharpened_table(surface, flow, facets_are_geometry=flat, origin=origin) for flat in (True, False)]
+    for name in ("area", "pressure_force", "momentum_flux"):
+        assert np.abs(patches[0].column(name) - patches[1].column(name)).max() > 0.01
+    mixed = off_facets(*patches)
+    for name in ("pressure_force", "moment_of_pressure", "mass_flow", "momentum_flux", "moment_of_momentum_flux"):
+        assert_allclose(mixed.column(name), patches[0].column(name), rtol=1e-9, atol=1e-6, err_msg=name)
 
 
 def test_a_component_without_error_of_its_own_is_not_believed_to_have_none(block) -> None:

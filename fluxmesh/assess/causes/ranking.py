@@ -299,7 +299,8 @@ def _both_needed(trial: Trial, alone: dict[int, float], now: _Now) -> bool:
     """Whether each of a pair is needed: what is left is well below what either leaves alone."""
     least = min(alone[id(suspect)] for suspect in trial.suspects if not suspect.expected)
     if any(suspect.expected for suspect in trial.suspects):
-        return least <= _SHARE * now.rms and least > now.floor
+        # what is expected explains what the other leaves, where that does not close by itself
+        return least <= _SHARE * now.rms and float(measures(trial.unfitted, trial.laws)[0]) > now.tolerance
     return max(trial.rms, now.floor) <= _SHARE * least
 
 
