@@ -44,12 +44,15 @@ def balance(
     out: Annotated[
         Path | None, typer.Option(help="Folder for balance.json and pictures.", show_default="results/<case name>")
     ] = None,
-    pictures: Annotated[bool, typer.Option("--pictures/--no-pictures", help="Draw the force vectors.")] = True,
+    pictures: Annotated[
+        bool, typer.Option("--pictures/--no-pictures", help="Draw the force vectors, and write the report.")
+    ] = True,
     draws: Annotated[
         int,
         typer.Option(min=0, max=10_000_000, help="Draws of the doubtful inputs (Monte Carlo).", show_default="none"),
     ] = 0,
     seed: Annotated[int, typer.Option(help="Of the draws: the same seed gives the same figures.")] = 0,
+    units: Annotated[str, typer.Option(help="Of the report: si, or us for US customary units beside SI.")] = "si",
 ) -> None:
     """Balance a case: tables here, balance.json and pictures in a folder.
 
@@ -59,9 +62,11 @@ def balance(
     from fluxmesh.case.read import read_case
     from fluxmesh.job.ahead import load_ahead
 
+    if units not in ("si", "us"):
+        raise typer.BadParameter("give si or us", param_hint="--units")
     read = read_case(case)
     if read.storage is not None and read.storage.is_series():
-        raise typer.Exit(_balance_series(read, out or Path("results") / read.name, pictures))
+        raise typer.Exit(_balance_series(read, out or Path("results") / read.name, pictures, units))
     loaded = load_ahead(read)
 
     from fluxmesh.job.run import REVIEWED_FACES, run_case
@@ -81,7 +86,7 @@ def balance(
 
         done = with_budget(read, done, draws=draws, seed=seed)
     data = done.data()
-    for old in ("vectors.png", "pressure.png"):
+    for old in ("vectors.png", "pressure.png", "report.html"):
         # pictures of an earlier run would not belong to the figures beside them
         (folder / old).unlink(missing_ok=True)
     write_json(data, folder / "balance.json")
@@ -89,10 +94,11 @@ def balance(
     typer.echo(f"\nWritten: {folder / 'balance.json'}")
     if pictures:
         _draw(done, folder)
+        _write_report(done, folder, units)
     raise typer.Exit(1 if done.verdict.closes is False else 0)
 
 
-def _balance_series(case: Any, folder: Path, pictures: bool) -> int:
+def _balance_series(case: Any, folder: Path, pictures: bool, units: str) -> int:
     """Balance every instant of a series; return the exit code."""
     from fluxmesh.job.check import with_doubts
     from fluxmesh.job.doubted import with_budget
@@ -109,7 +115,7 @@ def _balance_series(case: Any, folder: Path, pictures: bool) -> int:
     at, largest = governing_instant(case, done)
     if largest.surface.face_count <= REVIEWED_FACES:
         largest = with_budget(at, with_doubts(at, largest))
-    for old in ("vectors.png", "pressure.png", "series.png"):
+    for old in ("vectors.png", "pressure.png", "series.png", "report.html"):
         (folder / old).unlink(missing_ok=True)
     write_json(done.data(), folder / "series.json")
     write_json(largest.data(), folder / "balance.json")
@@ -130,7 +136,23 @@ def _balance_series(case: Any, folder: Path, pictures: bool) -> int:
         )
         typer.echo(f"Written: {folder / 'series.png'}")
         _draw(largest, folder)
+        _write_report(largest, folder, units)
     return 1 if done.verdict.closes is False else 0
+
+
+def _write_report(done: Any, folder: Path, units: str) -> None:
+    from fluxmesh.report.page.page import write_page
+    from fluxmesh.report.scene import thin
+    from fluxmesh.report.sketch import scene_of
+
+    scene = thin(scene_of(done.title, done.surface, done.flow, done.balance, notes=done.picture_notes()))
+    drawn = {
+        name: (folder / f"{name}.png").read_bytes()
+        for name in ("vectors", "pressure", "series")
+        if (folder / f"{name}.png").is_file()
+    }
+    write_page(done.data(), scene, folder / "report.html", pictures=drawn, units=units)
+    typer.echo(f"Written: {folder / 'report.html'}")
 
 
 def _instants_done(done: int, count: int) -> None:

@@ -1,0 +1,1 @@
+"""The report page: a balance as one file for a browser and for paper."""
