@@ -93,8 +93,7 @@ def balance(
     _print(done)
     typer.echo(f"\nWritten: {folder / 'balance.json'}")
     if pictures:
-        _draw(done, folder)
-        _write_report(done, folder, units)
+        _draw(done, folder, units)
     raise typer.Exit(1 if done.verdict.closes is False else 0)
 
 
@@ -135,17 +134,13 @@ def _balance_series(case: Any, folder: Path, pictures: bool, units: str) -> int:
             verdict=done.verdict_words(),
         )
         typer.echo(f"Written: {folder / 'series.png'}")
-        _draw(largest, folder)
-        _write_report(largest, folder, units)
+        _draw(largest, folder, units)
     return 1 if done.verdict.closes is False else 0
 
 
-def _write_report(done: Any, folder: Path, units: str) -> None:
+def _write_report(done: Any, scene: Any, folder: Path, units: str) -> None:
     from fluxmesh.report.page.page import write_page
-    from fluxmesh.report.scene import thin
-    from fluxmesh.report.sketch import scene_of
 
-    scene = thin(scene_of(done.title, done.surface, done.flow, done.balance, notes=done.picture_notes()))
     drawn = {
         name: (folder / f"{name}.png").read_bytes()
         for name in ("vectors", "pressure", "series")
@@ -186,7 +181,7 @@ def _print(done: Any) -> None:
     )
 
 
-def _draw(done: Any, folder: Path) -> None:
+def _draw(done: Any, folder: Path, units: str) -> None:
     from fluxmesh.report.pictures import draw_pressure, draw_vectors
     from fluxmesh.report.scene import thin
     from fluxmesh.report.sketch import scene_of
@@ -200,6 +195,7 @@ def _draw(done: Any, folder: Path) -> None:
             typer.echo(f"Written: {folder / 'pressure.png'}")
     except PictureError as error:
         typer.echo(f"No pictures: {error}", err=True)
+    _write_report(done, scene, folder, units)
 
 
 @app.command(epilog="Example: fluxmesh check meshes/manifold/manifold_fine.toml")

@@ -164,7 +164,7 @@ def test_without_a_gl_library_the_numbers_still_come(fluxmesh, block, monkeypatc
     assert "VERDICT: closes" in ran.out
     assert "No pictures" in ran.err
     assert len(ran.err.strip().splitlines()) == 1
-    assert [path.name for path in (block.folder.parent / "out").iterdir()] == ["balance.json"]
+    assert [path.name for path in (block.folder.parent / "out").iterdir() if path.suffix != ".html"] == ["balance.json"]
 
 
 def test_a_reader_that_leaves_early_does_not_look_like_a_balance_that_fails(block) -> None:

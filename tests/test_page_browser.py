@@ -1,7 +1,7 @@
 """The report page in a real browser: the scene, its switches, the widths, the paper, and everybody's access.
 
-The browser is that of FLUXMESH_BROWSER, and axe-core that of FLUXMESH_AXE (its axe.min.js, from npm). Without a browser the
-tests are left out.
+The browser is that of FLUXMESH_BROWSER, and axe-core that of FLUXMESH_AXE (its axe.min.js, from npm). Without a
+browser the tests are left out.
 """
 
 from __future__ import annotations
