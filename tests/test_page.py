@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import copy
+import hashlib
 import json
 import math
 import re
@@ -14,7 +15,11 @@ from typing import Any
 import numpy as np
 import pytest
 
+import fluxmesh
+from fluxmesh.case.read import read_case
 from fluxmesh.errors import OutputError
+from fluxmesh.job.page import write_report
+from fluxmesh.job.run import run_case
 from fluxmesh.report.page import page as page_module
 from fluxmesh.report.page.digits import digits_of, percent_of
 from fluxmesh.report.page.grid import Block, Column, Grid, Line, shown_cells
@@ -22,6 +27,7 @@ from fluxmesh.report.page.page import MOST_BYTES, page_html, write_page
 from fluxmesh.report.page.scene3d import pack_scene, thinned
 from fluxmesh.report.page.source import Source
 from fluxmesh.report.page.steps import staircase
+from fluxmesh.report.page.traction import traction_sizes
 from fluxmesh.report.page.units import PageUnits
 from tests.page_cases import SHIPPED, made
 from tests.page_reading import (
@@ -35,6 +41,7 @@ from tests.page_reading import (
     read_page,
     size_of_terms,
 )
+from tests.small_meshes import cube
 
 PIXEL = b"\x89PNG\r\n\x1a\n" + b"\0" * 8
 HOSTILE = [
@@ -492,12 +499,12 @@ def test_thinning_keeps_each_value_with_its_triangle() -> None:
     scene = made("manifold_fine").scene
     heights = scene.points[scene.triangles].mean(axis=1)[:, 2]
     scene = replace(scene, pressure=heights.copy())
-    coarse, traction = thinned(scene, 2.0 * heights, 6_000)
+    coarse, kept = thinned(scene, 6_000)
     assert 1_000 < len(coarse.triangles) <= 6_000
     size = np.ptp(scene.points, axis=0).max()
     now = coarse.points[coarse.triangles].mean(axis=1)[:, 2]
     assert np.abs(coarse.pressure - now).max() < 0.05 * size
-    np.testing.assert_allclose(traction, 2.0 * coarse.pressure)
+    np.testing.assert_array_equal(coarse.pressure, heights[kept])
     assert coarse.pressure_range == pytest.approx((heights.min(), heights.max()))
 
 
@@ -506,7 +513,7 @@ def test_a_scene_packs_what_it_shows() -> None:
     units = PageUnits()
     traction = np.full(len(one.scene.triangles), 2.5)
     traction[:100] = np.nan
-    packed = pack_scene(one.scene, units, {}, traction=traction)
+    packed = pack_scene(one.scene, units, {}, traction=lambda triangles: traction[triangles])
     assert packed.triangles == len(one.scene.triangles)
     assert sum(piece["triangles"][1] for piece in packed.data["pieces"]) == 3 * packed.triangles
     assert set(packed.colours) == {"pressure", "traction"}
@@ -539,3 +546,36 @@ def test_a_large_surface_is_coarsened_until_the_page_is_small() -> None:
     text = page_html(made("header").data, scene, pictures={"vectors": b"x" * 2_000_000}, extra={})
     assert len(text.encode()) < MOST_BYTES
     assert f"of {len(triangles):,}" in text
+
+
+# ---- of a case -----------------------------------------------------------------------------------------
+
+
+def test_the_page_of_a_case_tells_where_it_comes_from(tmp_path: Path) -> None:
+    path = SHIPPED["guide_vane"]
+    case = read_case(path)
+    done = run_case(case)
+    write_report(case, done, tmp_path / "report.html", command="fluxmesh balance guide_vane.toml")
+    root = read_page((tmp_path / "report.html").read_text("utf-8"))
+    text = root.text()
+    for file in (path, path.with_suffix(".vtp")):
+        content = file.read_bytes()
+        assert hashlib.sha256(content).hexdigest() in text
+        assert f"{len(content):,}" in text
+    assert path.read_text("utf-8").strip() in text
+    assert "fluxmesh balance guide_vane.toml" in text
+    assert [one.attributes["value"] for one in root.all("input") if one.attributes.get("name") == "colour"] == [
+        "plain", "pressure", "traction"
+    ]  # fmt: skip
+    assert str(path.parent) not in text
+
+
+def test_traction_sizes_add_up_to_the_drag_of_a_plane_wall() -> None:
+    points, faces = cube()
+    traction = np.tile([3.0, 0.0, 4.0], (len(faces), 1))
+    surface = fluxmesh.control_surface(points, faces, {"all": ("wall", np.arange(len(faces)))})
+    flow = fluxmesh.lay_flow(surface, density=1.0, pressure=0.0, traction=traction, at="faces")
+    np.testing.assert_allclose(traction_sizes(surface, flow), 5.0)
+    np.testing.assert_allclose(traction_sizes(surface, flow, np.array([7, 3])), 5.0)
+    none = fluxmesh.lay_flow(surface, density=1.0, pressure=0.0)
+    assert traction_sizes(surface, none) is None

@@ -27,7 +27,9 @@ from tests.test_page import HOSTILE, hostile, later
 
 pytestmark = pytest.mark.long
 
-DRAWING = ["--no-sandbox", "--use-angle=swiftshader", "--enable-unsafe-swiftshader", "--ignore-gpu-blocklist"]
+# in a container there is no sandbox to be had, and little shared memory
+CONTAINED = ["--no-sandbox", "--disable-dev-shm-usage"]
+DRAWING = [*CONTAINED, "--use-angle=swiftshader", "--enable-unsafe-swiftshader", "--ignore-gpu-blocklist"]
 AXE = MESHES.parent / ".venv-test" / "axe" / "node_modules" / "axe-core" / "axe.min.js"
 SLOW = 90_000  # ms: a software renderer on a busy machine
 
@@ -130,7 +132,9 @@ def text_of(name: str, units: str = "si", scene: bool = True) -> str:
 def scene(browser: Any, tmp_path_factory: pytest.TempPathFactory) -> Iterator[Opened]:
     one = made("manifold_coarse")
     traction = np.linspace(0.0, 4.0, len(one.scene.triangles))
-    text = page_html(one.data, one.scene, pictures={"vectors": still("")}, extra={"traction": traction})
+    text = page_html(
+        one.data, one.scene, pictures={"vectors": still("")}, extra={"traction": lambda triangles: traction[triangles]}
+    )
     opened = Opened(browser, tmp_path_factory.mktemp("page") / "scene.html", text).drawn()
     yield opened
     # whatever was done to it, it never complained and never asked
@@ -291,7 +295,7 @@ def test_numbers_in_the_browser_are_those_of_the_result(browser: Any, tmp_path: 
 
 
 def test_without_webgl_the_pictures_serve(chromium: Any, tmp_path: Path) -> None:
-    plain = chromium.launch(executable_path=browser_path(), args=["--no-sandbox", "--disable-3d-apis"])
+    plain = chromium.launch(executable_path=browser_path(), args=[*CONTAINED, "--disable-3d-apis"])
     opened = Opened(plain, tmp_path / "page.html", text_of("header"))
     opened.page.wait_for_selector("#stage[data-ready=no]", state="attached")
     assert opened.page.locator(".picture .still img").first.is_visible()

@@ -16,11 +16,24 @@ from fluxmesh.integral.layout import AT_FACE, AT_NODE, AT_SAMPLE, PER_GROUP
 from fluxmesh.report.scene import Arrow, Marker, Scene
 from fluxmesh.surface.surface import ControlSurface
 
-__all__ = ["arrows_of", "scene_of", "scene_of_surface"]
+__all__ = ["arrows_of", "fan_triangles", "scene_of", "scene_of_surface"]
 
 
-def _fan_triangles(surface: ControlSurface) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
-    """Triangles for drawing (fans about the first corner), and the face of each."""
+def fan_triangles(surface: ControlSurface) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Return the triangles that a scene draws for the faces of a surface: fans about the first corner.
+
+    Parameters
+    ----------
+    surface : ControlSurface
+        The surface.
+
+    Returns
+    -------
+    triangles : ndarray, shape (n_triangles, 3), int64
+        Point indices.
+    face : ndarray, shape (n_triangles,), int64
+        The face that each belongs to.
+    """
     if surface.offsets is None:
         return surface.connectivity.reshape(-1, 3), np.arange(surface.face_count)
     sizes = np.diff(surface.offsets)
@@ -183,7 +196,7 @@ def scene_of(title: str, surface: ControlSurface, flow: Flow, balance: Balance, 
     Scene
         Triangles, gauge pressure and force arrows, SI units.
     """
-    triangles, face = _fan_triangles(surface)
+    triangles, face = fan_triangles(surface)
     markers = [Marker("anchor", "anchor", np.asarray(balance.setting.anchor, dtype=np.float64))]
     if balance.enclosed is not None:
         markers.append(Marker("centroid", "centre of volume", balance.enclosed.centroid))
@@ -213,7 +226,7 @@ def scene_of_surface(surface: ControlSurface, title: str = "") -> Scene:
     title : str, optional
         Heading.
     """
-    triangles, face = _fan_triangles(surface)
+    triangles, face = fan_triangles(surface)
     return Scene(
         title=title,
         points=surface.points,

@@ -11,9 +11,6 @@ from functools import cache
 from pathlib import Path
 from typing import Any, Final
 
-import numpy as np
-from numpy.typing import NDArray
-
 from fluxmesh.report.page.chart import chart_rows
 from fluxmesh.report.page.facts import (
     Fact,
@@ -133,9 +130,8 @@ def page_html(
         What else is known: ``case_text`` (str), ``files`` (a sequence of mappings with ``name``,
         ``size`` in bytes, ``sha256``), ``versions`` (name to version), ``command``, ``time`` (str),
         ``series`` (the content of ``series.json``), ``convergence`` (that of a study of meshes),
-        ``causes`` (a sequence as in ``causes`` of the result), ``traction`` (ndarray, shape
-        (n_triangles,), float64: size of the viscous traction on the triangles of the scene, Pa,
-        NaN where it is not known).
+        ``causes`` (a sequence as in ``causes`` of the result), ``traction`` (gives the size of
+        the viscous traction on triangles of the scene, see `fluxmesh.report.page.scene3d.pack_scene`).
 
     Returns
     -------
@@ -151,16 +147,11 @@ def page_html(
         return _rendered(context, scene, None, "")
     most = MOST_TRIANGLES
     while True:
-        packed = pack_scene(scene, page_units, _entries(data, page_units), traction=_traction(extra), most=most)
+        packed = pack_scene(scene, page_units, _entries(data, page_units), traction=extra.get("traction"), most=most)
         text = _rendered(context, scene, packed, drawing)
         if len(text.encode("utf-8", errors="replace")) < MOST_BYTES or most < 2_000:
             return text
         most = min(most, packed.triangles) // 2
-
-
-def _traction(extra: Mapping[str, Any]) -> NDArray[np.float64] | None:
-    found = extra.get("traction")
-    return None if found is None else np.asarray(found, dtype=np.float64)
 
 
 def _context(

@@ -14,7 +14,7 @@ from __future__ import annotations
 
 import base64
 import gzip
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any, Final
 
@@ -31,7 +31,16 @@ from fluxmesh.report.picture_pressure import pressure_bands
 from fluxmesh.report.picture_view import axes_for, choose_direction, fit
 from fluxmesh.report.scene import Scene, merge_points, thin
 
-__all__ = ["MOST_TRIANGLES", "Named", "PackedScene", "drawing_script", "pack_scene", "tags_of", "thinned"]
+__all__ = [
+    "MOST_TRIANGLES",
+    "Named",
+    "PackedScene",
+    "Traction",
+    "drawing_script",
+    "pack_scene",
+    "tags_of",
+    "thinned",
+]
 
 MOST_TRIANGLES: Final = 100_000
 """A surface with more triangles is coarsened for the scene."""
@@ -41,6 +50,8 @@ _WALL: Final = (214, 210, 202)
 _CREASE: Final = 38.0
 
 Array = NDArray[np.float64]
+Traction = Callable[[NDArray[np.int64]], Array | None]
+"""Gives the size of the viscous traction on triangles of a scene, Pa, from their numbers."""
 
 
 @dataclass(frozen=True)
@@ -107,15 +118,13 @@ def tags_of(scene: Scene) -> list[str]:
     return [item.tag for item in lay_out_arrows(scene, reach, view, 1.0)]
 
 
-def thinned(scene: Scene, traction: Array | None, most: int) -> tuple[Scene, Array | None]:
-    """Coarsen a scene that has more triangles than wanted, and a further value of its triangles with it.
+def thinned(scene: Scene, most: int) -> tuple[Scene, NDArray[np.int64]]:
+    """Coarsen a scene that has more triangles than wanted.
 
     Parameters
     ----------
     scene : Scene
         The scene.
-    traction : ndarray, shape (n_triangles,), float64, or None
-        Size of the viscous traction on each triangle, Pa, NaN where it is not known.
     most : int
         Triangles to keep at most.
 
@@ -123,19 +132,21 @@ def thinned(scene: Scene, traction: Array | None, most: int) -> tuple[Scene, Arr
     -------
     scene : Scene
         Its pressures those of the triangles that are left.
-    traction : ndarray or None
-        The same for the traction.
+    kept : ndarray, shape (n_left,), int64
+        Their numbers in the scene that was given.
     """
-    if len(scene.triangles) <= most:
-        return scene, traction
+    count = len(scene.triangles)
+    if count <= most:
+        return scene, np.arange(count)
     # numbers in place of pressures come back as the numbers of the triangles that are left
-    numbered = thin(replace(scene, pressure=np.arange(len(scene.triangles), dtype=np.float64)), most)
+    numbered = thin(replace(scene, pressure=np.arange(count, dtype=np.float64)), most)
     kept = np.asarray(numbered.pressure).astype(np.int64)
-    pressure = None if scene.pressure is None else scene.pressure[kept]
     extremes = scene.pressure_range
-    if scene.pressure is not None and extremes is None and np.isfinite(scene.pressure).any():
+    if scene.pressure is None:
+        return replace(numbered, pressure=None, pressure_range=extremes), kept
+    if extremes is None and np.isfinite(scene.pressure).any():
         extremes = float(np.nanmin(scene.pressure)), float(np.nanmax(scene.pressure))
-    return replace(numbered, pressure=pressure, pressure_range=extremes), None if traction is None else traction[kept]
+    return replace(numbered, pressure=scene.pressure[kept], pressure_range=extremes), kept
 
 
 class _Block:
@@ -164,7 +175,7 @@ def pack_scene(
     units: PageUnits,
     entries: Mapping[str, Sequence[tuple[str, str]]],
     *,
-    traction: Array | None = None,
+    traction: Traction | None = None,
     most: int = MOST_TRIANGLES,
 ) -> PackedScene:
     """Return a scene as data for the script.
@@ -177,8 +188,9 @@ def pack_scene(
         Of the page, settled.
     entries : mapping of str to sequence of (str, str)
         What is said of each group: name and text.
-    traction : ndarray, shape (n_triangles,), float64, or None
-        Size of the viscous traction on each triangle, Pa, NaN where it is not known.
+    traction : callable, optional
+        Gives the size of the viscous traction on triangles of the scene from their numbers, shape (n,):
+        ndarray, shape (n,), float64, Pa, NaN where it is not known, or None.
     most : int, optional
         Triangles to show at most.
 
@@ -189,7 +201,7 @@ def pack_scene(
     """
     tags = tags_of(scene)
     whole = len(scene.triangles)
-    scene, traction = thinned(scene, traction, most)
+    scene, kept = thinned(scene, most)
     ports = find_ports(scene)
     reach = reach_of(scene, ports)
     block = _Block()
@@ -205,7 +217,7 @@ def pack_scene(
         for name, role in scene.groups
     ]
     fields: dict[str, Array] = {}
-    for name, values in (("pressure", scene.pressure), ("traction", traction)):
+    for name, values in (("pressure", scene.pressure), ("traction", traction(kept) if traction else None)):
         if values is not None and np.isfinite(values).any():
             fields[name] = values
     pieces = _pieces(scene, fields, block)
