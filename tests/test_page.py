@@ -210,6 +210,8 @@ def test_bars_are_to_one_scale() -> None:
         for cell in [one for one in row.all("td") if one.all("rect")]:
             value = float(numbers(cell)[0].attributes["data-value"])
             width = float(cell.all("rect")[0].attributes["width"])
+            left = float(cell.all("rect")[0].attributes["x"])
+            assert 0.0 <= left <= left + width <= 1000.0
             if width > 20.0:
                 scales.append(abs(value) / width)
     assert len(scales) > 8
@@ -396,6 +398,7 @@ def test_names_with_markup_are_text() -> None:
     assert all(name in text for name in HOSTILE)
     stored = json.loads(next(one for one in root.all("script") if one.attributes.get("id") == "scene-data").text())
     assert [group["name"] for group in stored["groups"]][:4] == HOSTILE
+    assert root.all("h1")[0].attributes["dir"] == "auto"
     # a word that reads from right to left does not turn the line around it
     for one in root.all():
         if one.text() == HOSTILE[3] and not any(isinstance(child, Element) for child in one.children):
@@ -543,7 +546,7 @@ def test_a_large_surface_is_coarsened_until_the_page_is_small() -> None:
         group_of_triangle=np.zeros(len(triangles), np.int32),
         pressure=rng.random(len(triangles)),
     )
-    text = page_html(made("header").data, scene, pictures={"vectors": b"x" * 2_000_000}, extra={})
+    text = page_html(made("header").data, scene, pictures={"vectors": b"x" * 4_200_000}, extra={})
     assert len(text.encode()) < MOST_BYTES
     assert f"of {len(triangles):,}" in text
 
