@@ -93,7 +93,7 @@ def balance(
     _print(done)
     typer.echo(f"\nWritten: {folder / 'balance.json'}")
     if pictures:
-        _draw(done, folder, units)
+        _draw(read, done, folder, units)
     raise typer.Exit(1 if done.verdict.closes is False else 0)
 
 
@@ -134,20 +134,8 @@ def _balance_series(case: Any, folder: Path, pictures: bool, units: str) -> int:
             verdict=done.verdict_words(),
         )
         typer.echo(f"Written: {folder / 'series.png'}")
-        _draw(largest, folder, units)
+        _draw(case, largest, folder, units, done.data())
     return 1 if done.verdict.closes is False else 0
-
-
-def _write_report(done: Any, scene: Any, folder: Path, units: str) -> None:
-    from fluxmesh.report.page.page import write_page
-
-    drawn = {
-        name: (folder / f"{name}.png").read_bytes()
-        for name in ("vectors", "pressure", "series")
-        if (folder / f"{name}.png").is_file()
-    }
-    write_page(done.data(), scene, folder / "report.html", pictures=drawn, units=units)
-    typer.echo(f"Written: {folder / 'report.html'}")
 
 
 def _instants_done(done: int, count: int) -> None:
@@ -181,21 +169,14 @@ def _print(done: Any) -> None:
     )
 
 
-def _draw(done: Any, folder: Path, units: str) -> None:
-    from fluxmesh.report.pictures import draw_pressure, draw_vectors
-    from fluxmesh.report.scene import thin
-    from fluxmesh.report.sketch import scene_of
+def _draw(case: Any, done: Any, folder: Path, units: str, series: Any = None) -> None:
+    from fluxmesh.job.drawn import draw_results
 
-    scene = thin(scene_of(done.title, done.surface, done.flow, done.balance, notes=done.picture_notes()))
-    try:
-        draw_vectors(scene, folder / "vectors.png")
-        typer.echo(f"Written: {folder / 'vectors.png'}")
-        if scene.pressure is not None:
-            draw_pressure(scene, folder / "pressure.png")
-            typer.echo(f"Written: {folder / 'pressure.png'}")
-    except PictureError as error:
-        typer.echo(f"No pictures: {error}", err=True)
-    _write_report(done, scene, folder, units)
+    for made in draw_results(case, done, folder, units=units, series=series):
+        if isinstance(made, PictureError):
+            typer.echo(f"No pictures: {made}", err=True)
+        else:
+            typer.echo(f"Written: {made}")
 
 
 @app.command(epilog="Example: fluxmesh check meshes/manifold/manifold_fine.toml")

@@ -78,8 +78,8 @@ def _saved(sheet: Sheet, kind: str, metadata: dict[str, str | None]) -> bytes:
 
 def _letters(text: str) -> str:
     """Return a style element with the letters of the font that an SVG text uses."""
-    from fontTools.subset import Options, Subsetter  # type: ignore[import-untyped]
-    from fontTools.ttLib import TTFont  # type: ignore[import-untyped]
+    from fontTools.subset import Options, Subsetter
+    from fontTools.ttLib import TTFont
     from matplotlib import get_data_path
 
     # all that stands between tags, and entities as they are: a few letters more do no harm
