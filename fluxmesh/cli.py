@@ -207,11 +207,16 @@ def causes(
     Exit code 0: the balance closes, or cannot be judged; 1: it does not close; 2: the input is at fault.
     """
     from fluxmesh.case.read import read_case
+    from fluxmesh.job.ahead import load_ahead
+
+    read = read_case(case)
+    of_a_series = read.storage is not None and read.storage.is_series()
+    loaded = None if of_a_series else load_ahead(read)
+
     from fluxmesh.job.causes import causes_of_case
     from fluxmesh.report.causes import causes_data, print_causes
 
-    read = read_case(case)
-    found = causes_of_case(read)
+    found = causes_of_case(read, loaded=loaded)
     title = read.title or read.name
     if json is not None:
         from fluxmesh.report.result import write_json

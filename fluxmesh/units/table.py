@@ -60,6 +60,7 @@ _BY_DIMENSION: dict[tuple[int, int, int, int], dict[str, float]] = {
     (1, 0, 0, 0): {
         "m": 1.0, "dm": 0.1, "cm": 0.01, "mm": 1e-3, "um": 1e-6, "km": 1e3,
         "in": _INCH, "inch": _INCH, "ft": _FOOT, "yd": 3 * _FOOT, "mi": 5280 * _FOOT,
+        "meter": 1.0, "metre": 1.0, "foot": _FOOT, "feet": _FOOT, "yard": 3 * _FOOT, "mile": 5280 * _FOOT,
     },
     (3, 0, 0, 0): {"L": 1e-3, "l": 1e-3, "mL": 1e-6, "ml": 1e-6, "gal": _GALLON},
     (0, 1, 0, 0): {
@@ -69,6 +70,7 @@ _BY_DIMENSION: dict[tuple[int, int, int, int], dict[str, float]] = {
     (0, 0, 1, 0): {
         "s": 1.0, "sec": 1.0, "ms": 1e-3, "us": 1e-6, "min": 60.0,
         "h": 3600.0, "hr": 3600.0, "d": 86400.0, "day": 86400.0,
+        "second": 1.0, "minute": 60.0, "hour": 3600.0,
     },
     (0, 0, -1, 0): {"Hz": 1.0, "rpm": _TURN / 60},
     (0, 0, 0, 1): {"K": 1.0, "degR": 5 / 9},
