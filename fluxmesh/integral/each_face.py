@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fluxmesh.compiling import compiled, run_parts
-from fluxmesh.integral.kernel import _flat_run, integrate
+from fluxmesh.integral.kernel import flat_run, integrate
 from fluxmesh.integral.lanes import BUFFER_ROWS, LANES
 from fluxmesh.integral.layout import FaceArrays, FieldArrays, FlowArrays, Runs, sampled_groups
 from fluxmesh.integral.table import WIDTH, IntegralTable
@@ -44,7 +44,7 @@ def _triangles(
         high[:] = 0.0
         low[:] = 0.0
         # one batch of triangles: each lane holds the integrals of one of them
-        _flat_run(
+        flat_run(
             mesh, flow, order, origin, start, stop, group, b, o, high, low, nodes, faces, skip_still
         )  # fmt: skip
         for i in range(stop - start):

@@ -45,16 +45,17 @@ from fluxmesh.integral.pointwise import point_run
 from fluxmesh.integral.shapes import ShapeTables, shape_tables
 from fluxmesh.integral.table import WIDTH, IntegralTable
 
-__all__ = ["integrate"]
+__all__ = ["flat_run", "integrate"]
 
 _SPAN: Final = 16  # runs a thread takes at a time
 
 
 @compiled
-def _flat_run(
+def flat_run(
     mesh: Any, flow: Any, order: Any, origin: Any, begin: int, end: int, g: int,
     b: Any, o: Any, high: Any, low: Any, nodes: Any, faces: Any, skip_still: bool,
 ) -> None:  # fmt: skip
+    """Add the integrals over straight faces, a batch of triangles at a time, to ``high`` and ``low`` lane by lane."""
     points, connectivity, offsets, _ = mesh
     velocity, traction, pressure, density, mass, terms, _ = flow
     v_at, v_node, v_face, v_group, _, v_scale = velocity
@@ -139,9 +140,10 @@ def _flat_run(
         absorb_triangles(b, o, high, low, has_pressure, has_traction, has_density, run_flow, mass_given)
 
 
+# Two kernels rather than one: the machine code for points is made only where a surface needs it.
 @compiled
-def _integrate_runs(
-    mesh: Any, flow: Any, runs: Any, tables: Any, origin: Any, skip_still: Any, sampled: Any, first: int, last: int,
+def _integrate_flat_runs(
+    mesh: Any, flow: Any, runs: Any, origin: Any, skip_still: Any, sampled: Any, first: int, last: int,
     out_high: Any, out_low: Any,
 ) -> None:  # fmt: skip
     b = np.zeros(BUFFER_ROWS * LANES)
@@ -152,16 +154,36 @@ def _integrate_runs(
     faces = np.zeros(LANES, dtype=np.uint64)
     order, start, group_of_run, curved = runs
     for run in range(first, last):
-        high[:] = 0.0
-        low[:] = 0.0
         group = group_of_run[run]
         if curved[run] or sampled[group]:
-            point_run(mesh, flow, order, tables, origin, start[run], start[run + 1], group, b, o, high, low)
-        else:
-            _flat_run(
-                mesh, flow, order, origin, start[run], start[run + 1], group,
-                b, o, high, low, nodes, faces, skip_still[group],
-            )  # fmt: skip
+            continue
+        high[:] = 0.0
+        low[:] = 0.0
+        flat_run(
+            mesh, flow, order, origin, start[run], start[run + 1], group,
+            b, o, high, low, nodes, faces, skip_still[group],
+        )  # fmt: skip
+        for j in range(WIDTH):
+            _add_pairs(out_high, out_low, run, j, high, low, LANES * j, LANES)
+
+
+@compiled
+def _integrate_point_runs(
+    mesh: Any, flow: Any, runs: Any, tables: Any, origin: Any, sampled: Any, first: int, last: int,
+    out_high: Any, out_low: Any,
+) -> None:  # fmt: skip
+    b = np.zeros(BUFFER_ROWS * LANES)
+    o = np.zeros(WIDTH * LANES)
+    high = np.zeros(WIDTH * LANES)
+    low = np.zeros(WIDTH * LANES)
+    order, start, group_of_run, curved = runs
+    for run in range(first, last):
+        group = group_of_run[run]
+        if not (curved[run] or sampled[group]):
+            continue
+        high[:] = 0.0
+        low[:] = 0.0
+        point_run(mesh, flow, order, tables, origin, start[run], start[run + 1], group, b, o, high, low)
         for j in range(WIDTH):
             _add_pairs(out_high, out_low, run, j, high, low, LANES * j, LANES)
 
@@ -226,10 +248,14 @@ def integrate(
     sampled = sampled_groups(flow)
     high, low = np.zeros((count, WIDTH)), np.zeros((count, WIDTH))
     parts = -(-count // _SPAN)
+    by_points = runs.curved | sampled[runs.group]
 
     def work(part: int) -> None:
         first, last = part * _SPAN, min((part + 1) * _SPAN, count)
-        _integrate_runs(mesh, flow, runs, tables, origin, still_groups, sampled, first, last, high, low)
+        if not by_points[first:last].all():
+            _integrate_flat_runs(mesh, flow, runs, origin, still_groups, sampled, first, last, high, low)
+        if by_points[first:last].any():
+            _integrate_point_runs(mesh, flow, runs, tables, origin, sampled, first, last, high, low)
 
     work(0)  # compiles or loads the kernel once, before threads race for it
     run_parts(lambda part: work(part + 1), parts - 1, threads)
