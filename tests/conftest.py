@@ -14,6 +14,27 @@ import pytest
 from fluxmesh.errors import FileError, InputError
 from fluxmesh.surface.files import read_mesh
 from fluxmesh.surface.rawmesh import RawMesh
+from tests.verification import Gathering, Verify, test_of
+
+# ---- checks against published figures (tests/verification.py) --------------------------------
+
+
+@pytest.fixture
+def verify(request: pytest.FixtureRequest) -> Verify:
+    """Hold a figure to its published source, and record that in the table of verification."""
+    return Verify(test_of(request.node.nodeid), request.node.user_properties)
+
+
+def pytest_addoption(parser: pytest.Parser) -> None:
+    parser.addoption("--verification", metavar="PATH", help="write the table of verification, if all its checks pass")
+
+
+def pytest_configure(config: pytest.Config) -> None:
+    config.addinivalue_line("markers", "verification: holds a figure to a published source (set by itself)")
+    config.pluginmanager.register(Gathering(config), "verification")
+
+
+# ---- the command, and what it reads ----------------------------------------------------------
 
 
 @dataclass(frozen=True)

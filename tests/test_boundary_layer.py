@@ -19,6 +19,7 @@ from fluxmesh.surface.surface import ControlSurface
 from tests.flows import face_frames
 from tests.measures import observed_order
 from tests.solids import Station, box, mapped, pipe, swept
+from tests.verification import Verify
 
 SIZES = (4.0, 2.0, 1.0)
 DENSITY = 1.2
@@ -72,7 +73,7 @@ def test_blasius_layer_has_its_published_thicknesses() -> None:
     assert simpson(u * (1 - u), x=eta) == pytest.approx(0.6641146724, abs=1e-9)  # momentum
 
 
-def test_wake_of_a_plate_inside_a_streamline() -> None:
+def test_wake_of_a_plate_inside_a_streamline(verify: Verify) -> None:
     # from before the plate to its trailing edge, under the streamline that enters at the height h and leaves displaced:
     # no flow, no pressure and no friction but at the plate, whose drag is the lack of momentum in the last section
     width = np.sqrt(VISCOSITY * LENGTH / SPEED)
@@ -94,9 +95,21 @@ def test_wake_of_a_plate_inside_a_streamline() -> None:
         assert abs(found.mass.relative) < 1e-3
         left.append(found.load.from_balance.force[0] / 0.5 - DRAG)
     assert_order_two(left, below=0.01 * DRAG)
+    verify(
+        what="Flat plate, Re 13333: drag from the wake over rho U² L / sqrt(Re)",
+        source="Blasius 1908; White, Fluid Mechanics, ch. 7: 0.66411467",
+        memory=True,
+        expected=0.66411467,
+        got=0.66411467 * (1 + left[-1] / DRAG),
+        tolerance=0.0067,
+        why="64 cells across the layer",
+        order=(observed_order(SIZES, left), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
 
 
-def test_part_of_a_plate_under_a_side_that_the_stream_leaves() -> None:
+def test_part_of_a_plate_under_a_side_that_the_stream_leaves(verify: Verify) -> None:
     # from a quarter of the plate to its end: the layer thickens and pushes the stream out through the upper side,
     # with its momentum; friction there is half of the whole, for drag goes as sqrt(x)
     high = FAR * np.sqrt(VISCOSITY * LENGTH / SPEED)
@@ -127,6 +140,30 @@ def test_part_of_a_plate_under_a_side_that_the_stream_leaves() -> None:
     assert_order_two(demanded, below=0.02 * DRAG)
     assert_order_two(on_plate, below=1e-3 * DRAG)
     assert_order_two(mass, below=1e-4)
+    verify(
+        what="Last three quarters of a plate under a side that the stream leaves: share of the drag",
+        source="Blasius 1908: drag goes as sqrt(x), so one half",
+        memory=True,
+        expected=0.5,
+        got=0.5 + demanded[-1] / DRAG,
+        tolerance=0.02,
+        why="64 cells across the layer",
+        order=(observed_order(SIZES, demanded), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
+    verify(
+        what="Last three quarters of a plate under a side that the stream leaves: mass left over, relative",
+        source="Blasius 1908: the layer is continuous",
+        memory=True,
+        expected=0,
+        got=mass[-1],
+        tolerance=1e-4,
+        why="64 cells across the layer",
+        order=(observed_order(SIZES, mass), 2, 0.12),
+        kind="law",
+        law="mass",
+    )
 
 
 # ---- layers that are exact solutions --------------------------------------------------------
@@ -179,7 +216,7 @@ def stagnation_layer(planes: int, at_wall: float) -> Layer:
 
 
 @pytest.mark.parametrize(("planes", "at_wall"), [(1, 1.2325876568), (2, 1.3119376939)], ids=["Hiemenz", "Homann"])
-def test_flow_against_a_wall(planes: int, at_wall: float) -> None:
+def test_flow_against_a_wall(verify: Verify, planes: int, at_wall: float) -> None:
     # Hiemenz 1911, Homann 1936 (White, Viscous Fluid Flow ch. 3, from memory): exact Navier-Stokes; friction
     # rho a x sqrt(a nu) f''(0) with a = nu = 1, integrated from x = 0.2 to 1.2 over one metre: 0.7 rho f''(0)
     layer = stagnation_layer(planes, at_wall)
@@ -196,6 +233,18 @@ def test_flow_against_a_wall(planes: int, at_wall: float) -> None:
     assert_order_two(angular, below=1e-3)
     assert abs(walls[-1]) < 1e-9  # friction is linear in x
     assert_order_two(demanded, below=0.05)
+    verify(
+        what=f"{'Plane' if planes == 1 else 'Round'} flow against a wall: friction over rho a x sqrt(a nu)",
+        source=f"{'Hiemenz 1911' if planes == 1 else 'Homann 1936'}; White, Viscous Fluid Flow, ch. 3: f''(0)",
+        memory=True,
+        expected=at_wall,
+        got=found.load.from_balance.force[0] / (0.7 * DENSITY),
+        tolerance=0.06,
+        why="32 cells up",
+        order=(observed_order(SIZES, demanded), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
 
 
 F_WALL, G_WALL = 0.5102326191, -0.6159220144
@@ -234,7 +283,7 @@ def disk_layer() -> Layer:
     return Layer(velocity, gradient, pressure)
 
 
-def test_torque_of_a_turning_disk() -> None:
+def test_torque_of_a_turning_disk(verify: Verify) -> None:
     # von Karman 1921, Cochran 1934 (White, Viscous Fluid Flow ch. 3, from memory): G'(0) = -0.6159220144; the wall's
     # torque pi/2 rho R⁴ sqrt(nu Omega³) 0.6159 leaves with the radial flow, C_M = 3.8699521512 / sqrt(Re) for two sides
     radius, height = 3.0, 8.0
@@ -258,13 +307,25 @@ def test_torque_of_a_turning_disk() -> None:
     assert_order_two(demanded, below=0.02 * torque)
     assert_order_two(carried, below=0.02 * torque)
     assert_order_two(closing, below=5e-3, tolerance=0.2)
+    verify(
+        what="Turning disk: torque from the balance over pi/2 rho R⁴ sqrt(nu O³)",
+        source="von Karman 1921, Cochran 1934; White, Viscous Fluid Flow, ch. 3: G'(0)",
+        memory=True,
+        expected=-0.6159220144,
+        got=-0.6159220144 * (1 - demanded[-1] / torque),
+        tolerance=0.013,
+        why="48 facets around, 32 layers",
+        order=(observed_order(SIZES, demanded), 2, 0.12),
+        kind="law",
+        law="angular",
+    )
 
 
 # ---- layers that change in time -------------------------------------------------------------
 
 
 @pytest.mark.parametrize("time", [0.3, 2.0])
-def test_a_plate_that_starts_at_once(time: float) -> None:
+def test_a_plate_that_starts_at_once(verify: Verify, time: float) -> None:
     # Stokes 1851, Rayleigh 1911 (Batchelor section 4.3, from memory): u = U erfc(z / sqrt(4 nu t)); what the fluid
     # gains is what the plate gives, rho U sqrt(nu / (pi t)) a unit area. The gain is integrated here by itself.
     from scipy.special import erfc
@@ -302,13 +363,24 @@ def test_a_plate_that_starts_at_once(time: float) -> None:
     # friction at the other sides is left out, so of the moments only that about z must close
     assert done.angular.residual()[2] == pytest.approx(0, abs=1e-12 * friction)
     assert_allclose(found(Storage()).momentum.residual(), -kept.momentum, rtol=0, atol=1e-12 * friction)
+    verify(
+        what=f"Plate that starts at once, t = {time:g} s, with storage: friction over rho U sqrt(nu / (pi t))",
+        source="Stokes 1851, Rayleigh 1911; Batchelor, section 4.3",
+        memory=True,
+        expected=-1,
+        got=done.load.from_balance.force[0] / (1.2 * friction),
+        tolerance=1e-11,
+        why="the storage by 60 Gauss points: round-off",
+        kind="law",
+        law="momentum",
+    )
 
 
 @pytest.mark.parametrize(
     ("number", "size", "lead"),
     [(2, 0.41246790420, 56.738427), (5, 0.75560966811, 18.647152), (10, 0.86835067485, 8.693368)],
 )
-def test_pulsating_flow_in_a_pipe(number: int, size: float, lead: float) -> None:
+def test_pulsating_flow_in_a_pipe(verify: Verify, number: int, size: float, lead: float) -> None:
     # Womersley 1955: with -dp/dz = Re K e^(iwt) the flow is Re K pi R² / (i w rho) (1 - F10) e^(iwt); |1 - F10| and the
     # angle that the flow is short of a lag of 90 degrees, for three Womersley numbers. Momentum: what the pressure
     # gives, less what the walls bear, is rho L dQ/dt.
@@ -354,3 +426,27 @@ def test_pulsating_flow_in_a_pipe(number: int, size: float, lead: float) -> None
     assert_order_two(amplitude, below=0.01)
     assert abs(lag[-1]) < 0.2
     assert abs(lag[-1]) < abs(lag[0]) / 10
+    verify(
+        what=f"Pulsating pipe flow, Womersley number {number}: size of the flow over K pi R² / (w rho)",
+        source="Womersley 1955: |1 - F10|",
+        memory=True,
+        expected=size,
+        got=size + amplitude[-1],
+        tolerance=0.01,
+        why="48 facets around",
+        order=(observed_order(SIZES, amplitude), 2, 0.12),
+        kind="law",
+        law="mass",
+    )
+    verify(
+        what=f"Pulsating pipe flow, Womersley number {number}, with storage: force left over, of the pressure's",
+        source="Womersley 1955: rho dQ/dt = K A - 2 pi R tau",
+        memory=True,
+        expected=0,
+        got=closing[-1],
+        tolerance=0.01,
+        why="48 facets around",
+        order=(observed_order(SIZES, closing), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )

@@ -32,6 +32,7 @@ from fluxmesh.surface.surface import ControlSurface
 from tests.conftest import CASE, Block
 from tests.solids import any_polyhedron, box, pipe, sphere
 from tests.test_classic_results import PORTS
+from tests.verification import Verify
 
 PLACES = {"density": "faces", "velocity": "nodes"}
 
@@ -93,7 +94,7 @@ def test_other_groups_are_not_looked_at(quads: bool) -> None:
     assert_allclose(chosen.area, [0, 2.0, 2.0, 0, 0, 0], rtol=1e-14)
 
 
-def test_values_at_quadrature_points_are_exact_for_products_of_degree_four() -> None:
+def test_values_at_quadrature_points_are_exact_for_products_of_degree_four(verify: Verify) -> None:
     # φ = x² y through the face x = 1 of the unit cube, with the speed z: ∫∫ y z dy dz = 1/4
     surface = box((0, 0, 0), (1, 1, 1), 2).surface({"x-": "inlet", "x+": "outlet"}, rest="wall")
     velocity = np.zeros((surface.point_count, 3))
@@ -112,6 +113,16 @@ def test_values_at_quadrature_points_are_exact_for_products_of_degree_four() -> 
     assert_allclose(found.mass_flow[:2], [0, 0.75], rtol=1e-13, atol=1e-15)
     with pytest.raises(FieldError, match="are not at those of the flow"):
         integrate_scalar(surface, flow, field)
+    verify(
+        what="x² y carried with the speed z through the face x = 1 of the unit cube",
+        source="by hand: the integral of y z is 1/4",
+        expected=0.25,
+        got=found.volume_flow[1],
+        tolerance=1e-12,
+        why="rule of degree four: round-off",
+        kind="law",
+        law="carried",
+    )
 
 
 def test_bad_values_are_named() -> None:
@@ -148,7 +159,7 @@ def tee(values: dict[str, float], **more: Any) -> CarriedBalance:
     return carried_balance(done.table, done.setting, scalar, **more)
 
 
-def test_two_streams_mix() -> None:
+def test_two_streams_mix(verify: Verify) -> None:
     mixed = {"x-": 30.0, "y-": 6.0, "x+": 22.0}  # (2·30 + 6) / 3
     found = tee(mixed, unit="g")
     assert_allclose(found.inflow, 1.25 * 66, rtol=1e-14)
@@ -167,6 +178,16 @@ def test_two_streams_mix() -> None:
     assert tee({**mixed, "x+": 20.0}, source=-7.5).relative < 1e-15
     assert tee({**mixed, "x+": 20.0}, storage=Storage(carried={"salt": 7.5})).relative < 1e-15
     assert tee({**mixed, "x+": 20.0}, storage=Storage(carried={"salt": 3.5}), source=-4.0).relative < 1e-15
+    verify(
+        what="Two streams, 2 and 1 kg/s with 30 and 6 g/kg, mix: balance left over with 22 g/kg, relative",
+        source="mixing rule: (2 · 30 + 6) / 3",
+        expected=0,
+        got=found.relative,
+        tolerance=1e-12,
+        why="round-off",
+        kind="law",
+        law="carried",
+    )
 
 
 def test_what_is_not_known_is_not_judged() -> None:
@@ -183,7 +204,7 @@ def test_what_is_not_known_is_not_judged() -> None:
     ]
 
 
-def test_shape_of_profile_counts() -> None:
+def test_shape_of_profile_counts(verify: Verify) -> None:
     # dye φ = 1 - r² in a parabolic pipe flow w = 2U(1 - r²): ∫φ w dA = 2π U / 3, where the product of means gives π U/2
     errors = []
     for n in (24, 48):
@@ -198,6 +219,16 @@ def test_shape_of_profile_counts() -> None:
         assert carried_balance(done.table, done.setting, scalar).relative < 1e-13
     assert errors[1] < 0.01
     assert errors[0] / errors[1] > 3.5
+    verify(
+        what="Dye 1 - r² in a parabolic pipe flow: what passes over pi U R²",
+        source="by hand: 2/3, where the product of the means gives 1/2",
+        expected=2 / 3,
+        got=scalar.volume_flow.max() / (np.pi * 1.5),
+        tolerance=0.01,
+        why="48 facets around; at least order 1.8 is asserted beside",
+        kind="law",
+        law="carried",
+    )
 
 
 def test_the_whole_of_a_half_model_carries_twice() -> None:

@@ -22,6 +22,7 @@ from fluxmesh.field.gas import ideal_density
 from fluxmesh.surface.surface import ControlSurface
 from tests.measures import observed_order
 from tests.solids import Solid, Station, box, elbow, moved, prism, radius_of_area, rigid_motion, sphere, swept
+from tests.verification import Verify
 
 Array = NDArray[np.float64]
 AIR = 287.05287  # J/(kg K), ISO 2533
@@ -111,7 +112,7 @@ def shocked_duct(
 
 @pytest.mark.parametrize(("first", "second", "rise", "heating", "loss", "share"), SHOCKS)
 def test_normal_shock_in_terms_of_mach_number_and_temperature(
-    first: float, second: float, rise: float, heating: float, loss: float, share: float
+    verify: Verify, first: float, second: float, rise: float, heating: float, loss: float, share: float
 ) -> None:
     # only the tabled ratios go in; the density is that of the gas law, the speed that of the Mach number
     done = shocked_duct(first, second, rise, heating, rigid_motion(np.random.default_rng(11)))
@@ -129,6 +130,38 @@ def test_normal_shock_in_terms_of_mach_number_and_temperature(
     # total enthalpy over p1/rho1 is 3.5 + 0.7 M²: 5.075, 6.3, 9.8, the same behind
     for name in ("x-", "x+"):
         assert_allclose(total_enthalpy(done, name) / (AIR * 250), 3.5 + 0.7 * first**2, rtol=1e-9)
+    verify(
+        what=f"Normal shock at M {first:g}: Mach number behind, p/pt before, pt2/pt1",
+        source="NACA Report 1135 (1953), tables I and II for 7/5",
+        memory=True,
+        expected=(second, share, loss),
+        got=(done.balance.ports["x+"].mach_number, 20e3 / totals[0], totals[1] / totals[0]),
+        tolerance=1e-9,
+        why="table values computed to 11 digits",
+        kind="gas",
+    )
+    verify(
+        what=f"Normal shock at M {first:g}: total enthalpy over p1/rho1, before and behind",
+        source="NACA Report 1135 (1953): 3.5 + 0.7 M²",
+        memory=True,
+        expected=(3.5 + 0.7 * first**2,) * 2,
+        got=[total_enthalpy(done, name) / (AIR * 250) for name in ("x-", "x+")],
+        tolerance=1e-8,
+        why="table values computed to 11 digits",
+        kind="law",
+        law="energy",
+    )
+    verify(
+        what=f"Normal shock at M {first:g}: mass left over, relative",
+        source="NACA Report 1135 (1953), table II: rho u is kept",
+        memory=True,
+        expected=0,
+        got=done.balance.mass.relative,
+        tolerance=1e-10,
+        why="table values computed to 11 digits",
+        kind="law",
+        law="mass",
+    )
 
 
 def test_a_compression_without_loss_is_no_shock() -> None:
@@ -141,7 +174,7 @@ def test_a_compression_without_loss_is_no_shock() -> None:
     assert done.balance.mass.relative > 0.1
 
 
-def test_oblique_shock_on_a_wedge() -> None:
+def test_oblique_shock_on_a_wedge(verify: Verify) -> None:
     # NACA Report 1135, equations of oblique shocks (from memory): M 2 turned by 10 degrees has its shock at
     # 39.313931845 degrees and p2/p1 = 1.706578604 behind; the wave drag of the wedge is (p2 - p1) × its height
     slope, shock, ratio = np.radians(10), np.radians(39.313931845), 1.4
@@ -184,6 +217,26 @@ def test_oblique_shock_on_a_wedge() -> None:
     port = done.balance.ports["behind"]
     assert port.mean_speed is not None
     assert_allclose(port.mean_speed / np.linalg.norm(behind), np.cos(slope), rtol=1e-8)
+    verify(
+        what="Wedge of 10 degrees at M 2: drag over the rise of pressure times its height",
+        source="NACA Report 1135 (1953), oblique shocks: p2/p1 = 1.706578604",
+        memory=True,
+        expected=0.706578604,
+        got=done.balance.load.from_balance.force[0] / (pressure * height),
+        tolerance=1e-8,
+        why="the angle of the shock has 11 digits",
+        kind="gas",
+    )
+    verify(
+        what="Wedge of 10 degrees at M 2: Mach number behind the shock",
+        source="table of oblique shocks: 1.64",
+        memory=True,
+        expected=1.64,
+        got=port.mach_number / np.cos(slope),
+        tolerance=0.005,
+        why="printed with three digits",
+        kind="gas",
+    )
 
 
 # ---- nozzle ---------------------------------------------------------------------------------
@@ -236,7 +289,7 @@ def nozzle(count: int, back_pressure: float) -> Outcome:
 
 
 @pytest.mark.parametrize(("expansion", "published"), THRUST)
-def test_thrust_coefficient_of_a_nozzle(expansion: float, published: float) -> None:
+def test_thrust_coefficient_of_a_nozzle(verify: Verify, expansion: float, published: float) -> None:
     # thrust = rho V² A + (p - pa) A at the exit; and what the inner walls bear with what comes out of the chamber.
     # Sections are polygons, so ratios of areas are exact: the exit is exact, the walls approach it.
     throat = 12 / 2 * np.sin(2 * np.pi / 12) * 0.05**2
@@ -256,6 +309,29 @@ def test_thrust_coefficient_of_a_nozzle(expansion: float, published: float) -> N
     assert observed_order([4, 2, 1], errors) == pytest.approx(2.0, abs=0.15)
     assert abs(errors[-1]) < 2e-3
     assert_allclose(done.balance.ports["outlet"].mach_number, mach_of_exit(), rtol=1e-9)
+    back = "empty space" if np.isinf(expansion) else f"p1/{expansion:g}"
+    verify(
+        what=f"Nozzle, ratio of heats 1.2, expanded to p1/40, into {back}: thrust coefficient at the exit",
+        source="Sutton, Rocket Propulsion Elements, equation 3-30",
+        memory=True,
+        expected=published,
+        got=at_exit / (4e6 * throat),
+        tolerance=2e-9,
+        why="figures of 11 digits",
+        kind="gas",
+    )
+    verify(
+        what=f"Nozzle, ratio of heats 1.2, expanded to p1/40, into {back}: thrust coefficient on the inner walls",
+        source="Sutton, Rocket Propulsion Elements, equation 3-30",
+        memory=True,
+        expected=published,
+        got=published + errors[-1],
+        tolerance=2e-3,
+        why="32 stations each side of the throat",
+        order=(observed_order([4, 2, 1], errors), 2, 0.15),
+        kind="law",
+        law="momentum",
+    )
 
 
 def mach_of_exit() -> float:
@@ -272,7 +348,7 @@ def fanno_length(mach: Any, ratio: float = 1.4) -> Any:
     return (1 - mach**2) / (ratio * mach**2) + (ratio + 1) / (2 * ratio) * np.log(square)
 
 
-def test_friction_in_a_pipe_takes_the_impulse() -> None:
+def test_friction_in_a_pipe_takes_the_impulse(verify: Verify) -> None:
     # Fanno flow from M 0.3 to 0.6: the impulse p A (1 + g M²) falls by 1.4229591920 p* A: the shear on the wall
     from scipy.optimize import brentq
 
@@ -322,6 +398,28 @@ def test_friction_in_a_pipe_takes_the_impulse() -> None:
     assert gaps[-1] < 1e-4
     # the pressure ratio of the tables
     assert_allclose(pressure[0] / critical, 3.6190574668, rtol=1e-10)
+    verify(
+        what="Fanno flow from M 0.3 to 0.6: loss of impulse over p* A, by the ports",
+        source="Shapiro 1953, ch. 6",
+        memory=True,
+        expected=1.4229591920,
+        got=-loss / (critical * area),
+        tolerance=2e-9,
+        why="figures of 11 digits",
+        kind="gas",
+    )
+    verify(
+        what="Fanno flow from M 0.3 to 0.6: friction on the wall over p* A",
+        source="Shapiro 1953, ch. 6: the loss of impulse",
+        memory=True,
+        expected=1.4229591920,
+        got=1.4229591920 + errors[-1],
+        tolerance=1e-3,
+        why="32 stations",
+        order=(observed_order([4, 2, 1], errors), 2, 0.1),
+        kind="law",
+        law="momentum",
+    )
 
 
 # Rayleigh flow (Shapiro 1953, chapter 7; from memory): M, p/p*, T0/T0*
@@ -329,7 +427,7 @@ HEATED = [(0.3, 2.1314387211, 0.34686041853), (0.5, 1.7777777778, 0.69135802469)
 
 
 @pytest.mark.parametrize("other", HEATED[1:])
-def test_heat_in_a_pipe_keeps_the_impulse(other: tuple[float, float, float]) -> None:
+def test_heat_in_a_pipe_keeps_the_impulse(verify: Verify, other: tuple[float, float, float]) -> None:
     # only p/p* and T0/T0* of the tables go in: then p (1 + g M²) is 2.4 p* at either end, and mass is kept.
     # From M 0.3 to M 2 there is no heated pipe, but the two ends obey the same laws.
     critical, hot, gas_constant = 80e3, 900.0, 290.0
@@ -360,13 +458,26 @@ def test_heat_in_a_pipe_keeps_the_impulse(other: tuple[float, float, float]) -> 
     # the heat that it takes: the rise of the total enthalpy
     rise = total_enthalpy(done, "outlet") - total_enthalpy(done, "inlet")
     assert_allclose(rise, 3.5 * gas_constant * (totals[1] - totals[0]), rtol=1e-9)
+    verify(
+        what=f"Rayleigh flow from M 0.3 to {other[0]:g}: impulse at both ends over p* A",
+        source="Shapiro 1953, ch. 7: p (1 + g M²) = 2.4 p*",
+        memory=True,
+        expected=(2.4, 2.4),
+        got=[
+            (sign * through[names.index(name)] + 101325.0 * area) / (critical * area)
+            for name, sign in (("inlet", -1), ("outlet", 1))
+        ],
+        tolerance=3e-9,
+        why="table values of 11 digits",
+        kind="gas",
+    )
 
 
 # ---- relief valve ---------------------------------------------------------------------------
 
 
 @pytest.mark.parametrize("over_pressure", [0.0, 240e3])
-def test_reaction_of_a_relief_valve(over_pressure: float) -> None:
+def test_reaction_of_a_relief_valve(verify: Verify, over_pressure: float) -> None:
     # API RP 520 part II: F = W/366 sqrt(k T / ((k + 1) M)) + A P (lbf, lb/h, °R, in², psig). A published sheet: 418950
     # lb/h, k 1.3, 1460 °R, M 18 and no pressure over the air's: 7750 lbf. The law behind it is a choked exit,
     # V = sqrt(2 k R T / ((k + 1) M)): then 366 is 367.305, so the formula is 0.36 % high.
@@ -397,6 +508,17 @@ def test_reaction_of_a_relief_valve(over_pressure: float) -> None:
     jet = reaction - over_pressure * area
     assert_allclose(jet / POUND_FORCE, formula * 366 / exact, rtol=1e-6)
     assert_allclose(jet / POUND_FORCE, 7750, rtol=0.0037)
+    verify(
+        what=f"Relief valve, 418950 lb/h, choked exit {over_pressure / 1e3:g} kPa over the air: reaction of the jet",
+        source="API RP 520 part II, published data sheet: 7750 lbf",
+        expected=7750,
+        got=jet / POUND_FORCE,
+        unit="lbf",
+        tolerance=28.7,
+        why="the published 366 should be 367.3: the formula is 0.36 % high",
+        kind="law",
+        law="momentum",
+    )
 
 
 # ---- the exact spiral -----------------------------------------------------------------------

@@ -13,6 +13,7 @@ from hypothesis import strategies as st
 from fluxmesh.assess.convergence import Behaviour, Convergence, convergence, representative_size
 from fluxmesh.errors import FieldError
 from tests.solids import box, sphere
+from tests.verification import Verify
 
 # Celik and others 2008, J. Fluids Eng. 130:078001, table 1: cells, values; printed order, extrapolated value, then
 # relative, extrapolated error and index in per cent; the same unrounded, computed by a second hand
@@ -50,7 +51,7 @@ def figures(found: Convergence) -> list[float]:
 
 
 @pytest.mark.parametrize("column", TABLE)
-def test_published_table(column: str) -> None:
+def test_published_table(verify: Verify, column: str) -> None:
     cells, values, printed, exact = TABLE[column]
     found = convergence(sizes_of(cells), values)
     assert found.behaviour is (Behaviour.OSCILLATING if column == "oscillating" else Behaviour.MONOTONE)
@@ -62,6 +63,16 @@ def test_published_table(column: str) -> None:
     assert found.uncertainty == pytest.approx(exact[4] / 100 * values[0], rel=1e-8)
     assert found.scatter is None
     assert found.refinement == pytest.approx([(a / b) ** 0.5 for a, b in pairwise(cells)])
+    verify(
+        what=f"{column.capitalize()} column: order, extrapolated value, two errors and index in per cent",
+        source="Celik and others 2008, J. Fluids Eng. 130:078001, table 1: "
+        + " ".join(f"{each:g}" for each in printed),
+        expected=exact,
+        got=figures(found),
+        tolerance=1e-7,
+        why="computed unrounded by another program; the print is asserted beside",
+        kind="uncertainty",
+    )
 
 
 def test_the_published_equation_holds_where_its_iteration_would_not_settle() -> None:

@@ -11,6 +11,7 @@ from numpy.testing import assert_allclose
 from fluxmesh.assess.doubt.draws import draw_inputs, summarise
 from fluxmesh.assess.doubt.inputs import NORMAL_95, Input, covariance_of, propagate, sensitivity
 from fluxmesh.errors import FieldError
+from tests.verification import Verify
 
 MILLION = 1_000_000
 
@@ -41,7 +42,7 @@ def readings() -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     return data.mean(axis=1), standard, np.corrcoef(data)
 
 
-def test_correlated_readings_of_jcgm_100_h2() -> None:
+def test_correlated_readings_of_jcgm_100_h2(verify: Verify) -> None:
     mean, standard, correlation = readings()
     assert_allclose(correlation[[0, 0, 1], [1, 2, 2]], [-0.36, 0.86, -0.65], atol=0.006)  # table H.2
     slope = sensitivity(impedance, mean, standard)
@@ -51,6 +52,35 @@ def test_correlated_readings_of_jcgm_100_h2() -> None:
     assert_allclose(told.standard, [0.0710714, 0.2955817, 0.2363361], rtol=2e-6)
     r = told.correlation
     assert_allclose([r[0, 1], r[0, 2], r[1, 2]], [-0.5884298, -0.4852592, 0.9925117], rtol=1e-5)
+    verify(
+        what="Resistance, reactance and impedance from correlated readings",
+        source="JCGM 100:2008, H.2, table H.3",
+        expected=(127.732, 219.847, 254.260),
+        got=slope.value,
+        unit="ohm",
+        tolerance=6e-4,
+        why="printed with three decimals",
+        kind="uncertainty",
+    )
+    verify(
+        what="Resistance, reactance and impedance from correlated readings: standard uncertainties",
+        source="JCGM 100:2008, H.2, table H.3",
+        expected=(0.071, 0.295, 0.236),
+        got=told.standard,
+        unit="ohm",
+        tolerance=6e-4,
+        why="printed with three decimals",
+        kind="uncertainty",
+    )
+    verify(
+        what="Resistance, reactance and impedance from correlated readings: their correlations",
+        source="JCGM 100:2008, H.2, table H.3",
+        expected=(-0.588, -0.485, 0.993),
+        got=(r[0, 1], r[0, 2], r[1, 2]),
+        tolerance=6e-4,
+        why="printed with three decimals",
+        kind="uncertainty",
+    )
 
 
 def test_correlations_matter_in_jcgm_100_h2() -> None:
@@ -79,7 +109,7 @@ def test_matrices_that_are_no_correlations_are_refused() -> None:
 # ---- JCGM 101:2008, section 9 ----------------------------------------------------------------
 
 
-def test_four_rectangular_inputs_of_jcgm_101_9_2_3() -> None:
+def test_four_rectangular_inputs_of_jcgm_101_9_2_3(verify: Verify) -> None:
     inputs = [rectangular(f"X{k}", -sqrt(3), sqrt(3)) for k in range(4)]
     told = summarise(draw_inputs(inputs, MILLION, seed=1).sum(axis=1)[None])
     # exact from the distribution of a sum of uniform numbers: 3.8794; a normal one would have 3.9200
@@ -88,6 +118,26 @@ def test_four_rectangular_inputs_of_jcgm_101_9_2_3() -> None:
     assert_allclose(told.shortest[0], [-3.8794067413, 3.8794067413], atol=0.05)
     linear = propagate(sensitivity(np.sum, np.zeros(4), [one.standard for one in inputs]).linear)
     assert_allclose(NORMAL_95 * linear.standard, 3.9199279690, rtol=1e-9)
+    verify(
+        what="Sum of four rectangular inputs: standard uncertainty and half width of 95 %",
+        source="JCGM 101:2008, 9.2.3: 2.0 and 3.88",
+        memory=True,
+        expected=(2.0, 3.88),
+        got=(told.standard[0], told.symmetric[0, 1]),
+        tolerance=0.016,
+        why="a million draws; printed with three digits",
+        kind="uncertainty",
+    )
+    verify(
+        what="Sum of four rectangular inputs: half width of 95 % of the linear law",
+        source="JCGM 101:2008, 9.2.3: 3.92",
+        memory=True,
+        expected=3.92,
+        got=NORMAL_95 * linear.standard[0],
+        tolerance=5e-3,
+        why="printed with three digits",
+        kind="uncertainty",
+    )
 
 
 def mass_difference(x: np.ndarray) -> np.ndarray:
@@ -104,21 +154,43 @@ MASS = [
 ]
 
 
-def test_mass_calibration_of_jcgm_101_9_3() -> None:
+def test_mass_calibration_of_jcgm_101_9_3(verify: Verify) -> None:
     told = summarise(mass_difference(draw_inputs(MASS, MILLION, seed=2).T)[None])
     # table 5: 1.2340, 0.0754, [1.0834, 1.3825], in mg
     assert_allclose(told.mean, 1.2340, atol=4 * 0.0754 / sqrt(MILLION))
     assert_allclose(told.standard, 0.0754, atol=0.0003)
     assert_allclose(told.shortest[0], [1.0834, 1.3825], atol=0.004)
+    verify(
+        what="Calibration of a mass: mean, standard uncertainty, shortest interval of 95 %",
+        source="JCGM 101:2008, 9.3, table 5",
+        memory=True,
+        expected=(1.2340, 0.0754, 1.0834, 1.3825),
+        got=(told.mean[0], told.standard[0], *told.shortest[0]),
+        unit="mg",
+        tolerance=4e-3,
+        why="a million draws",
+        kind="uncertainty",
+    )
 
 
-def test_linear_propagation_fails_for_the_mass_calibration_as_published() -> None:
+def test_linear_propagation_fails_for_the_mass_calibration_as_published(verify: Verify) -> None:
     values, standard = [one.value for one in MASS], [one.standard for one in MASS]
     linear = propagate(sensitivity(mass_difference, values, standard).linear)
     assert_allclose(linear.standard, 0.0539, atol=5e-5)
+    verify(
+        what="Calibration of a mass: standard uncertainty of the linear law, which falls short",
+        source="JCGM 101:2008, 9.3, table 5",
+        memory=True,
+        expected=0.0539,
+        got=linear.standard[0],
+        unit="mg",
+        tolerance=5e-5,
+        why="printed with three digits",
+        kind="uncertainty",
+    )
 
 
-def test_comparison_loss_of_jcgm_101_9_4() -> None:
+def test_comparison_loss_of_jcgm_101_9_4(verify: Verify) -> None:
     inputs = [normal("x1", 0.0, 0.005), normal("x2", 0.0, 0.005)]
     slope = sensitivity(lambda x: x @ x, [0.0, 0.0], [0.005, 0.005])
     assert propagate(slope.linear).standard == 0.0  # the law of propagation sees nothing here
@@ -128,6 +200,16 @@ def test_comparison_loss_of_jcgm_101_9_4() -> None:
     assert_allclose(told.standard, 50e-6, rtol=0.006)
     assert_allclose(told.shortest[0], [0.0, -50e-6 * log(0.05)], atol=0.7e-6)
     assert_allclose(told.symmetric[0], [-50e-6 * log(0.975), -50e-6 * log(0.025)], atol=0.8e-6)
+    verify(
+        what="Comparison loss of a power meter: mean, standard uncertainty and upper end of 95 %, times 1e6",
+        source="JCGM 101:2008, 9.4: 50, 50 and 150",
+        memory=True,
+        expected=(50, 50, 150),
+        got=(1e6 * told.mean[0], 1e6 * told.standard[0], 1e6 * told.shortest[0, 1]),
+        tolerance=0.9,
+        why="a million draws; exact 149.787",
+        kind="uncertainty",
+    )
 
 
 # ---- what the formulas must give -------------------------------------------------------------

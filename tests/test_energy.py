@@ -43,6 +43,7 @@ from tests.flows import ExactFlow, beltrami, burgers_vortex, couette, poiseuille
 from tests.measures import moments, observed_order
 from tests.solids import Station, any_polyhedron, box, in_triangles, pipe, ring, sphere, swept
 from tests.test_classic_results import PORTS, channel
+from tests.verification import Verify
 
 ANCHOR = (0.3, -0.2, 0.5)
 
@@ -78,7 +79,7 @@ def sampled(surface: ControlSurface, flow: Flow, **fields: Any) -> Flow:
 
 
 @pytest.mark.parametrize(("mach", "head"), [(1.5, 5.075), (2.0, 6.3), (3.0, 9.8)])
-def test_normal_shock(mach: float, head: float) -> None:
+def test_normal_shock(verify: Verify, mach: float, head: float) -> None:
     # NACA Report 1135 (1953) for 7/5, p1 = rho1 = 1: mass, momentum and total enthalpy are the same on both sides
     solid = box((-1, 0, 0), (1, 1, 1), (2, 1, 1), quads=True)
     after = np.array([solid.points[face, 0].mean() > 0 for face in solid.faces])
@@ -98,6 +99,17 @@ def test_normal_shock(mach: float, head: float) -> None:
     # a hundredth more temperature behind the shock does not close
     hot = gas(surface, flow, p / rho * np.where(after, 1.01, 1.0), 3.5)
     assert settle(surface, flow, hot, heat=0.0).relative > 0.005
+    verify(
+        what=f"Energy balance across a normal shock at M {mach:g}: total enthalpy that passes, p1 = rho1 = 1",
+        source="NACA Report 1135 (1953): 3.5 + 0.7 M²",
+        memory=True,
+        expected=(head, head),
+        got=[found.group_flux[k] / flows[k] for k in (0, 1)],
+        tolerance=1e-11,
+        why="round-off",
+        kind="law",
+        law="energy",
+    )
 
 
 def duct(first: dict[str, float], second: dict[str, float], gas_constant: float) -> tuple[ControlSurface, Flow]:
@@ -115,7 +127,7 @@ def speed_at(surface: ControlSurface, flow: Flow, group: int) -> float:
     return float(np.linalg.norm(flow.velocity.group[group]))
 
 
-def test_fanno_duct_keeps_its_total_enthalpy() -> None:
+def test_fanno_duct_keeps_its_total_enthalpy(verify: Verify) -> None:
     # Fanno's line for 7/5: adiabatic, T ~ 1 / (1 + 0.2 M²); p/p* = sqrt(1.2 / (1 + 0.2 M²)) / M:
     # 3.6190574668 at M = 0.3. Only mass flow and temperatures enter, so 3 kg/s through any area
     gas_constant, capacity = 287.05, gas_heat_capacity(287.05, 1.4)
@@ -134,13 +146,24 @@ def test_fanno_duct_keeps_its_total_enthalpy() -> None:
     found = settle(surface, flow, made, heat=0.0)
     assert found.relative < 1e-13
     assert found.size > 0.01 * abs(found.group_kinetic).max()
+    verify(
+        what="Energy balance of a Fanno duct, M 0.3 to 0.6: left over, relative",
+        source="Shapiro 1953, ch. 6: the total enthalpy is kept",
+        memory=True,
+        expected=0,
+        got=found.relative,
+        tolerance=1e-12,
+        why="round-off",
+        kind="law",
+        law="energy",
+    )
 
 
 def list_of(surface: ControlSurface, name: str) -> int:
     return [group.name for group in surface.groups].index(name)
 
 
-def test_rayleigh_duct_demands_the_heat_of_its_total_temperatures() -> None:
+def test_rayleigh_duct_demands_the_heat_of_its_total_temperatures(verify: Verify) -> None:
     # Rayleigh's line for 7/5: T0/T0* = 0.34686041853 at M = 0.3 and 0.69135802469 at 0.5;
     # p/p* = 2.1314387211 and 1.7777777778; T/T* = (M p/p*)²
     gas_constant, capacity, critical = 287.05, gas_heat_capacity(287.05, 1.4), 900.0
@@ -168,6 +191,17 @@ def test_rayleigh_duct_demands_the_heat_of_its_total_temperatures() -> None:
     assert settle(surface, flow, made, shaft_power=-heat).relative < 1e-8
     assert settle(surface, flow, made, heat=0.4 * heat, shaft_power=-0.6 * heat).relative < 1e-8
     assert settle(surface, flow, made, heat=0.9 * heat).relative > 0.01
+    verify(
+        what="Energy balance of a Rayleigh duct, M 0.3 to 0.5: heat demanded over cp T0* of what passes",
+        source="Shapiro 1953, ch. 7: T0/T0* 0.34686041853 and 0.69135802469",
+        memory=True,
+        expected=0.69135802469 - 0.34686041853,
+        got=demand.left / (3.0 * scale * capacity * total),
+        tolerance=1e-8,
+        why="table values of 11 digits",
+        kind="law",
+        law="energy",
+    )
 
 
 def test_zero_of_enthalpy_and_error_of_mass_do_not_count() -> None:
@@ -383,7 +417,7 @@ def test_a_vortex_about_the_axis_loses_the_same_in_a_turning_frame() -> None:
     assert observed_order(sizes, gaps) > 1.7
 
 
-def test_pump_wheel_gives_what_eulers_equation_says() -> None:
+def test_pump_wheel_gives_what_eulers_equation_says(verify: Verify) -> None:
     # w = U2 Vt2 - U1 Vt1 = 40 × 30 = 1200 J/kg (Euler's equation of turbomachines): a ring that turns, no loss, so that
     # the pressure rises by what the wheel gives beyond the kinetic energy
     density, rate, radial, around = 1000.0, 40.0, 2.0, 360
@@ -409,6 +443,18 @@ def test_pump_wheel_gives_what_eulers_equation_says() -> None:
     assert_allclose(found.shaft_power_walls, -1200 * through, rtol=1e-3)
     assert abs(found.loss) < 2e-3 * 1200 * through
     assert "which the momentum balance demands" in " ".join(found.notes)
+    verify(
+        what="Energy balance of a wheel that turns, U2 40 and Vt2 30 m/s: shaft power a kilogram",
+        source="Euler's equation of turbomachines: 1200 J/kg",
+        memory=True,
+        expected=1200,
+        got=-found.shaft_power_walls / through,
+        unit="J/kg",
+        tolerance=1.2,
+        why="360 facets around",
+        kind="law",
+        law="energy",
+    )
 
 
 def where_ports(surface: ControlSurface, flow: Flow) -> Any:

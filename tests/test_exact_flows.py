@@ -48,6 +48,7 @@ from tests.solids import (
     turned,
     vertex_split,
 )
+from tests.verification import Verify
 
 ANCHOR = np.array([0.3, -0.2, 0.5])
 SIZES = (4.0, 2.0, 1.0)  # sides of three meshes, each halved
@@ -157,7 +158,7 @@ def _stagnation_fields() -> tuple[Callable[[np.ndarray], np.ndarray], Callable[[
     return flow.velocity, flow.pressure
 
 
-def test_power_of_a_uniform_stress_is_its_dissipation() -> None:
+def test_power_of_a_uniform_stress_is_its_dissipation(verify: Verify) -> None:
     # ∮ u·tau·n dA = ∫ tau : grad u dv = 4 mu a² V for the stagnation flow: linear on the facets, so exact
     rate, viscosity = 2.0, 0.4
     for seed in range(5):
@@ -168,7 +169,19 @@ def test_power_of_a_uniform_stress_is_its_dissipation() -> None:
         found = balance(body, stagnation(rate, 1.3, viscosity))
         expected = 4 * viscosity * rate**2 * held.volume
         assert_allclose(found.table.total("viscous_power"), expected, rtol=1e-11)
+        shares = found.table.total("viscous_power") / expected
         assert_allclose(found.momentum.viscous(), 0, rtol=0, atol=1e-12 * expected)
+    verify(
+        what="Stagnation flow in a polyhedron: power of its stress over 4 mu a² V",
+        source="exact Navier-Stokes (Batchelor, section 4.1): the dissipation",
+        memory=True,
+        expected=1,
+        got=shares,
+        tolerance=1e-11,
+        why="linear on flat facets: round-off",
+        kind="law",
+        law="energy",
+    )
 
 
 def test_a_quadratic_flow_on_quadratic_faces_is_exact() -> None:
@@ -215,19 +228,33 @@ FLOWS = {
 
 @pytest.mark.parametrize("body", BODIES)
 @pytest.mark.parametrize("name", FLOWS)
-def test_exact_flows_close_with_order_two(name: str, body: str) -> None:
+def test_exact_flows_close_with_order_two(verify: Verify, name: str, body: str) -> None:
     flow, place = FLOWS[name]
     found = [balance(moved(BODIES[body](k), TURN, place), flow) for k in (2, 3, 4)]
+    orders = []
     for ledgers in ([each.momentum for each in found], [each.angular for each in found]):
         left = [ledger.relative() for ledger in ledgers]
         assert observed_order(SIZES, left) == pytest.approx(2.0, abs=0.06)
+        orders.append(observed_order(SIZES, left))
         assert left[-1] < 5e-3
     assert abs(found[-1].mass.residual) < 5e-3 * found[-1].mass.outflow
     if body in ("box", "L-shape") and abs(found[0].mass.residual) > 1e-12:
         assert observed_order(SIZES, [each.mass.residual for each in found]) == pytest.approx(2.0, abs=0.1)
+    verify(
+        what=f"{name}, closed {body}: what is left of force and moment, over the sum of their parts",
+        source="an exact solution of the flow equations: nothing",
+        memory=True,
+        expected=(0, 0),
+        got=(found[-1].momentum.relative(), found[-1].angular.relative()),
+        tolerance=5e-3,
+        why="linear data on the finest of three meshes",
+        order=(orders[0], 2, 0.06),
+        kind="law",
+        law="angular" if body in ("sphere", "torus") else "momentum",
+    )
 
 
-def test_momentum_through_one_face_of_kovasznay_flow() -> None:
+def test_momentum_through_one_face_of_kovasznay_flow(verify: Verify) -> None:
     # flux of p n - tau·n + rho u (u·n) along x through x = 1, -0.5 < y < 0.75, 0 < z < 1: 1.9993490702404 (computed)
     errors = []
     for cells in (8, 16, 32):
@@ -238,6 +265,19 @@ def test_momentum_through_one_face_of_kovasznay_flow() -> None:
         errors.append(through[0] - 1.9993490702404)
     assert abs(errors[-1]) < 2e-3
     assert observed_order(SIZES, errors) == pytest.approx(2.0, abs=0.1)
+    verify(
+        what="Kovasznay flow, Re 40: momentum out through x = 1, -0.5 < y < 0.75, a metre wide",
+        source="Kovasznay 1948, Proc. Camb. Phil. Soc. 44; the figure by quadrature",
+        memory=True,
+        expected=1.9993490702404,
+        got=1.9993490702404 + errors[-1],
+        unit="N",
+        tolerance=2e-3,
+        why="32 cells across",
+        order=(observed_order(SIZES, errors), 2, 0.1),
+        kind="law",
+        law="momentum",
+    )
 
 
 # ---- forces and torques of a singular point -------------------------------------------------
@@ -261,7 +301,7 @@ ROUND_THE_ORIGIN: dict[str, Callable[[int], Solid]] = {
 
 @pytest.mark.parametrize("body", ROUND_THE_ORIGIN)
 @pytest.mark.parametrize("a", [1.5, 1.1])
-def test_landau_squire_jet_has_one_force_through_every_surface(body: str, a: float) -> None:
+def test_landau_squire_jet_has_one_force_through_every_surface(verify: Verify, body: str, a: float) -> None:
     # Landau 1944; Squire 1951; Landau and Lifshitz, Fluid Mechanics section 23; Batchelor section 4.6. Pressure,
     # momentum and traction are of one size, so a slip of sign in any cannot hide. The moment is (0 - x0) × F.
     density, kinematic = 1.2, 0.5
@@ -279,6 +319,30 @@ def test_landau_squire_jet_has_one_force_through_every_surface(body: str, a: flo
     assert observed_order(SIZES, moment) == pytest.approx(2.0, abs=0.1)
     assert force[-1] < 0.02 * exact[2]
     assert mass[-1] < 0.01
+    verify(
+        what=f"Landau-Squire jet, A = {a:g}, within this surface, {body}: force over rho nu²",
+        source="Landau 1944, Squire 1951; Landau and Lifshitz, Fluid Mechanics, section 23",
+        expected=landau_force(a),
+        got=found.momentum.residual()[2] / (density * kinematic**2),
+        tolerance=0.02,
+        relative=True,
+        why="linear data on the finest of three meshes",
+        order=(observed_order(SIZES, force), 2, 0.1),
+        kind="law",
+        law="momentum",
+    )
+    verify(
+        what=f"Landau-Squire jet, A = {a:g}, within this surface, {body}: moment about a far anchor, over rho nu²",
+        source="Landau 1944, Squire 1951: the force acts at the origin",
+        expected=landau_force(a) * np.cross(-ANCHOR, [0, 0, 1]),
+        got=found.angular.residual() / (density * kinematic**2),
+        tolerance=0.04,
+        relative=True,
+        why="linear data on the finest of three meshes",
+        order=(observed_order(SIZES, moment), 2, 0.1),
+        kind="law",
+        law="angular",
+    )
 
 
 @pytest.mark.parametrize("name", ["momentum", "pressure", "viscous"])
@@ -296,7 +360,7 @@ DRAG = 6 * np.pi * VISCOSITY * RADIUS * SPEED
 CREEPING = stokes_sphere(RADIUS, SPEED, VISCOSITY, 1e-9)
 
 
-def test_drag_of_a_sphere_is_one_third_pressure_two_thirds_shear() -> None:
+def test_drag_of_a_sphere_is_one_third_pressure_two_thirds_shear(verify: Verify) -> None:
     # Stokes 1851; Batchelor section 4.9: 2 pi mu a U and 4 pi mu a U; through the box round it as much again
     pressure, shear, walls, far = [], [], [], []
     for k in (1, 2, 3):
@@ -314,6 +378,34 @@ def test_drag_of_a_sphere_is_one_third_pressure_two_thirds_shear() -> None:
     for errors in (pressure, shear, walls, far):
         assert observed_order(SIZES, errors) == pytest.approx(2.0, abs=0.1)
         assert abs(errors[-1]) < 0.01 * DRAG
+    figures = {"by pressure": (pressure, DRAG / 3), "by shear": (shear, DRAG * 2 / 3)}
+    for part, (errors, exact) in figures.items():
+        verify(
+            what=f"Creeping flow past a sphere, mu 0.3, a = U = 1: drag {part}",
+            source="Stokes 1851; Batchelor, section 4.9: 2 pi mu a U and 4 pi mu a U",
+            memory=True,
+            expected=exact,
+            got=exact + errors[-1],
+            unit="N",
+            tolerance=0.01 * DRAG,
+            why="5120 facets",
+            order=(observed_order(SIZES, errors), 2, 0.1),
+            kind="law",
+            law="momentum",
+        )
+    verify(
+        what="Creeping flow past a sphere, mu 0.3, a = U = 1: drag through a box round it",
+        source="Stokes 1851; Batchelor, section 4.9: 6 pi mu a U",
+        memory=True,
+        expected=(0, 0, 5.6548667765),
+        got=found.load.from_balance.force,
+        unit="N",
+        tolerance=0.05,
+        why="linear data on 40 cells a side",
+        order=(observed_order(SIZES, far), 2, 0.1),
+        kind="law",
+        law="momentum",
+    )
 
 
 @pytest.mark.parametrize("body", ["box", "sphere off centre", "odd body"])
@@ -341,7 +433,7 @@ def test_stokes_drag_on_quadratic_faces_has_order_four() -> None:
 
 
 @pytest.mark.parametrize("body", ROUND_THE_ORIGIN)
-def test_a_point_torque_is_felt_about_every_point(body: str) -> None:
+def test_a_point_torque_is_felt_about_every_point(verify: Verify, body: str) -> None:
     # Batchelor section 4.10 (from memory): the rotlet carries its torque and no force through any surface round it;
     # the flow turns back on what drives it
     torque = np.array([0.3, -0.5, 0.8])
@@ -353,9 +445,22 @@ def test_a_point_torque_is_felt_about_every_point(body: str) -> None:
     assert observed_order(SIZES, errors) == pytest.approx(2.0, abs=0.15)
     assert errors[-1] < 0.02
     assert force[-1] < 0.02
+    verify(
+        what=f"Rotlet within this surface, {body}: torque about an anchor elsewhere",
+        source="Batchelor, section 4.10: T, about every point",
+        memory=True,
+        expected=-torque,
+        got=found.load.from_balance.moment,
+        unit="N m",
+        tolerance=0.02,
+        why="linear data on the finest of three meshes",
+        order=(observed_order(SIZES, errors), 2, 0.15),
+        kind="law",
+        law="angular",
+    )
 
 
-def test_torque_and_dissipation_between_turning_cylinders() -> None:
+def test_torque_and_dissipation_between_turning_cylinders(verify: Verify) -> None:
     # Taylor 1923: torque a length 4 pi mu (O1 - O2) r1² r2² / (r2² - r1²), dissipation torque × (O1 - O2)
     spin, viscosity = (3.0, -0.5), 0.7
     flow = couette(1, 2, spin, viscosity, 1.3)
@@ -371,3 +476,29 @@ def test_torque_and_dissipation_between_turning_cylinders() -> None:
     assert observed_order(SIZES, torque) == pytest.approx(2.0, abs=0.1)
     assert observed_order(SIZES, power) == pytest.approx(2.0, abs=0.1)
     assert abs(torque[-1]) < 0.01 * 41
+    verify(
+        what="Circular Couette flow, r 1 and 2, 3 and -0.5 rad/s, mu 0.7: torque a metre",
+        source="Taylor 1923: 4 pi mu (O1 - O2) r1² r2² / (r2² - r1²)",
+        memory=True,
+        expected=41.050144006907,
+        got=41.050144006907 + torque[-1],
+        unit="N m",
+        tolerance=0.41,
+        why="64 facets around",
+        order=(observed_order(SIZES, torque), 2, 0.1),
+        kind="law",
+        law="angular",
+    )
+    verify(
+        what="Circular Couette flow, r 1 and 2, 3 and -0.5 rad/s, mu 0.7: power of the cylinders",
+        source="Taylor 1923: torque times (O1 - O2)",
+        memory=True,
+        expected=143.67550402417,
+        got=143.67550402417 + power[-1],
+        unit="W",
+        tolerance=3,
+        why="64 facets around",
+        order=(observed_order(SIZES, power), 2, 0.1),
+        kind="law",
+        law="energy",
+    )

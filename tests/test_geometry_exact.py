@@ -39,6 +39,7 @@ from tests.solids import (
     torus,
     vertex_split,
 )
+from tests.verification import Verify
 
 
 def table_of(solid: Solid, **options: object) -> IntegralTable:
@@ -75,19 +76,51 @@ POLYHEDRA = {
 
 
 @pytest.mark.parametrize("name", POLYHEDRA)
-def test_polyhedra_are_exact(name: str) -> None:
+def test_polyhedra_are_exact(verify: Verify, name: str) -> None:
     body, volume, centroid = POLYHEDRA[name]
     found = enclosed(body)
     size = np.ptp(body.points, axis=0).max()
     assert_allclose(found.volume, volume, rtol=1e-12)
     assert_allclose(found.centroid, centroid, rtol=0, atol=1e-12 * size)
+    verify(
+        what=f"{name[0].upper()}{name[1:]}: volume",
+        source="recomputed from the corners of Tonon 2005" if "Tonon" in name else "CRC Standard Mathematical Tables",
+        memory=True,
+        expected=volume,
+        got=found.volume,
+        unit="m³",
+        tolerance=1e-12,
+        relative=True,
+        why="flat faces: round-off",
+        kind="geometry",
+    )
+    verify(
+        what=f"{name[0].upper()}{name[1:]}: centroid",
+        source="recomputed from the corners of Tonon 2005" if "Tonon" in name else "CRC Standard Mathematical Tables",
+        memory=True,
+        expected=centroid,
+        got=found.centroid,
+        unit="m",
+        tolerance=1e-12 * size,
+        why="flat faces: round-off",
+        kind="geometry",
+    )
 
 
-def test_tonon_centroid_as_printed() -> None:
+def test_tonon_centroid_as_printed(verify: Verify) -> None:
     # Tonon 2005; the printed x is 2.75e-5 off the mean of the printed corners, the rest agrees to its five decimals
     found = enclosed(hull(np.array(TONON)))
     assert_allclose(found.centroid[0], 15.92492, rtol=0, atol=2.8e-5)
     assert_allclose(found.centroid[1:], [0.78281, 3.72962], rtol=0, atol=5e-6)
+    verify(
+        what="Tonon's tetrahedron: centroid as printed",
+        source="Tonon 2005, J. Math. Stat. 1(1):8-11",
+        expected=(15.92492, 0.78281, 3.72962),
+        got=found.centroid,
+        tolerance=2.8e-5,
+        why="the printed x is that far from the mean of the printed corners",
+        kind="geometry",
+    )
 
 
 @settings(max_examples=40, deadline=None)
@@ -185,7 +218,7 @@ SIZES = [2.0**-k for k in LEVELS]
 
 
 @pytest.mark.parametrize("name", CURVED)
-def test_flat_facets_on_curved_bodies_converge_with_order_two(name: str) -> None:
+def test_flat_facets_on_curved_bodies_converge_with_order_two(verify: Verify, name: str) -> None:
     body_of, volume, centroid = CURVED[name]
     found = [enclosed(body_of(level)) for level in LEVELS]
     assert observed_order(SIZES, [each.volume - volume for each in found]) == pytest.approx(2.0, abs=0.05)
@@ -197,13 +230,50 @@ def test_flat_facets_on_curved_bodies_converge_with_order_two(name: str) -> None
         assert observed_order(SIZES, offset) == pytest.approx(2.0, abs=0.05)
     else:  # exact by symmetry, or since all sections shrink alike (the closed form has 11 digits)
         assert_allclose(offset, 0, rtol=0, atol=1e-11)
+    verify(
+        what=f"{name[0].upper()}{name[1:]} of flat facets: volume, extrapolated from two meshes",
+        source="CRC Standard Mathematical Tables",
+        memory=True,
+        expected=volume,
+        got=extrapolated,
+        unit="m³",
+        tolerance=2e-5,
+        relative=True,
+        why="terms of order four are left",
+        order=(observed_order(SIZES, [each.volume - volume for each in found]), 2, 0.05),
+        kind="geometry",
+    )
+    moved_off = name in ("elbow", "spherical cap", "cylinder cut obliquely")
+    verify(
+        what=f"{name[0].upper()}{name[1:]} of flat facets: centroid",
+        source="CRC Standard Mathematical Tables",
+        memory=True,
+        expected=centroid,
+        got=found[-1].centroid,
+        unit="m",
+        tolerance=max(2 * offset[-1], 1e-4) if moved_off else 1e-11,
+        why="the finest of four meshes" if moved_off else "symmetry: round-off",
+        order=(observed_order(SIZES, offset), 2, 0.05) if moved_off else None,
+        kind="geometry",
+    )
 
 
-def test_an_elbow_does_not_balance_on_its_centre_line() -> None:
+def test_an_elbow_does_not_balance_on_its_centre_line(verify: Verify) -> None:
     # sections further out are longer: 0.27759753082 from the bend centre, not R sin(θ/2)/(θ/2) = 0.2700949
     found = enclosed(elbow(MAJOR, (MINOR, MINOR), np.pi / 2, 96, 48)).centroid
     assert_allclose(np.linalg.norm(found), 0.27759753082, rtol=3e-4)
     assert_allclose(found[0], found[1], rtol=1e-12)
+    verify(
+        what="Elbow of 90 degrees, 0.3 and 0.1 m: distance of the centroid from the centre of the bend",
+        source="Pappus and Guldin: (R² + r²/4)/R sin(t/2)/(t/2)",
+        memory=True,
+        expected=0.27759753082,
+        got=np.linalg.norm(found),
+        unit="m",
+        tolerance=8e-5,
+        why="96 facets around; the centre line would give 0.2700949",
+        kind="geometry",
+    )
 
 
 AREAS = {
@@ -218,7 +288,7 @@ AREAS = {
 
 
 @pytest.mark.parametrize("name", AREAS)
-def test_areas_converge_with_order_two(name: str) -> None:
+def test_areas_converge_with_order_two(verify: Verify, name: str) -> None:
     group, area = AREAS[name]
     errors = []
     for level in LEVELS:
@@ -226,24 +296,56 @@ def test_areas_converge_with_order_two(name: str) -> None:
         errors.append(table_of(body).column("area")[list(body.groups).index(group)] - area)
     assert abs(errors[-1]) < 4e-3 * area
     assert observed_order(SIZES, errors) == pytest.approx(2.0, abs=0.1)
+    verify(
+        what=f"{name[0].upper()}{name[1:]} of flat facets: area of the {group}",
+        source="Carlson's R_G (DLMF 19.33.1)" if name == "ellipsoid" else "CRC Standard Mathematical Tables",
+        memory=True,
+        expected=area,
+        got=area + errors[-1],
+        unit="m²",
+        tolerance=4e-3,
+        relative=True,
+        why="the finest of four meshes",
+        order=(observed_order(SIZES, errors), 2, 0.1),
+        kind="geometry",
+    )
 
 
 @pytest.mark.parametrize(
     ("level", "deficit"), [(3, 8.6061574e-3), (4, 2.1608284e-3), (5, 5.4078992e-4), (6, 1.3523394e-4)]
 )
-def test_facet_bias_of_the_icosphere(level: int, deficit: float) -> None:
+def test_facet_bias_of_the_icosphere(verify: Verify, level: int, deficit: float) -> None:
     # recomputed with a general-purpose mesh library; the ratio of 4 is order two
     assert_allclose(1 - enclosed(sphere(level)).volume / (4 / 3 * np.pi), deficit, rtol=1e-7)
+    verify(
+        what=f"Icosphere of {20 * 4**level} facets: what its volume lacks of the sphere's",
+        source="recomputed with a general-purpose mesh library",
+        expected=deficit,
+        got=1 - enclosed(sphere(level)).volume / (4 / 3 * np.pi),
+        tolerance=1e-7,
+        relative=True,
+        why="figures of eight digits",
+        kind="geometry",
+    )
 
 
 @pytest.mark.parametrize(
     ("around", "ratio"), [(16, 0.97449535840), (32, 0.99358685114), (64, 0.99839439304), (128, 0.99959845315)]
 )
-def test_facet_bias_of_a_round_port(around: int, ratio: float) -> None:
+def test_facet_bias_of_a_round_port(verify: Verify, around: int, ratio: float) -> None:
     # area of the regular polygon over that of its circle: sin(2π/n) / (2π/n)
     body = pipe(0.7, 1, around, 1, 2)
     area = table_of(body).column("area")[list(body.groups).index("outlet")]
     assert_allclose(area / (np.pi * 0.49), ratio, rtol=1e-10)
+    verify(
+        what=f"Round port of {around} sides: area over that of the circle",
+        source="sin(2 pi/n) / (2 pi/n)",
+        expected=ratio,
+        got=area / (np.pi * 0.49),
+        tolerance=1e-10,
+        why="figures of 11 digits",
+        kind="geometry",
+    )
 
 
 QUADRATIC = {
@@ -254,11 +356,24 @@ QUADRATIC = {
 
 
 @pytest.mark.parametrize("name", QUADRATIC)
-def test_quadratic_faces_converge_with_order_four(name: str) -> None:
+def test_quadratic_faces_converge_with_order_four(verify: Verify, name: str) -> None:
     # isoparametric quadratic faces: superconvergent volume of order four (standard interpolation theory)
     body_of, levels, volume = QUADRATIC[name]
     errors = [enclosed(body_of(n)).volume - volume for n in levels]
     assert observed_order([2.0**-n for n in levels], errors) == pytest.approx(4.0, abs=0.2)
+    verify(
+        what=f"{name[0].upper()}{name[1:]}: volume",
+        source="CRC Standard Mathematical Tables",
+        memory=True,
+        expected=volume,
+        got=volume + errors[-1],
+        unit="m³",
+        tolerance=1e-3,
+        relative=True,
+        why="the finest mesh",
+        order=(observed_order([2.0**-n for n in levels], errors), 4, 0.2),
+        kind="geometry",
+    )
 
 
 def test_the_centroid_of_an_odd_body_has_order_two_flat_and_four_curved() -> None:

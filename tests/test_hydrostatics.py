@@ -29,6 +29,7 @@ from tests.solids import (
     together,
     turned,
 )
+from tests.verification import Verify
 
 DENSITY, GRAVITY, AMBIENT = 998.2, 9.80665, 101325.0
 DOWN = np.array([0.0, 0.0, -GRAVITY])
@@ -211,7 +212,7 @@ def test_buoyancy_of_a_body_in_a_tank(seed: int) -> None:
     assert_allclose(balance.enclosed.volume, 18**3 - held.volume, rtol=1e-13)
 
 
-def test_lift_of_a_sphere_converges_to_its_closed_form() -> None:
+def test_lift_of_a_sphere_converges_to_its_closed_form(verify: Verify) -> None:
     # sphere of 0.4 m at (1, 2, -3): F = 2624.2597800 N, moment about the origin (+5248.5195600, -2624.2597800, 0)
     errors = []
     for level in (1, 2, 3, 4):
@@ -224,6 +225,31 @@ def test_lift_of_a_sphere_converges_to_its_closed_form() -> None:
         assert_allclose(turn, [2 * lift[2], -lift[2], 0], rtol=0, atol=1e-9)
     assert observed_order([8, 4, 2, 1], errors) == pytest.approx(2.0, abs=0.05)
     assert_allclose(errors[-1] + (errors[-1] - errors[-2]) / 3, 0, rtol=0, atol=2e-5 * 2624)
+    verify(
+        what="Sphere of 0.4 m in water at 998.2 kg/m³: lift, extrapolated from two meshes",
+        source="Archimedes: rho g 4/3 pi R³",
+        memory=True,
+        expected=2624.25978,
+        got=2624.25978 + errors[-1] + (errors[-1] - errors[-2]) / 3,
+        unit="N",
+        tolerance=2e-5 * 2624,
+        why="terms of order four are left",
+        order=(observed_order([8, 4, 2, 1], errors), 2, 0.05),
+        kind="law",
+        law="momentum",
+    )
+    verify(
+        what="Sphere of 0.4 m at (1, 2, -3): moment of its lift about the origin, over the lift",
+        source="Archimedes: the lift acts at the centre",
+        memory=True,
+        expected=(2, -1, 0),
+        got=turn / lift[2],
+        unit="m",
+        tolerance=1e-11,
+        why="symmetry of the mesh: round-off",
+        kind="law",
+        law="angular",
+    )
 
 
 def test_an_odd_body_of_quadratic_faces_is_lifted_to_round_off() -> None:
@@ -266,31 +292,79 @@ def rectangle(width: float, length: float) -> np.ndarray:
 
 
 @pytest.mark.parametrize("faces", [[[0, 1, 2, 3]], [[0, 1, 2], [0, 2, 3]]])
-def test_inclined_rectangular_gate(faces: list[list[int]]) -> None:
+def test_inclined_rectangular_gate(verify: Verify, faces: list[list[int]]) -> None:
     # 1.5 m × 2 m at 60 degrees, top edge 3 m deep; centre of pressure I / (y_c A) below the centroid (White ch. 2)
     force, centre = gate(rectangle(1.5, 2.0), faces, depth=3.0, slope=np.radians(60), weight=DENSITY * GRAVITY)
     assert_allclose(force, 113533.54518, rtol=1e-10)
     assert_allclose(centre, [0, 1.0746697459], rtol=0, atol=1e-10)
+    verify(
+        what=f"Gate of 1.5 m × 2 m at 60 degrees, in {len(faces)} faces: load and depth of its centre along the gate",
+        source="White, Fluid Mechanics, ch. 2: I / (y_c A) below the centroid",
+        memory=True,
+        expected=(1.1353354518, 1.0746697459),
+        got=(force / 1e5, centre[1]),
+        unit="(1e5 N, m)",
+        tolerance=2e-10,
+        why="linear pressure on flat faces; figures of 11 digits",
+        kind="law",
+        law="angular",
+    )
 
 
-def test_published_rectangular_gate() -> None:
+def test_published_rectangular_gate(verify: Verify) -> None:
     # White, Fluid Mechanics, example 2.5 (number from memory): 5 ft × 10 ft (8 along, 6 down), centroid 12 ft deep,
     # 64 lbf/ft³: 38400 lbf, centre of pressure 0.417 ft below the centroid
     force, centre = gate(rectangle(5, 10), [[0, 1, 2, 3]], depth=9.0, slope=np.arcsin(0.6), weight=64.0)
     assert_allclose(force, 38400, rtol=1e-12)
     assert_allclose(centre[1] - 5, 0.417, rtol=0, atol=5e-4)
+    verify(
+        what="Gate of 5 ft × 10 ft, 64 lbf/ft³: load",
+        source="White, Fluid Mechanics, example 2.5",
+        memory=True,
+        expected=38400,
+        got=force,
+        unit="lbf",
+        tolerance=1e-6,
+        why="exact in the data of the example",
+        kind="law",
+        law="momentum",
+    )
+    verify(
+        what="Gate of 5 ft × 10 ft: centre of pressure below the centroid",
+        source="White, Fluid Mechanics, example 2.5",
+        memory=True,
+        expected=0.417,
+        got=centre[1] - 5,
+        unit="ft",
+        tolerance=5e-4,
+        why="printed with three digits",
+        kind="law",
+        law="angular",
+    )
 
 
-def test_published_circular_gate() -> None:
+def test_published_circular_gate(verify: Verify) -> None:
     # diameter 4 m at 60 degrees, shaft through its centre 10 m deep, 9.80 kN/m³: 1.23 MN, 1.07e5 N m about the shaft
     # (published textbook example, from memory)
     plane, faces = disc(128, 16)
     force, centre = gate(2 * plane, faces, depth=10.0, slope=np.radians(60), weight=9.80e3)
     assert_allclose(force, 1.23e6, rtol=0, atol=5e3)
     assert_allclose(force * centre[1], 1.07e5, rtol=0, atol=500)
+    verify(
+        what="Circular gate of 4 m at 60 degrees, shaft 10 m deep: moment about the shaft",
+        source="published textbook example",
+        memory=True,
+        expected=1.07e5,
+        got=force * centre[1],
+        unit="N m",
+        tolerance=500,
+        why="printed with three digits",
+        kind="law",
+        law="angular",
+    )
 
 
-def test_vertical_circle_that_touches_the_surface() -> None:
+def test_vertical_circle_that_touches_the_surface(verify: Verify) -> None:
     # centre of pressure 5 R / 4 below the surface (White ch. 2, from memory)
     errors = []
     for n in (8, 16, 32, 64):
@@ -300,3 +374,16 @@ def test_vertical_circle_that_touches_the_surface() -> None:
         errors.append(1 + centre[1] - 1.25)
     assert observed_order([8, 4, 2, 1], errors) == pytest.approx(2.0, abs=0.05)
     assert abs(errors[-1]) < 1e-3
+    verify(
+        what="Circle of radius 1 that touches the surface: depth of the centre of pressure",
+        source="White, Fluid Mechanics, ch. 2: 5 R / 4",
+        memory=True,
+        expected=1.25,
+        got=1.25 + errors[-1],
+        unit="m",
+        tolerance=1e-3,
+        why="64 facets around",
+        order=(observed_order([8, 4, 2, 1], errors), 2, 0.05),
+        kind="law",
+        law="angular",
+    )

@@ -12,6 +12,7 @@ from numpy.testing import assert_allclose
 
 from fluxmesh import Outcome, balance_of, lay_flow
 from tests.solids import Solid, Station, box, radius_of_area, swept
+from tests.verification import Verify
 
 
 def sorted_faces(body: Solid, side: str, inside: Callable[[np.ndarray], bool], names: tuple[str, str]) -> Solid:
@@ -34,7 +35,7 @@ def demand(
 
 
 @pytest.mark.parametrize(("width", "height"), [(4, 2), (2, 4), (8, 2)])
-def test_borda_mouthpiece_contracts_to_one_half(width: int, height: int) -> None:
+def test_borda_mouthpiece_contracts_to_one_half(verify: Verify, width: int, height: int) -> None:
     # Borda 1766; Batchelor section 6.3 (from memory): a tube that reaches into the tank leaves the walls at rest under
     # the full head, so that p A = rho V² Aj with p = rho V²/2: the jet has exactly half of the hole's area
     density, head = 998.2, 3e4
@@ -60,6 +61,17 @@ def test_borda_mouthpiece_contracts_to_one_half(width: int, height: int) -> None
     left, through = push(1 / 2, lambda m: m[2] > 6)
     assert left == pytest.approx(0, abs=1e-12 * head * 144)
     assert through == pytest.approx(push_of_walls, rel=1e-12)
+    verify(
+        what=f"Borda's mouthpiece of {width} m × {height} m: momentum of a jet of half its area over p A",
+        source="Borda 1766; Batchelor, section 6.3: contraction 1/2",
+        memory=True,
+        expected=1,
+        got=through / push_of_walls,
+        tolerance=1e-11,
+        why="round-off",
+        kind="law",
+        law="momentum",
+    )
     # a jet of a quarter carries half of the momentum that the walls give
     left, _ = push(1 / 4, lambda m: m[2] > 6 and m[1] > 6)
     assert left == pytest.approx(-push_of_walls / 2, rel=1e-9)
@@ -72,7 +84,7 @@ AROUND = 16
 
 
 @pytest.mark.parametrize("induction", [1 / 3, 0.2, 0.1])
-def test_actuator_disk_in_its_stream_tube(induction: float) -> None:
+def test_actuator_disk_in_its_stream_tube(verify: Verify, induction: float) -> None:
     # Rankine 1865; Froude 1889; Betz 1920 (White ch. 11, from memory): with V = U (1 - a) at the disk and U (1 - 2 a)
     # in the wake CT = 4 a (1 - a) and CP = 4 a (1 - a)²; at a = 1/3 CT = 8/9 and CP = 16/27 = 0.59259259259
     density, speed, area = 1.225, 10.0, 3.0
@@ -95,10 +107,21 @@ def test_actuator_disk_in_its_stream_tube(induction: float) -> None:
     assert power / (dynamic * speed) == pytest.approx(4 * induction * (1 - induction) ** 2, rel=1e-12)
     # Froude: the disk sees the mean of the speeds far before and far behind it
     assert power / thrust[2] == pytest.approx((speed + wake) / 2, rel=1e-12)
+    verify(
+        what=f"Actuator disk in its stream tube, induction {induction:.3g}: thrust and power coefficient",
+        source="Rankine 1865, Froude 1889, Betz 1920: 4 a (1 - a), 4 a (1 - a)²",
+        memory=True,
+        expected=(4 * induction * (1 - induction), 4 * induction * (1 - induction) ** 2),
+        got=(thrust[2] / dynamic, power / (dynamic * speed)),
+        tolerance=1e-11,
+        why="round-off",
+        kind="law",
+        law="energy",
+    )
 
 
 @pytest.mark.parametrize("around", [3, 5])
-def test_actuator_disk_in_a_box_that_the_stream_leaves_sideways(around: int) -> None:
+def test_actuator_disk_in_a_box_that_the_stream_leaves_sideways(verify: Verify, around: int) -> None:
     # the same thrust 8/9 from a box: what the wake lacks in mass leaves through the sides, with the stream's momentum
     density, speed, area = 1.225, 10.0, 3.0
     at_disk, wake = speed * 2 / 3, speed / 3
@@ -120,6 +143,17 @@ def test_actuator_disk_in_a_box_that_the_stream_leaves_sideways(around: int) -> 
     assert found.mass.residual == pytest.approx(0, abs=1e-13 * found.mass.inflow)
     thrust = found.load.from_balance.force
     assert_allclose(thrust / (density * speed**2 / 2 * area), [8 / 9, 0, 0], rtol=0, atol=1e-11)
+    verify(
+        what=f"Actuator disk in a box of {around} wakes, which the stream leaves sideways: thrust coefficient",
+        source="Betz 1920: 8/9",
+        memory=True,
+        expected=8 / 9,
+        got=thrust[0] / (density * speed**2 / 2 * area),
+        tolerance=1e-10,
+        why="round-off",
+        kind="law",
+        law="momentum",
+    )
     # sides taken as streamlines leave out that momentum
     for name in ("y-", "y+", "z-", "z+"):
         data[name] = {"velocity": (speed, 0, 0), "pressure": 0.0}

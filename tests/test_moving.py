@@ -17,6 +17,7 @@ from fluxmesh.balance.storage import Storage
 from fluxmesh.field.frame import Frame
 from tests.measures import moments
 from tests.solids import Solid, any_polyhedron, box, odd_body
+from tests.verification import Verify
 
 ROLES = {"feed": "inlet", "shell": "wall", "vent": "open"}
 seeds = st.integers(0, 2**32 - 1)
@@ -192,7 +193,7 @@ def vane(speed: float, running: float, turn: float, area: float = 0.01, density:
 
 @pytest.mark.parametrize("turn", [30.0, 60.0, 120.0, 170.0])
 @pytest.mark.parametrize("running", [0.0, 4.0, -3.0])
-def test_force_on_a_moving_vane(turn: float, running: float) -> None:
+def test_force_on_a_moving_vane(verify: Verify, turn: float, running: float) -> None:
     # rho A (V - U)² (1 - cos), rho A (V - U)² sin (White ch. 3, from memory)
     angle = np.radians(turn)
     found = vane(20.0, running, angle).balance
@@ -201,13 +202,37 @@ def test_force_on_a_moving_vane(turn: float, running: float) -> None:
     assert_allclose(found.load.from_balance.force, force, rtol=1e-12, atol=1e-12 * push)
     assert_allclose(found.mass.outflow, 1000.0 * 0.01 * (20.0 - running), rtol=1e-12)
     assert abs(found.mass.relative) < 1e-14
+    verify(
+        what=f"Vane that runs at {running:g} m/s before a jet of 20 m/s and turns it by {turn:g} degrees: force",
+        source="White, Fluid Mechanics, ch. 3: rho A (V - U)² (1 - cos, sin)",
+        memory=True,
+        expected=force[:2],
+        got=found.load.from_balance.force[:2],
+        unit="N",
+        tolerance=1e-8,
+        why="round-off of 5 kN",
+        kind="law",
+        law="momentum",
+    )
 
 
-def test_published_moving_vane() -> None:
+def test_published_moving_vane(verify: Verify) -> None:
     # Fox and McDonald, moving vane (from memory): 999 kg/m³, 0.003 m², 30 and 10 m/s, 60 degrees: what holds the vane
     # is -599 N and 1.04 kN; exact -599.4 and 1038.1912541
     found = vane(30.0, 10.0, np.radians(60), 0.003, 999.0).balance
     assert_allclose(found.reaction.wrench.force, [-599.4, 1038.1912541, 0], rtol=0, atol=1e-6)
+    verify(
+        what="Vane at 10 m/s, jet of 30 m/s and 0.003 m², 60 degrees: what holds it",
+        source="Fox and McDonald, moving vane: -599 N and 1.04 kN",
+        memory=True,
+        expected=(-599.4, 1038.1912541),
+        got=found.reaction.wrench.force[:2],
+        unit="N",
+        tolerance=1e-6,
+        why="the figures computed unrounded",
+        kind="law",
+        law="momentum",
+    )
 
 
 def best_speed(power: Any, highest: float) -> tuple[float, float]:
@@ -218,7 +243,7 @@ def best_speed(power: Any, highest: float) -> tuple[float, float]:
     return float(found.x), -float(found.fun)
 
 
-def test_one_vane_takes_most_at_a_third_of_the_jet_and_a_wheel_of_vanes_at_half() -> None:
+def test_one_vane_takes_most_at_a_third_of_the_jet_and_a_wheel_of_vanes_at_half(verify: Verify) -> None:
     # one vane: 8/27 (1 - cos) of the jet's rho A V³/2; a wheel, whose vanes take over one from another: (1 - cos)/2
     # (White ch. 3 and 11, from memory); with 15 degrees short of a full turn: 0.98296291 for the wheel
     speed, turn, area = 24.0, np.radians(165), 0.002
@@ -234,10 +259,32 @@ def test_one_vane_takes_most_at_a_third_of_the_jet_and_a_wheel_of_vanes_at_half(
 
     at, most = best_speed(one, 23.0)
     assert_allclose(at, speed / 3, rtol=1e-6)
+    verify(
+        what="One vane, 165 degrees: best speed over the jet's, and greatest share of its power",
+        source="White, Fluid Mechanics, ch. 3: 1/3 and 8/27 (1 - cos)",
+        memory=True,
+        expected=(1 / 3, 8 / 27 * (1 - np.cos(turn))),
+        got=(at / speed, most / jet),
+        tolerance=1e-6,
+        why="found by a search for the maximum",
+        kind="law",
+        law="energy",
+    )
     assert_allclose(most / jet, 8 / 27 * (1 - np.cos(turn)), rtol=1e-10)
     at, most = best_speed(wheel, 23.0)
     assert_allclose(at, speed / 2, rtol=1e-6)
     assert_allclose(most / jet, 0.98296291, rtol=1e-8)
+    verify(
+        what="Wheel of vanes, 165 degrees: best speed over the jet's, and greatest share of its power",
+        source="White, Fluid Mechanics, ch. 11: 1/2 and (1 + cos 15°)/2",
+        memory=True,
+        expected=(1 / 2, 0.98296291),
+        got=(at / speed, most / jet),
+        tolerance=1e-6,
+        why="found by a search for the maximum",
+        kind="law",
+        law="energy",
+    )
     # the wheel has V / (V - U) vanes at work at a time
     assert_allclose(wheel(7.0), one(7.0) * speed / (speed - 7.0), rtol=1e-12)
 
@@ -321,7 +368,7 @@ def test_free_fall_takes_the_weight_away() -> None:
 # ---- rocket sled ----------------------------------------------------------------------------
 
 
-def test_speed_gained_by_a_rocket_sled() -> None:
+def test_speed_gained_by_a_rocket_sled(verify: Verify) -> None:
     # Tsiolkovsky: V ln(m0 / m) = 2500 ln(400 / 200) = 1732.8679514 m/s, however fast the charge burns. A sled of 100 kg
     # holds 300 kg of gas at rest to it; a third of that stays. Nothing holds the sled: its acceleration is the one
     # that asks for no reaction, and the gas that is left is pushed along.
@@ -355,3 +402,15 @@ def test_speed_gained_by_a_rocket_sled() -> None:
     run = solve_ivp(course, (0, 1), [300.0, 40.0], events=burnt, rtol=1e-9, atol=1e-9, method="DOP853")
     assert run.status == 1
     assert_allclose(run.y_events[0][0], [100.0, 40.0 + 1732.8679514], rtol=1e-8)
+    verify(
+        what="Sled of 400 kg that burns 200 kg at 2500 m/s: speed gained",
+        source="Tsiolkovsky 1903: V ln(m0 / m)",
+        memory=True,
+        expected=1732.8679514,
+        got=run.y_events[0][0][1] - 40,
+        unit="m/s",
+        tolerance=2e-5,
+        why="steps of the time integration",
+        kind="law",
+        law="momentum",
+    )

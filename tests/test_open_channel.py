@@ -14,6 +14,7 @@ from fluxmesh import Outcome, balance_of, lay_flow
 from fluxmesh.balance.storage import Storage
 from fluxmesh.field.frame import Frame
 from tests.solids import Solid, blocks, box, one_group
+from tests.verification import Verify
 
 DENSITY = 1000.0
 STILL = {"velocity": (0, 0, 0), "pressure": 0.0}
@@ -79,7 +80,7 @@ def flow_between(
 # ---- hydraulic jump -------------------------------------------------------------------------
 
 
-def test_published_jump_and_its_loss() -> None:
+def test_published_jump_and_its_loss(verify: Verify) -> None:
     # White's example (from memory): 10 m²/s, 1.25 m deep, g = 9.81: y2 = 3.46 m, V2 = 2.89 m/s, hf = 0.625 m;
     # exact 3.4616260986, 2.8888157517 and 0.6250071100 = (y2 - y1)³ / (4 y1 y2)
     gravity, rate, first = 9.81, 10.0, 1.25
@@ -103,10 +104,45 @@ def test_published_jump_and_its_loss() -> None:
     head = [(p or 0) / (DENSITY * gravity) + z for p, z in zip(total, middle)]
     assert head[0] - head[1] == pytest.approx(0.625, abs=5e-4)
     assert head[0] - head[1] == pytest.approx((second - first) ** 3 / (4 * first * second), rel=1e-12)
+    verify(
+        what="Hydraulic jump, 10 m²/s, 1.25 m: momentum function at both ends, with rho and g",
+        source="Bélanger 1828; White, Fluid Mechanics, ch. 10",
+        memory=True,
+        expected=(87664.0625, 87664.0625),
+        got=[s * (ledger.group_flux[k, 0] - ledger.group_pressure[k, 0]) for k, s in ((0, -1), (1, 1))],
+        unit="N",
+        tolerance=1e-6,
+        why="round-off",
+        kind="law",
+        law="momentum",
+    )
+    verify(
+        what="Hydraulic jump, 10 m²/s, 1.25 m: depth and speed behind",
+        source="White, Fluid Mechanics, ch. 10, example: 3.46 m, 2.89 m/s",
+        memory=True,
+        expected=(3.46, 2.89),
+        got=(second, found.ports["out"].mean_speed),
+        tolerance=5e-3,
+        why="printed with three digits",
+        kind="law",
+        law="mass",
+    )
+    verify(
+        what="Hydraulic jump, 10 m²/s, 1.25 m: loss of head",
+        source="White, Fluid Mechanics, ch. 10, example: 0.625 m",
+        memory=True,
+        expected=0.625,
+        got=head[0] - head[1],
+        unit="m",
+        tolerance=5e-4,
+        why="printed with three digits",
+        kind="law",
+        law="energy",
+    )
 
 
 @pytest.mark.parametrize(("bottom", "slope"), [(3.0, 1.5), (0.6, 0.5), (2.0, 0.0)])
-def test_jump_in_a_trapezoidal_channel(bottom: float, slope: float) -> None:
+def test_jump_in_a_trapezoidal_channel(verify: Verify, bottom: float, slope: float) -> None:
     # Chow, Open-Channel Hydraulics 1959, section 3-7 (from memory): Q²/(g A) + A z is the same before and after,
     # A z = b y²/2 + m y³/3. The banks widen the stream, but they run along it: the water leans on them sideways only
     from scipy.optimize import brentq
@@ -132,6 +168,17 @@ def test_jump_in_a_trapezoidal_channel(bottom: float, slope: float) -> None:
 
     assert found(second) == pytest.approx(0, abs=1e-12)
     assert abs(found(1.02 * second)) > 1e-3
+    verify(
+        what=f"Jump in a trapezoid {bottom:g} m wide with banks 1:{slope:g}: force left over, of the momentum function",
+        source="Chow, Open-Channel Hydraulics 1959, section 3-7: none",
+        memory=True,
+        expected=0,
+        got=found(second),
+        tolerance=1e-11,
+        why="round-off",
+        kind="law",
+        law="momentum",
+    )
 
 
 def test_blocks_on_the_bed_shorten_the_jump() -> None:
@@ -173,7 +220,7 @@ def test_blocks_on_the_bed_shorten_the_jump() -> None:
     assert force[0] == pytest.approx(share * DENSITY * gravity * function(first), rel=1e-12)
 
 
-def test_free_overfall() -> None:
+def test_free_overfall(verify: Verify) -> None:
     # critical flow towards a brink where the pressure is that of the air: yb = 2/3 yc (Rouse 1936; Henderson,
     # Open Channel Flow 1966, from memory: momentum gives 0.667, measurements 0.715 with what pressure is left)
     gravity, rate = 9.80665, 4.0
@@ -188,6 +235,17 @@ def test_free_overfall() -> None:
     scale = DENSITY * gravity * critical**2
     assert push(2 / 3 * critical) == pytest.approx(0, abs=1e-12 * scale)
     assert push(0.715 * critical) > 0.05 * scale  # the rest of the pressure
+    verify(
+        what="Free overfall with a brink of two thirds of the critical depth: force left over, of rho g yc²",
+        source="Rouse 1936; Henderson, Open Channel Flow 1966",
+        memory=True,
+        expected=0,
+        got=push(2 / 3 * critical) / scale,
+        tolerance=1e-11,
+        why="round-off",
+        kind="law",
+        law="momentum",
+    )
 
 
 # ---- surges ---------------------------------------------------------------------------------
@@ -223,7 +281,7 @@ def canal(first: float, second: float) -> Solid:
 
 
 @pytest.mark.parametrize(("depth", "speed"), [(2.0, 3.0), (0.5, 0.4)])
-def test_a_gate_that_shuts_bears_the_surge(depth: float, speed: float) -> None:
+def test_a_gate_that_shuts_bears_the_surge(verify: Verify, depth: float, speed: float) -> None:
     # the surge fills the reach with still water at c (y2 - y1): the momentum that dies there, c V1 y1, and what comes
     # in are borne by the gate, which holds the depth y2: rho g y2²/2
     gravity = 9.80665
@@ -242,6 +300,27 @@ def test_a_gate_that_shuts_bears_the_surge(depth: float, speed: float) -> None:
     steady = flow_between(body, (depth, second), (speed, 0.0), gravity).balance
     assert steady.load.from_balance.force[0] == pytest.approx(kept.momentum[0], rel=1e-9)
     assert steady.mass.residual == pytest.approx(-kept.mass, rel=1e-12)
+    verify(
+        what=f"Gate that shuts on {depth:g} m at {speed:g} m/s: push over the hydrostatic one after it",
+        source="White, Fluid Mechanics, ch. 10: surge with storage",
+        memory=True,
+        expected=1,
+        got=-(found.momentum.group_pressure[2, 0] + found.load.from_balance.force[0]) / push,
+        tolerance=1e-9,
+        why="round-off of the solved depth",
+        kind="law",
+        law="momentum",
+    )
+    verify(
+        what=f"Gate that shuts on {depth:g} m at {speed:g} m/s: mass left over, of what comes in",
+        source="continuity with storage rho c (y2 - y1)",
+        expected=0,
+        got=found.mass.residual / found.mass.inflow,
+        tolerance=1e-11,
+        why="round-off",
+        kind="law",
+        law="mass",
+    )
 
 
 def test_a_surge_is_a_jump_to_those_who_go_with_it() -> None:

@@ -13,6 +13,7 @@ from fluxmesh.balance.balance import Balance
 from tests.flows import ExactFlow, face_frames, poiseuille
 from tests.measures import observed_order
 from tests.solids import Solid, box, mapped, moved, pipe, rigid_motion
+from tests.verification import Verify
 
 RADIUS, LENGTH, MEAN, VISCOSITY, DENSITY = 0.1, 0.5, 2.0, 0.4, 870.0
 AREA = np.pi * RADIUS**2
@@ -32,7 +33,7 @@ def laminar(level: int, **options: object) -> Balance:
     return balance_of(surface, FLOW.lay(surface, **options)).balance
 
 
-def test_factors_of_laminar_flow_in_a_round_pipe() -> None:
+def test_factors_of_laminar_flow_in_a_round_pipe(verify: Verify) -> None:
     # momentum 4/3, kinetic energy 2 (White, Fluid Mechanics ch. 3 and 6, from memory)
     found = [laminar(level).ports for level in (0, 1, 2, 3)]
     for port in PORTS:
@@ -45,9 +46,19 @@ def test_factors_of_laminar_flow_in_a_round_pipe() -> None:
             assert observed_order([8, 4, 2, 1], errors) == pytest.approx(2.0, abs=0.1)
             assert abs(errors[-1]) < 2e-3 * exact
         assert found[-1][port].reversed_share == 0.0
+    verify(
+        what="Laminar flow in a round pipe, velocities on points: momentum and kinetic-energy factor",
+        source="White, Fluid Mechanics, ch. 3 and 6: 4/3 and 2",
+        memory=True,
+        expected=(4 / 3, 2),
+        got=(found[-1]["outlet"].momentum_factor, found[-1]["outlet"].kinetic_energy_factor),
+        tolerance=4e-3,
+        why="96 facets around; second order is asserted beside",
+        kind="profile",
+    )
 
 
-def test_pressure_drop_equals_wall_friction() -> None:
+def test_pressure_drop_equals_wall_friction(verify: Verify) -> None:
     # Hagen-Poiseuille: (p1 - p2) pi R² = 8 pi mu U L, felt by the walls as much as the ports demand it
     walls, demand = [], []
     for level in (1, 2, 3):
@@ -64,6 +75,18 @@ def test_pressure_drop_equals_wall_friction() -> None:
     for errors in (walls, demand):
         assert observed_order(SIZES, errors) == pytest.approx(2.0, abs=0.1)
         assert abs(errors[-1]) < 0.01 * FRICTION
+    verify(
+        what="Hagen-Poiseuille flow: friction on the walls, by them and by the ports, over 8 pi mu U L",
+        source="Hagen 1839, Poiseuille 1840; White, Fluid Mechanics, ch. 6",
+        memory=True,
+        expected=(1, 1),
+        got=(found.load.from_walls.force[2] / FRICTION, found.load.from_balance.force[2] / FRICTION),
+        tolerance=0.01,
+        why="96 facets around",
+        order=(observed_order(SIZES, demand), 2, 0.1),
+        kind="law",
+        law="momentum",
+    )
 
 
 def test_the_same_pipe_laid_askew() -> None:
@@ -84,7 +107,7 @@ def test_the_same_pipe_laid_askew() -> None:
         assert_allclose(one.moment, turn @ two.moment, rtol=0, atol=1e-10 * FRICTION)
 
 
-def test_power_of_the_pressure_is_the_dissipation() -> None:
+def test_power_of_the_pressure_is_the_dissipation(verify: Verify) -> None:
     # (p1 - p2) Q = 8 pi mu U² L; the ports' viscous traction has no power, since it is across the flow
     errors = []
     for level in (1, 2, 3):
@@ -92,9 +115,21 @@ def test_power_of_the_pressure_is_the_dissipation() -> None:
         errors.append(-table.total("pressure_volume_flow") - 8 * np.pi * VISCOSITY * MEAN**2 * LENGTH)
         assert_allclose(table.total("viscous_power"), 0, rtol=0, atol=1e-10)
     assert observed_order(SIZES, errors) == pytest.approx(2.0, abs=0.1)
+    verify(
+        what="Hagen-Poiseuille flow: power of the pressure over 8 pi mu U² L",
+        source="the dissipation (White, Fluid Mechanics, ch. 6)",
+        memory=True,
+        expected=1,
+        got=1 + errors[-1] / (8 * np.pi * VISCOSITY * MEAN**2 * LENGTH),
+        tolerance=0.01,
+        why="96 facets around",
+        order=(observed_order(SIZES, errors), 2, 0.1),
+        kind="law",
+        law="energy",
+    )
 
 
-def test_short_form_says_what_a_developing_profile_adds() -> None:
+def test_short_form_says_what_a_developing_profile_adds(verify: Verify) -> None:
     # from uniform to parabolic at the same area: (4/3 - 1) rho U² A beyond flow × (V2 - V1), which is zero
     effect, load = [], []
     for level in (1, 2, 3):
@@ -113,6 +148,18 @@ def test_short_form_says_what_a_developing_profile_adds() -> None:
     # the mean velocities differ by what the facets lose of the flow, so the short form itself tends to zero
     assert abs(short.rate[2]) < 0.01 * DENSITY * MEAN**2 * AREA
     assert abs(effect[-1]) < 0.01 * DENSITY * MEAN**2 * AREA
+    verify(
+        what="Pipe with a developing profile, uniform to parabolic: momentum gained over rho U² A",
+        source="White, Fluid Mechanics, ch. 3: 4/3 - 1",
+        memory=True,
+        expected=1 / 3,
+        got=1 / 3 + effect[-1] / (DENSITY * MEAN**2 * AREA),
+        tolerance=0.01,
+        why="96 facets around",
+        order=(observed_order(SIZES, effect), 2, 0.1),
+        kind="law",
+        law="momentum",
+    )
 
 
 def test_without_a_change_of_profile_the_short_form_is_the_whole() -> None:
@@ -151,7 +198,7 @@ def factors(solid: Solid, velocity: Callable[[np.ndarray], np.ndarray]) -> tuple
     ("n", "momentum", "energy"),
     [(6, 1.0269097222, 1.0767761203), (7, 1.0204081633, 1.0583825367), (10, 1.0106250000, 1.0306346990)],
 )
-def test_factors_of_turbulent_power_laws(n: int, momentum: float, energy: float) -> None:
+def test_factors_of_turbulent_power_laws(verify: Verify, n: int, momentum: float, energy: float) -> None:
     # u = Umax (1 - r/R)^(1/n): beta = (1+m)²(2+m)² / (2 (1+2m)(2+2m)), alpha = (1+m)³(2+m)³ / (4 (1+3m)(2+3m)),
     # m = 1/n (from memory). The gradient at the wall is infinite, so rings crowd there: 1 - r/R goes as a cube
     def crowded(x: np.ndarray) -> np.ndarray:
@@ -168,13 +215,26 @@ def test_factors_of_turbulent_power_laws(n: int, momentum: float, energy: float)
     assert (np.abs(errors[-1]) < [5e-4, 1e-3]).all()
     assert observed_order(SIZES, [e[0] for e in errors]) == pytest.approx(2.0, abs=0.4)
     assert observed_order(SIZES, [e[1] for e in errors]) == pytest.approx(2.0, abs=0.4)
+    verify(
+        what=f"Power law 1/{n} in a pipe, velocities on points: momentum and kinetic-energy factor",
+        source="(1+m)²(2+m)²/(2(1+2m)(2+2m)), (1+m)³(2+m)³/(4(1+3m)(2+3m))",
+        memory=True,
+        expected=(momentum, energy),
+        got=errors[-1] + (momentum, energy),
+        tolerance=1e-3,
+        why="infinite slope at the wall",
+        order=(observed_order(SIZES, [e[0] for e in errors]), 2, 0.4),
+        kind="profile",
+    )
 
 
 @pytest.mark.parametrize(
     ("aspect", "momentum", "energy"),
     [(1.0, 1.3784186918, 2.1541805191), (0.5, 1.3474586596, 2.0389181724), (0.25, 1.2875952156, 1.8255688659)],
 )
-def test_factors_of_laminar_flow_in_rectangular_ducts(aspect: float, momentum: float, energy: float) -> None:
+def test_factors_of_laminar_flow_in_rectangular_ducts(
+    verify: Verify, aspect: float, momentum: float, energy: float
+) -> None:
     # Fourier series of Shah and London 1978, ch. VII; factors recomputed by two routes
     def velocity(x: np.ndarray) -> np.ndarray:
         y, z = x[:, 0], x[:, 1]  # |y| < aspect, |z| < 1
@@ -192,6 +252,17 @@ def test_factors_of_laminar_flow_in_rectangular_ducts(aspect: float, momentum: f
     assert observed_order(SIZES, [e[0] for e in errors]) == pytest.approx(2.0, abs=0.2)
     assert observed_order(SIZES, [e[1] for e in errors]) == pytest.approx(2.0, abs=0.2)
     assert (np.abs(errors[-1]) < 0.01).all()
+    verify(
+        what=f"Laminar flow in a duct of {aspect:g} : 1, velocities on points: momentum and kinetic-energy factor",
+        source="Shah and London 1978, Laminar Flow Forced Convection in Ducts, ch. VII",
+        memory=True,
+        expected=(momentum, energy),
+        got=errors[-1] + (momentum, energy),
+        tolerance=0.01,
+        why="32 cells across",
+        order=(observed_order(SIZES, [e[0] for e in errors]), 2, 0.2),
+        kind="profile",
+    )
 
 
 def test_a_uniform_profile_has_factors_of_one_whatever_the_facets() -> None:

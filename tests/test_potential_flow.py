@@ -25,6 +25,7 @@ from tests.solids import (
     together,
     turned,
 )
+from tests.verification import Verify
 
 ANCHOR = np.array([0.4, -0.3, 0.2])
 SIZES = (4.0, 2.0, 1.0)
@@ -70,7 +71,7 @@ CONTOURS: dict[str, Callable[[int], np.ndarray]] = {
 
 
 @pytest.mark.parametrize("name", CONTOURS)
-def test_kutta_joukowski_on_any_contour(name: str) -> None:
+def test_kutta_joukowski_on_any_contour(verify: Verify, name: str) -> None:
     # Batchelor section 6.6; Milne-Thomson (from memory): lift rho U G across the stream, no drag. The ends of the
     # extruded metre cancel, and nothing flows through them.
     force, moment, mass = [], [], []
@@ -84,10 +85,25 @@ def test_kutta_joukowski_on_any_contour(name: str) -> None:
     assert_order_two(force, below=0.03 * LIFT)
     assert_order_two(moment, below=0.03 * LIFT, tolerance=0.2)
     assert mass[-1] < 0.01 * DENSITY * SPEED
+    verify(
+        what=f"Lift on a cylinder through this contour, {name}: drag and lift a metre",
+        source="Kutta 1902, Joukowski 1906; Batchelor, section 6.6: 0 and rho U G",
+        memory=True,
+        expected=(0, 7.2),
+        got=load.force[:2],
+        unit="N",
+        tolerance=0.03 * LIFT,
+        why="linear data on 48 to 256 facets",
+        order=(observed_order(SIZES, force), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
 
 
 @pytest.mark.parametrize(("radius", "pressure", "momentum"), [(0.5, 7.2, 0.0), (1.0, 4.5, 2.7), (2.0, 3.825, 3.375)])
-def test_how_lift_is_shared_by_pressure_and_momentum(radius: float, pressure: float, momentum: float) -> None:
+def test_how_lift_is_shared_by_pressure_and_momentum(
+    verify: Verify, radius: float, pressure: float, momentum: float
+) -> None:
     # on a circle rho U G (1 ± a²/r²) / 2; on the cylinder itself all is pressure
     push, carried = [], []
     for k in LEVELS:
@@ -96,6 +112,19 @@ def test_how_lift_is_shared_by_pressure_and_momentum(radius: float, pressure: fl
         carried.append(-ledger.flux()[1] - momentum)
     assert_order_two(push, below=0.01 * LIFT)
     assert_order_two(carried, below=0.01 * LIFT)
+    verify(
+        what=f"Lift on a cylinder of 0.5 m through a circle of {radius:g} m: share of pressure and of momentum",
+        source="Batchelor, section 6.6: rho U G (1 ± a²/r²) / 2",
+        memory=True,
+        expected=(pressure, momentum),
+        got=(pressure + push[-1], momentum + carried[-1]),
+        unit="N",
+        tolerance=0.01 * LIFT,
+        why="192 facets",
+        order=(observed_order(SIZES, push), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
 
 
 def test_no_lift_without_the_cylinder_inside() -> None:
@@ -126,26 +155,38 @@ def test_a_sphere_has_no_drag() -> None:
     assert_order_two(far, below=0.05, tolerance=0.3)
 
 
-@pytest.mark.parametrize(
-    "body_of",
-    [
-        lambda k: box((-1.5, -1.8, -1.4), (1.7, 1.5, 2.0), 4 * 2**k),
-        lambda k: sphere(k + 1, 1.8, (0.3, -0.2, 0.4)),
-        lambda k: mapped(odd_body(k + 1), lambda x: 2.2 * x),
-    ],
-    ids=["box", "sphere off centre", "odd body"],
-)
-def test_no_drag_through_any_surface_round_the_sphere(body_of: Callable[[int], Solid]) -> None:
+ROUND_THE_SPHERE: dict[str, Callable[[int], Solid]] = {
+    "box": lambda k: box((-1.5, -1.8, -1.4), (1.7, 1.5, 2.0), 4 * 2**k),
+    "sphere off centre": lambda k: sphere(k + 1, 1.8, (0.3, -0.2, 0.4)),
+    "odd body": lambda k: mapped(odd_body(k + 1), lambda x: 2.2 * x),
+}
+
+
+@pytest.mark.parametrize("name", ROUND_THE_SPHERE)
+def test_no_drag_through_any_surface_round_the_sphere(verify: Verify, name: str) -> None:
     errors, turning = [], []
     for k in LEVELS:
-        load = balance(body_of(k), SPHERE).load.from_balance
+        load = balance(ROUND_THE_SPHERE[name](k), SPHERE).load.from_balance
         errors.append(np.linalg.norm(load.force))
         turning.append(np.linalg.norm(load.moment))
     assert_order_two(errors, below=0.05, tolerance=0.3)
     assert_order_two(turning, below=0.05, tolerance=0.3)
+    verify(
+        what=f"Ideal flow past a sphere through this surface, {name}: force",
+        source="d'Alembert 1752: none",
+        memory=True,
+        expected=(0, 0, 0),
+        got=load.force,
+        unit="N",
+        tolerance=0.05,
+        why="rho U² A is 15 N; linear data on the finest of three meshes",
+        order=(observed_order(SIZES, errors), 2, 0.3),
+        kind="law",
+        law="momentum",
+    )
 
 
-def test_each_half_of_a_sphere_is_sucked_outward() -> None:
+def test_each_half_of_a_sphere_is_sucked_outward(verify: Verify) -> None:
     # axial force (pi/16) rho U² a² = 0.19634954085 away from the middle (computed by two routes): a part of a surface,
     # with the pressure counted from the far stream. The dome faces downstream here; both halves are alike.
     errors = []
@@ -158,9 +199,21 @@ def test_each_half_of_a_sphere_is_sucked_outward() -> None:
         force = balance_of(surface, flow).balance.load.from_walls.force
         errors.append(force[2] - np.pi / 16)
     assert_order_two(errors, below=0.01)
+    verify(
+        what="Ideal flow past a sphere: axial pressure force on one half over rho U² a²",
+        source="the potential of a sphere (Batchelor, section 6.8): pi/16",
+        memory=True,
+        expected=0.19634954085,
+        got=np.pi / 16 + errors[-1],
+        tolerance=0.01,
+        why="96 × 24 facets",
+        order=(observed_order(SIZES, errors), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
 
 
-def test_impulsive_pressure_on_a_sphere_is_its_added_mass() -> None:
+def test_impulsive_pressure_on_a_sphere_is_its_added_mass(verify: Verify) -> None:
     # p = rho a³ A·x / (2 r³) on a sphere with the acceleration A: force -(2/3) pi rho a³ A (Batchelor 6.8, from memory)
     acceleration = np.array([0.3, -0.5, 0.8])
     errors = []
@@ -170,6 +223,19 @@ def test_impulsive_pressure_on_a_sphere_is_its_added_mass() -> None:
         force = balance_of(surface, lay_flow(surface, pressure=pressure)).balance.momentum.pressure()
         errors.append(np.linalg.norm(force + 2 / 3 * np.pi * acceleration))
     assert_order_two(errors, below=0.02)
+    verify(
+        what="Sphere that starts: impulsive pressure on it, over the acceleration",
+        source="Batchelor, section 6.8: added mass (2/3) pi rho a³",
+        memory=True,
+        expected=-2 / 3 * np.pi * acceleration,
+        got=force,
+        unit="N",
+        tolerance=0.02,
+        why="5120 facets",
+        order=(observed_order(SIZES, errors), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
 
 
 # ---- sources --------------------------------------------------------------------------------
@@ -183,7 +249,7 @@ ROUND: dict[str, Callable[[int], Solid]] = {
 
 
 @pytest.mark.parametrize("name", ROUND)
-def test_a_source_in_a_stream(name: str) -> None:
+def test_a_source_in_a_stream(verify: Verify, name: str) -> None:
     # Lagally (Milne-Thomson, from memory): mass rho Q and momentum rho Q U leave through any surface round the
     # source; the force on the source is -rho Q U
     stream = np.array([1.2, -1.0, 1.25])
@@ -198,9 +264,35 @@ def test_a_source_in_a_stream(name: str) -> None:
     assert_order_two(mass, below=0.01 * DENSITY * STRENGTH, tolerance=0.2)
     assert_order_two(force, below=0.02 * np.linalg.norm(thrust), tolerance=0.2)
     assert_order_two(moment, below=0.02 * np.linalg.norm(thrust), tolerance=0.2)
+    verify(
+        what=f"Source of 3.5 m³/s within this surface, {name}: mass out",
+        source="definition of a source: rho Q",
+        expected=4.2,
+        got=4.2 + mass[-1],
+        unit="kg/s",
+        tolerance=0.01 * 4.2,
+        why="linear data on the finest of three meshes",
+        order=(observed_order(SIZES, mass), 2, 0.2),
+        kind="law",
+        law="mass",
+    )
+    verify(
+        what=f"Source of 3.5 m³/s in a stream, within this surface, {name}: force on it",
+        source="Lagally 1922; Milne-Thomson, Theoretical Hydrodynamics: -rho Q U",
+        memory=True,
+        expected=-thrust,
+        got=found.load.from_balance.force,
+        unit="N",
+        tolerance=0.02,
+        relative=True,
+        why="linear data on the finest of three meshes",
+        order=(observed_order(SIZES, force), 2, 0.2),
+        kind="law",
+        law="momentum",
+    )
 
 
-def test_how_a_source_shares_its_force_on_a_sphere() -> None:
+def test_how_a_source_shares_its_force_on_a_sphere(verify: Verify) -> None:
     # Q = 3.5, U = 2: mass 4.2; momentum 11.2 (4/3 of 8.4) and pressure -2.8, computed by two routes
     flow = sources(DENSITY, (0, 0, 2.0), (STRENGTH, (0, 0, 0)))
     mass, carried, push = [], [], []
@@ -211,9 +303,21 @@ def test_how_a_source_shares_its_force_on_a_sphere() -> None:
         push.append(-found.momentum.pressure()[2] + 2.8)
     for errors in (mass, carried, push):
         assert_order_two(errors, below=0.1)
+    verify(
+        what="Source of 3.5 m³/s in a stream of 2 m/s, in a sphere: mass, momentum, pressure",
+        source="Lagally 1922: rho Q, 4/3 and -1/3 of rho Q U",
+        memory=True,
+        expected=(4.2, 11.2, -2.8),
+        got=(4.2 + mass[-1], 11.2 + carried[-1], push[-1] - 2.8),
+        tolerance=0.1,
+        why="5120 facets",
+        order=(observed_order(SIZES, carried), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
 
 
-def test_two_sources_attract() -> None:
+def test_two_sources_attract(verify: Verify) -> None:
     # force rho Q1 Q2 / (4 pi d²) on each, toward the other: 0.29708922710 for 3.5, 2 and 1.5 m
     flow = sources(DENSITY, (0, 0, 0), (STRENGTH, (0, 0, 0)), (2.0, (0, 0, 1.5)))
     errors = []
@@ -221,6 +325,19 @@ def test_two_sources_attract() -> None:
         load = balance(mapped(odd_body(k), lambda x: 0.6 * x), flow).load.from_balance
         errors.append(np.linalg.norm(load.force - [0, 0, 0.29708922710]))
     assert_order_two(errors, below=0.05, tolerance=0.2)
+    verify(
+        what="Two sources, 3.5 and 2 m³/s, 1.5 m apart: force on the first towards the second",
+        source="Lagally 1922: rho Q1 Q2 / (4 pi d²)",
+        memory=True,
+        expected=0.29708922710,
+        got=load.force[2],
+        unit="N",
+        tolerance=0.05,
+        why="the odd body passes near the source",
+        order=(observed_order(SIZES, errors), 2, 0.2),
+        kind="law",
+        law="momentum",
+    )
 
 
 def test_nothing_comes_from_sources_outside() -> None:

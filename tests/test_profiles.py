@@ -42,6 +42,7 @@ from tests.port_sections import (
     round_section,
 )
 from tests.solids import blocks, together
+from tests.verification import Verify
 
 OUT = 1
 # width over height, momentum factor, kinetic-energy factor
@@ -78,18 +79,28 @@ def fine_factors(patch: PortPatch, kind: str = "laminar", **options: Any) -> tup
 # ---- laminar ------------------------------------------------------------------------------------
 
 
-def test_round_pipe() -> None:
+def test_round_pipe(verify: Verify) -> None:
     found = np.array([factors(round_port(8 * 2**k, 2 * 2**k)) for k in range(4)])
     for errors, order in zip((found - [4 / 3, 2]).T, (2.7, 2.8)):
         # the corners of the rim alone leave second order; what is left of it falls faster at first
         assert observed_order([8, 4, 2, 1], errors) > order - 0.3
         assert np.all(errors > 0)
     assert_allclose(found[-1], [4 / 3, 2], rtol=5e-5)
+    verify(
+        what="Laminar profile laid on a round port of 64 facets: momentum and kinetic-energy factor",
+        source="White, Fluid Mechanics, ch. 3 and 6: 4/3 and 2",
+        memory=True,
+        expected=(4 / 3, 2),
+        got=found[-1],
+        tolerance=1e-4,
+        why="the corners of the rim",
+        kind="profile",
+    )
 
 
 @pytest.mark.parametrize(("width", "momentum", "energy"), RECTANGLES)
 @pytest.mark.parametrize("quads", [False, True])
-def test_rectangular_ducts(width: float, momentum: float, energy: float, quads: bool) -> None:
+def test_rectangular_ducts(verify: Verify, width: float, momentum: float, energy: float, quads: bool) -> None:
     # two triangles a cell, divided further: 4000 triangles or more resolve to 6e-6 and better
     patch = rectangle(width, 8, quads=quads, askew=True)
     assert_allclose(factors(patch), [momentum, energy], rtol=5e-5)
@@ -97,9 +108,19 @@ def test_rectangular_ducts(width: float, momentum: float, energy: float, quads: 
     coarse, finer = (np.array(factors(rectangle(width, n, quads=quads))) - [momentum, energy] for n in (2, 4))
     # quadrature of degree 4 on cells: at least third order before round-off of the solution counts
     assert np.all(np.abs(finer) < np.abs(coarse) / 8)
+    verify(
+        what=f"Laminar profile laid on a {width} : 1 port of {'quads' if quads else 'triangles'}: both factors",
+        source="Shah and London 1978, Laminar Flow Forced Convection in Ducts, ch. VII",
+        memory=True,
+        expected=(momentum, energy),
+        got=fine_factors(patch),
+        tolerance=1.3e-5,
+        why="4000 triangles or more",
+        kind="profile",
+    )
 
 
-def test_slot_between_symmetry_planes() -> None:
+def test_slot_between_symmetry_planes(verify: Verify) -> None:
     # a strip of a slot: no slope across its ends, so that the parabola is in the space of quadratics
     patch = rectangle(3, 2, lambda middle: "symmetry" if middle[0] in (0, 3) else "wall")
     velocity = profile_velocity(patch, "laminar", 3 * 0.7)
@@ -110,13 +131,34 @@ def test_slot_between_symmetry_planes() -> None:
     energy = [factors(rectangle(3, n, lambda m: "symmetry" if m[0] in (0, 3) else "wall"))[1] for n in (1, 2, 4)]
     assert_allclose(energy[-1], 54 / 35, rtol=2e-5)
     assert observed_order([4, 2, 1], np.array(energy) - 54 / 35) == pytest.approx(6, abs=0.1)
+    verify(
+        what="Laminar profile laid on a strip of a slot: momentum and kinetic-energy factor",
+        source="White, Fluid Mechanics, ch. 6: 6/5 and 54/35",
+        memory=True,
+        expected=(6 / 5, 54 / 35),
+        got=(momentum_factor(patch, velocity), energy[-1]),
+        tolerance=3e-5,
+        why="degree six is beyond the rule",
+        order=(observed_order([4, 2, 1], np.array(energy) - 54 / 35), 6, 0.1),
+        kind="profile",
+    )
 
 
-def test_annulus() -> None:
+def test_annulus(verify: Verify) -> None:
     found = np.array([factors(PortPatch.of(duct(annulus_section(0.5, 1, 12 * 2**k, 2 * 2**k)), OUT)) for k in range(4)])
     for errors in (found - ANNULUS).T:
         assert observed_order([8, 4, 2, 1], errors) > 1.9  # corners of the rim: second order
     assert_allclose(found[-1], ANNULUS, rtol=3e-5)
+    verify(
+        what="Laminar profile laid on an annulus of radii 1 : 2: momentum and kinetic-energy factor",
+        source="closed form (White, Viscous Fluid Flow, ch. 3), integrated",
+        memory=True,
+        expected=ANNULUS,
+        got=found[-1],
+        tolerance=5e-5,
+        why="96 facets around",
+        kind="profile",
+    )
 
 
 @pytest.mark.parametrize("ratio", [0.3, 0.7])
@@ -270,7 +312,7 @@ def power_law_factors(n: float, ways: int) -> tuple[float, float]:
 
 
 @pytest.mark.parametrize("n", [6, 7, 8, 9, 10])
-def test_power_law_in_a_pipe_and_a_slot(n: float) -> None:
+def test_power_law_in_a_pipe_and_a_slot(verify: Verify, n: float) -> None:
     ports = [round_port(8 * 2**k, 2 * 2**k) for k in (1, 2, 3)]
     found = np.array([factors(port, "power-law", exponent=n) for port in ports])
     exact = power_law_factors(n, 2)
@@ -281,6 +323,26 @@ def test_power_law_in_a_pipe_and_a_slot(n: float) -> None:
     strip = rectangle(1, 16, lambda middle: "symmetry" if middle[0] in (0, 1) else "wall", quads=True)
     assert_allclose(factors(strip, "power-law", exponent=n), power_law_factors(n, 1), rtol=2e-3)
     assert_allclose(fine_factors(strip, "power-law", exponent=n), power_law_factors(n, 1), rtol=6e-4)
+    verify(
+        what=f"Power law 1/{n} laid on a round port: momentum and kinetic-energy factor",
+        source="(1+m)²(2+m)²/(2(1+2m)(2+2m)), (1+m)³(2+m)³/(4(1+3m)(2+3m))",
+        memory=True,
+        expected=exact,
+        got=found[-1],
+        tolerance=7e-4,
+        why="infinite slope at the wall",
+        kind="profile",
+    )
+    verify(
+        what=f"Power law 1/{n} laid on a strip of a slot: momentum and kinetic-energy factor",
+        source="(1+m)²/(1+2m), (1+m)³/(1+3m)",
+        memory=True,
+        expected=power_law_factors(n, 1),
+        got=fine_factors(strip, "power-law", exponent=n),
+        tolerance=7e-4,
+        why="infinite slope at the wall",
+        kind="profile",
+    )
 
 
 def test_power_law_speeds_and_default() -> None:

@@ -23,6 +23,7 @@ from fluxmesh.field.frame import Frame
 from tests.flows import ExactFlow, couette, face_frames
 from tests.measures import moments, observed_order
 from tests.solids import Solid, any_polyhedron, box, moved, odd_body, quadratic, rigid_motion, ring
+from tests.verification import Verify
 
 Array = NDArray[np.float64]
 seeds = st.integers(0, 2**32 - 1)
@@ -401,7 +402,7 @@ def gap_with_inner_cylinder(level: int, outer: str) -> Solid:
 
 
 @pytest.mark.parametrize("outer", ["round", "odd"])
-def test_couette_torque_on_any_surface_from_any_frame(outer: str) -> None:
+def test_couette_torque_on_any_surface_from_any_frame(verify: Verify, outer: str) -> None:
     # torque a length 4 pi mu (O1 - O2) r1² r2² / (r2² - r1²), whatever the surface; mu = 0.7, r = 1 and 2,
     # O = 3 and -0.5: 41.050144006907 (Taylor 1923). The flow is steady in every frame that turns about its axis.
     exact = 41.050144006907
@@ -424,6 +425,20 @@ def test_couette_torque_on_any_surface_from_any_frame(outer: str) -> None:
         # regular facets: the turning of the frame adds nothing at all
         for rate in rates[1:]:
             assert_allclose(errors[rate], errors[0.0], rtol=0, atol=1e-12)
+    for rate in rates:
+        verify(
+            what=f"Couette flow seen at {rate:g} rad/s through a surface that is {outer}: torque a metre",
+            source="Taylor 1923: 4 pi mu (O1 - O2) r1² r2² / (r2² - r1²)",
+            memory=True,
+            expected=exact,
+            got=exact * (1 + errors[rate][-1]),
+            unit="N m",
+            tolerance=3e-3 * (1 + abs(rate)) * exact,
+            why="192 facets; a fast frame carries more momentum through them",
+            order=(observed_order([4, 2, 1], errors[rate]), 2, 0.25),
+            kind="law",
+            law="angular",
+        )
 
 
 def test_couette_flow_closes_around_nothing_from_any_frame() -> None:
@@ -445,7 +460,7 @@ def test_couette_flow_closes_around_nothing_from_any_frame() -> None:
 
 
 @pytest.mark.parametrize("rate", [0.0, 160.0])
-def test_work_of_a_radial_wheel(rate: float) -> None:
+def test_work_of_a_radial_wheel(verify: Verify, rate: float) -> None:
     # Euler: torque = flow (r2 Vt2 - r1 Vt1), work U2 Vt2 - U1 Vt1; U2 = 40, Vt2 = 30 m/s, no swirl before: 1200 J/kg
     # (White ch. 11, from memory), by a surface that turns with the wheel at 160 rad/s or stands
     inner, outer, density, through = 0.1, 0.25, 1000.0, 2.0
@@ -472,6 +487,19 @@ def test_work_of_a_radial_wheel(rate: float) -> None:
             assert_allclose(powers[-1], found.power.torque_from_balance * rate, rtol=1e-14)
     assert observed_order([4, 2, 1], work) == pytest.approx(2.0, abs=0.1)
     assert abs(work[-1]) < 0.01 * 1200
+    verify(
+        what=f"Radial wheel, by a surface that turns at {rate:g} rad/s: work a kilogram",
+        source="Euler's equation of turbomachines; White, Fluid Mechanics, ch. 11: 1200 J/kg",
+        memory=True,
+        expected=1200,
+        got=1200 + work[-1],
+        unit="J/kg",
+        tolerance=12,
+        why="96 facets around",
+        order=(observed_order([4, 2, 1], work), 2, 0.1),
+        kind="law",
+        law="angular",
+    )
 
 
 @dataclass(frozen=True)
@@ -522,7 +550,7 @@ class Arm:
         return mass * (speed * np.cos(self.lift) * self.radius - rate * square) + mass * rate * feed
 
 
-def test_published_sprinkler() -> None:
+def test_published_sprinkler(verify: Verify) -> None:
     # 7.5 L/min, jets of 4 mm at 150 mm and 30 degrees, 30 rpm: 0.0718 N m holds it back (Fox and McDonald, from
     # memory); exact 0.0718534 with 999 kg/m³. The ports have a size, which changes the fifth digit.
     arm = Arm(7.5e-3 / 60, 4e-3, 0.15, np.radians(30), 999.0)
@@ -533,6 +561,18 @@ def test_published_sprinkler() -> None:
         power = done.balance.power
         assert_allclose(power.torque_from_balance, arm.torque(rate), rtol=1e-9)
         assert_allclose(power.from_balance, arm.torque(rate) * rate, rtol=1e-9)
+        verify(
+            what=f"Sprinkler, 7.5 L/min, 4 mm, 150 mm, 30°, 30 rpm, anchored at {anchor}: torque that holds it back",
+            source="Fox and McDonald, example of ch. 4: 0.0718 N m",
+            memory=True,
+            expected=0.0718534,
+            got=power.torque_from_balance,
+            unit="N m",
+            tolerance=7.2e-6,
+            why="the ports have a size",
+            kind="law",
+            law="angular",
+        )
         assert abs(done.balance.mass.relative) < 1e-13
         # what only the volume tells is not known, and not called zero
         assert np.isnan(done.balance.load.from_balance.moment).all()

@@ -10,6 +10,7 @@ from numpy.testing import assert_allclose
 from fluxmesh.errors import FieldError
 from fluxmesh.field.fill import fill_fluid
 from fluxmesh.field.substance import SUBSTANCES, substance
+from tests.verification import Verify
 
 ATMOSPHERE = 101325.0
 
@@ -17,7 +18,7 @@ ATMOSPHERE = 101325.0
 # ---- published values -----------------------------------------------------------------------
 
 
-def test_water_is_that_of_iapws() -> None:
+def test_water_is_that_of_iapws(verify: Verify) -> None:
     # IAPWS-95 (density, sound) and IAPWS R12-08 (viscosity) at 20 °C and 101325 Pa, computed with another program
     found = substance("water", 293.15, ATMOSPHERE)
     assert found.state == "liquid"
@@ -29,23 +30,76 @@ def test_water_is_that_of_iapws() -> None:
     assert_allclose(found.density, 998.20609247, rtol=2e-6)
     # heat capacity 4.1841 kJ/(kg K): IAPWS-95 at 20 °C, in any steam table (from memory)
     assert_allclose(found.heat_capacity, 4184.1, rtol=3e-5)
+    verify(
+        what="Water at 20 °C and 101325 Pa: density",
+        source="IAPWS-95, computed with another program",
+        expected=998.20715046794,
+        got=found.density,
+        unit="kg/m³",
+        tolerance=1e-7,
+        why="figure of 14 digits, iterated",
+        kind="property",
+    )
+    verify(
+        what="Water at 20 °C and 101325 Pa: viscosity",
+        source="IAPWS R12-08, computed with another program",
+        expected=1.0015961431e-3,
+        got=found.viscosity,
+        unit="Pa s",
+        tolerance=1e-12,
+        why="figure of 11 digits",
+        kind="property",
+    )
+    verify(
+        what="Water at 20 °C and 101325 Pa: speed of sound",
+        source="IAPWS-95, computed with another program",
+        expected=1482.3461749,
+        got=found.sound_speed,
+        unit="m/s",
+        tolerance=1e-6,
+        why="figure of 11 digits",
+        kind="property",
+    )
 
 
 @pytest.mark.parametrize(("temperature", "volume"), [(300.0, 0.100215168e-2), (500.0, 0.120241800e-2)])
-def test_water_under_pressure(temperature: float, volume: float) -> None:
+def test_water_under_pressure(verify: Verify, temperature: float, volume: float) -> None:
     # IAPWS-IF97, table 5 (from memory): specific volume at 3 MPa; IAPWS-95 differs by a few 1e-5
     assert_allclose(1 / substance("water", temperature, 3e6).density, volume, rtol=3e-5)
+    verify(
+        what=f"Water at {temperature:g} K and 3 MPa: specific volume",
+        source="IAPWS-IF97, table 5",
+        memory=True,
+        expected=volume,
+        got=1 / substance("water", temperature, 3e6).density,
+        unit="m³/kg",
+        tolerance=3e-5,
+        relative=True,
+        why="IAPWS-95 is another formulation",
+        kind="property",
+    )
 
 
-def test_viscosity_of_water_at_the_published_point() -> None:
+def test_viscosity_of_water_at_the_published_point(verify: Verify) -> None:
     # IAPWS R12-08, table 4: 889.735100 µPa s at 298.15 K and 998 kg/m³, which is at 2.217134886 MPa
     found = substance("water", 298.15, 2217134.885868323)
     assert_allclose(found.density, 998, rtol=1e-12)
     assert found.viscosity is not None
     assert_allclose(found.viscosity, 889.735100e-6, rtol=1e-9)
+    verify(
+        what="Water at 298.15 K and 998 kg/m³: viscosity",
+        source="IAPWS R12-08, table 4",
+        expected=889.735100e-6,
+        got=found.viscosity,
+        unit="Pa s",
+        tolerance=1e-9,
+        relative=True,
+        why="printed with nine digits",
+        kind="property",
+    )
 
 
-def test_air_is_real_air_not_the_standard_atmosphere() -> None:
+def test_air_is_real_air_not_the_standard_atmosphere(verify: Verify) -> None:
     # ISO 2533 at sea level: 1.225 kg/m³ and 340.294 m/s, from the ideal gas with R = 287.05287 and ratio 1.4.
     # Real air (the library's) is 1.2255390214: near, and not to be mixed with it.
     found = substance("air", 288.15, ATMOSPHERE)
@@ -57,6 +111,39 @@ def test_air_is_real_air_not_the_standard_atmosphere() -> None:
     assert_allclose(found.viscosity, 1.7893802781e-5, rtol=5e-3)
     assert_allclose(found.gas_constant, 287.05287, rtol=2e-5)
     assert_allclose(found.ideal_heat_ratio, 1.4, rtol=3e-4)
+    verify(
+        what="Air at 288.15 K and 101325 Pa: density",
+        source="ISO 2533 (ideal gas): 1.225",
+        expected=1.225,
+        got=found.density,
+        unit="kg/m³",
+        tolerance=6e-4,
+        relative=True,
+        why="air is no ideal gas: 1.2255390",
+        kind="property",
+    )
+    verify(
+        what="Air at 288.15 K and 101325 Pa: speed of sound",
+        source="ISO 2533 (ideal gas)",
+        expected=340.29398803,
+        got=found.sound_speed,
+        unit="m/s",
+        tolerance=5e-4,
+        relative=True,
+        why="air is no ideal gas",
+        kind="property",
+    )
+    verify(
+        what="Air at 288.15 K: viscosity",
+        source="ISO 2533: 1.458e-6 T^1.5 / (T + 110.4)",
+        expected=1.7893802781e-5,
+        got=found.viscosity,
+        unit="Pa s",
+        tolerance=5e-3,
+        relative=True,
+        why="an older fit",
+        kind="property",
+    )
 
 
 @pytest.mark.parametrize(
@@ -64,18 +151,39 @@ def test_air_is_real_air_not_the_standard_atmosphere() -> None:
     # standard atomic weights (IUPAC 2021, abridged), g/mol
     [("water", 18.015), ("nitrogen", 28.014), ("methane", 16.043), ("helium", 4.0026), ("carbon dioxide", 44.009)],
 )
-def test_gas_constant_is_the_universal_one_over_the_molar_mass(name: str, molar_mass: float) -> None:
+def test_gas_constant_is_the_universal_one_over_the_molar_mass(verify: Verify, name: str, molar_mass: float) -> None:
     # the constant of the SI is 8.31446261815324; each equation of state keeps the one it was fitted with
     found = substance(name, 400.0, ATMOSPHERE)
     assert_allclose(found.gas_constant, 8.31446261815324 / (molar_mass * 1e-3), rtol=1e-4)
+    verify(
+        what=f"Gas constant of {name}",
+        source="8.31446261815324 J/(mol K) (SI 2019) over the molar mass (IUPAC 2021, abridged)",
+        memory=True,
+        expected=8.31446261815324 / (molar_mass * 1e-3),
+        got=found.gas_constant,
+        unit="J/(kg K)",
+        tolerance=1e-4,
+        relative=True,
+        why="abridged molar masses; each equation of state has a constant of its own",
+        kind="property",
+    )
 
 
 @pytest.mark.parametrize("name", ["argon", "helium", "neon", "krypton", "xenon"])
-def test_gases_of_single_atoms_have_five_thirds(name: str) -> None:
+def test_gases_of_single_atoms_have_five_thirds(verify: Verify, name: str) -> None:
     # kinetic theory: cp0 = 5/2 R
     found = substance(name, 350.0, ATMOSPHERE)
     assert_allclose(found.ideal_heat_ratio, 5 / 3, rtol=1e-9)
     assert found.state == "gas"
+    verify(
+        what=f"Ratio of heats of {name}",
+        source="kinetic theory: 5/3",
+        expected=5 / 3,
+        got=found.ideal_heat_ratio,
+        tolerance=2e-9,
+        why="the constants of the equation of state",
+        kind="property",
+    )
 
 
 @pytest.mark.parametrize("name", sorted(set(SUBSTANCES) - {"steam"}))

@@ -16,6 +16,7 @@ from fluxmesh.units import Measured, parse_quantity, parse_vector, unit_factor
 from fluxmesh.units.expression import parse_unit
 from fluxmesh.units.table import UNITS
 from fluxmesh.units.wording import described, nearest, quoted
+from tests.verification import Verify
 
 # A product of three or four rounded factors is good to a few units in the last place.
 ROUNDED = 1e-14
@@ -70,8 +71,19 @@ def test_the_table_agrees_with_pint(name):
         ("32.17404855643 lbm.ft/s2", "N", 4.4482216152605),
     ],
 )
-def test_values_of_nist_sp_811(text, unit, value):
+def test_values_of_nist_sp_811(verify: Verify, text, unit, value):
     assert_allclose(float(parse_quantity(text, unit, "k")), value, rtol=1e-12)  # the printed digits
+    verify(
+        what=f"{text} in {unit or 'no unit'}",
+        source="NIST Special Publication 811 (2008), appendix B",
+        expected=value,
+        got=float(parse_quantity(text, unit, "k")),
+        unit=unit,
+        tolerance=2e-12,
+        relative=True,
+        why="the printed digits",
+        kind="property",
+    )
 
 
 # worked by hand from the definitions of the units

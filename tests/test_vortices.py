@@ -15,6 +15,7 @@ from fluxmesh.balance.storage import Storage
 from tests.flows import ExactFlow
 from tests.measures import observed_order
 from tests.solids import Solid, box, mapped, pipe, prism, sphere, together, turned
+from tests.verification import Verify
 
 ANCHOR = np.array([0.3, -0.2, 0.5])
 SIZES = (4.0, 2.0, 1.0)
@@ -78,7 +79,7 @@ def taylor_green(density: float, kinematic: float, time: float, sign: float = 1.
 
 
 @pytest.mark.parametrize("time", [0.0, 0.7])
-def test_taylor_green_vortices_decay(time: float) -> None:
+def test_taylor_green_vortices_decay(verify: Verify, time: float) -> None:
     # u = sin x cos y e^(-2 nu t), v = -cos x sin y e^(-2 nu t), du/dt = -2 nu u,
     # p = +(rho/4)(cos 2x + cos 2y) e^(-4 nu t)
     density, kinematic = 1.3, 0.4
@@ -91,6 +92,18 @@ def test_taylor_green_vortices_decay(time: float) -> None:
         -2 * kinematic * density * np.exp(-2 * kinematic * time) * whole, rel=1e-12
     )
     assert_storage_is_what_is_missing(lambda n: box(low, high, n), flow, kept, below=2e-3)
+    found = balance(box(low, high, 24), flow, kept)
+    verify(
+        what=f"Taylor-Green vortices at t = {time:g} in a box, with storage: force and moment left, relative",
+        source="Taylor 1923; Taylor and Green 1937: nothing",
+        memory=True,
+        expected=(0, 0),
+        got=(found.momentum.relative(), found.angular.relative()),
+        tolerance=2e-3,
+        why="24 cells a side; second order is asserted beside",
+        kind="law",
+        law="momentum",
+    )
     # the pressure of the other phase, u = cos x sin y, has the other sign: here it does not close
     wrong = balance(box(low, high, 24), taylor_green(density, kinematic, time, -1.0), kept)
     assert wrong.momentum.relative() > 0.1
@@ -134,7 +147,7 @@ def test_lamb_oseen_vortex_diffuses() -> None:
     )
 
 
-def test_published_suction_in_the_core_of_a_lamb_oseen_vortex() -> None:
+def test_published_suction_in_the_core_of_a_lamb_oseen_vortex(verify: Verify) -> None:
     # rho Gamma² ln 2 / (4 pi² rc²), rc² = 4 nu t = 0.01, 1000 kg/m³, Gamma = 2: 7023.0492773 Pa, by two routes
     flow = lamb_oseen(1000.0, 0.0025, 1.0)
     errors = []
@@ -145,6 +158,19 @@ def test_published_suction_in_the_core_of_a_lamb_oseen_vortex() -> None:
         eye = balance_of(surface, flow.lay(surface)).balance.ports["outlet"]
         errors.append((eye.mean_pressure_area or 0) + 7023.0492773)
     assert_order_two(errors, below=40)
+    verify(
+        what="Lamb-Oseen vortex, 2 m²/s, core 0.1 m: suction in its eye",
+        source="Oseen 1911; Lamb, Hydrodynamics, section 334a: rho G² ln 2 / (4 pi² rc²)",
+        memory=True,
+        expected=-7023.0492773,
+        got=errors[-1] - 7023.0492773,
+        unit="Pa",
+        tolerance=40,
+        why="an eye of 0.01 m",
+        order=(observed_order(SIZES, errors), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
 
 
 # ---- a core that turns as a solid -----------------------------------------------------------
@@ -169,7 +195,7 @@ def rankine() -> ExactFlow:
     return ExactFlow(RHO, velocity, lambda x: rankine_pressure(x[..., 0] ** 2 + x[..., 1] ** 2))
 
 
-def test_published_suction_in_the_core_of_a_rankine_vortex() -> None:
+def test_published_suction_in_the_core_of_a_rankine_vortex(verify: Verify) -> None:
     # rho Gamma² / (4 pi² a²): 1000 kg/m³, 2 m²/s, 0.1 m: 10132.118364 Pa on the axis, half of it at the edge, so that
     # the mean over the end of the core is three quarters
     assert rankine_pressure(np.array([0.0, CORE**2]))[0] == pytest.approx(-10132.118364, rel=1e-10)
@@ -179,6 +205,19 @@ def test_published_suction_in_the_core_of_a_rankine_vortex() -> None:
         core = balance_of(surface, rankine().lay(surface)).balance.ports["outlet"]
         errors.append((core.mean_pressure_area or 0) + 0.75 * 10132.118364)
     assert_order_two(errors, below=20)
+    verify(
+        what="Rankine vortex, 2 m²/s, core 0.1 m: mean suction over the core",
+        source="Rankine 1858; Batchelor, section 7.1: 3/4 rho G² / (4 pi² a²)",
+        memory=True,
+        expected=-7599.088773,
+        got=errors[-1] - 7599.088773,
+        unit="Pa",
+        tolerance=20,
+        why="12 rings",
+        order=(observed_order(SIZES, errors), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )
 
 
 def half_vortex(cells: int) -> Solid:
@@ -237,7 +276,7 @@ def box_less_sphere(low: np.ndarray, high: np.ndarray, radius: float, accelerati
 
 
 @pytest.mark.parametrize("shape", ["sphere", "long box"])
-def test_added_mass_of_a_sphere_from_far_away(shape: str) -> None:
+def test_added_mass_of_a_sphere_from_far_away(verify: Verify, shape: str) -> None:
     # a sphere that starts from rest with the acceleration A drives phi_t = -a³ A·x / (2 r³), p = -rho phi_t: the fluid
     # resists with (2/3) pi rho a³ A (Batchelor section 6.8, from memory). Any surface round it must say the same from
     # its pressure and from what the fluid between gains: nothing in a spherical shell, a part of it in a long box.
@@ -262,3 +301,17 @@ def test_added_mass_of_a_sphere_from_far_away(shape: str) -> None:
     assert_order_two(demanded, below=0.02 * np.linalg.norm(exact))
     if shape == "long box":
         assert np.linalg.norm(gain) > 0.05 * np.linalg.norm(exact)
+    verify(
+        what=f"Sphere set in motion, seen through a {shape} round it, with storage: force",
+        source="Batchelor, section 6.8: -(2/3) pi rho a³ A",
+        memory=True,
+        expected=exact,
+        got=found.from_balance.force,
+        unit="N",
+        tolerance=0.02,
+        relative=True,
+        why="linear data on the finest of three meshes",
+        order=(observed_order(SIZES, demanded), 2, 0.12),
+        kind="law",
+        law="momentum",
+    )

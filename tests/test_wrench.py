@@ -8,11 +8,12 @@ from hypothesis import strategies as st
 from numpy.testing import assert_allclose
 
 from fluxmesh.balance.wrench import Wrench, central_axis, moved
+from tests.verification import Verify
 
 vectors = st.tuples(*[st.floats(-10, 10)] * 3).map(np.array)
 
 
-def test_central_axis_of_a_wrench() -> None:
+def test_central_axis_of_a_wrench(verify: Verify) -> None:
     # Poinsot 1803 (from memory): F = (3, -2, 6), M = (4, 5, -1): F·M = -4, |F| = 7, the axis passes F × M / 49
     axis = central_axis(Wrench(np.array([3.0, -2, 6]), np.array([4.0, 5, -1]), np.zeros(3)))
     assert_allclose(axis.point, [-0.57142857143, 0.55102040816, 0.46938775510], rtol=1e-10)
@@ -21,6 +22,16 @@ def test_central_axis_of_a_wrench() -> None:
     couple = central_axis(Wrench(np.zeros(3), np.array([0.0, -2, 0]), np.ones(3)))
     assert_allclose(couple.direction, [0, -1, 0], rtol=0, atol=0)
     assert couple.couple == 2.0
+    verify(
+        what="Central axis of F = (3, -2, 6), M = (4, 5, -1): point and couple",
+        source="Poinsot 1803: F × M / F² and F·M / F",
+        memory=True,
+        expected=(-0.57142857143, 0.55102040816, 0.46938775510, -0.57142857143),
+        got=(*axis.point, axis.couple),
+        tolerance=1e-10,
+        why="figures of 11 digits",
+        kind="wrench",
+    )
 
 
 @given(force=vectors, moment=vectors, at=vectors, to=vectors)
