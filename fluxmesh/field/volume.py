@@ -14,6 +14,7 @@ from fluxmesh.errors import FieldError
 from fluxmesh.field.volume_boxes import box_of, require_same_place, unit_that_fits
 from fluxmesh.field.volume_cells import Located, cell_points, locate, used_nodes
 from fluxmesh.field.volume_probe import farthest
+from fluxmesh.field.volume_sharp import sharpen as sharpened_values
 from fluxmesh.surface.readers.volume_grid import VolumeMesh
 
 __all__ = ["Sampled", "VolumeArray", "array_of", "sample_volume"]
@@ -42,6 +43,8 @@ class Sampled:
         How far that nearest point is, m; 0 in a cell.
     reach : float
         How far it was allowed to be, m.
+    sharpened : float or None
+        Share of the places at which values on nodes are sharpened; None where that was not asked for.
     """
 
     values: dict[str, NDArray[np.float64]]
@@ -49,6 +52,7 @@ class Sampled:
     exact: NDArray[np.bool_]
     distance: NDArray[np.float64]
     reach: float
+    sharpened: float | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -133,6 +137,7 @@ def sample_volume(
     reach: float | None = None,
     at: Mapping[str, str] | None = None,
     components: Mapping[str, tuple[int, ...]] | None = None,
+    sharpen: bool = False,
 ) -> Sampled:
     """Sample arrays of a volume mesh at places.
 
@@ -154,6 +159,9 @@ def sample_volume(
         Quantity -> "nodes" or "cells", where its name occurs on both.
     components : mapping of str to tuple of int, optional
         Quantity -> numbers of components it may have; any by default.
+    sharpen : bool, optional
+        Whether to take values to one order more than the cells have, by `fluxmesh.field.volume_sharp`; those of
+        node arrays in quadratic cells stay.
 
     Returns
     -------
@@ -204,19 +212,33 @@ def sample_volume(
     distance[outside] = np.linalg.norm(located.nearest[outside] * scale - places[outside], axis=1)
     _require_reached(volume, located, places, reach, scale, unit_that_fits(box, scale, surface))
     values: dict[str, NDArray[np.float64]] = {}
+    on_cells = [quantity for quantity, on in location.items() if on == "cells"]
+    if sharpen:
+        in_cells = [_joined(columns[quantity][1]).astype(np.float64) for quantity in on_cells]
+        in_cells = [table.reshape(table.shape[0], -1) for table in in_cells]
+        sharp = sharpened_values(
+            volume.grid,
+            np.concatenate([np.zeros((count, 0)), *tables], axis=1),
+            np.concatenate([np.zeros((int(volume.grid.GetNumberOfCells()), 0)), *in_cells], axis=1),
+            located,
+        )
+        share = float(np.count_nonzero(sharp.known)) / places.shape[0]
+        tables, there = [*tables, *in_cells], np.concatenate([sharp.on_nodes, sharp.on_cells], axis=1)
+    else:
+        share, there = None, located.values
     first = 0
-    for quantity, table in zip(on_nodes, tables):
-        taken = located.values[:, first : first + table.shape[1]]
+    for quantity, table in zip([*on_nodes, *on_cells], tables):
+        taken = there[:, first : first + table.shape[1]]
         first += table.shape[1]
         scalar = _joined(columns[quantity][1]).ndim == 1
         values[quantity] = np.ascontiguousarray(taken[:, 0] if scalar else taken)
     for quantity, (on, parts) in columns.items():
-        if on == "cells":
+        if quantity not in values:
             values[quantity] = _joined([part[located.cell] for part in parts]).astype(np.float64)
         _require_finite(values[quantity], quantity, names[quantity], on, places, where)
     rounded = _ROUNDED * max(float(np.abs(box).max()) * scale, float(np.abs(surface).max()))
     return Sampled(
-        {quantity: values[quantity] for quantity in names}, location, distance <= rounded, distance, float(reach)
+        {quantity: values[quantity] for quantity in names}, location, distance <= rounded, distance, float(reach), share
     )
 
 

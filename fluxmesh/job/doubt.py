@@ -26,12 +26,15 @@ from fluxmesh.assess.doubt.sampling import SampledErrors, sampling_contributions
 from fluxmesh.assess.doubt.told import DoubtOfFigures
 from fluxmesh.balance.balance import Balance
 from fluxmesh.case.model import Case
+from fluxmesh.errors import InputError
 from fluxmesh.field.field import Field
 from fluxmesh.field.flow import Flow, near_origin
 from fluxmesh.field.pressure import Head
 from fluxmesh.integral.layout import AT_FACE, AT_SAMPLE, PER_GROUP
 from fluxmesh.integral.table import IntegralTable
 from fluxmesh.job.doubtful import doubtful_inputs
+from fluxmesh.job.fluid import named_fluid
+from fluxmesh.job.laid import lay_sharpened
 from fluxmesh.job.outcome import Outcome
 
 __all__ = ["DoubtOfFigures", "doubt_of"]
@@ -100,7 +103,9 @@ def doubt_of(
     notes = list(found.notes)
     sharp, left = None, 1.0
     if sharpen:
-        flat, curved = (_as_supplied(_sharpened(outcome, flat, threads), case, model) for flat in (True, False))
+        finer, said = _finer(case, outcome)
+        notes += said
+        flat, curved = (_as_supplied(_sharpened(outcome, finer, flat, threads), case, model) for flat in (True, False))
 
         def figured(table: IntegralTable) -> Figures:
             return model.figures_of(table, _held(flow, table, balance, rows))
@@ -121,8 +126,8 @@ def doubt_of(
     if flow.sampling is not None:
         contributions += sampling_contributions(model, middle, _sampled(flow, balance, rows))
         notes.append(
-            "Sampled groups: the doubt holds how well points that are left out are predicted, or how far points lie "
-            "outside the volume; of the interpolation within cells of a volume it knows nothing"
+            "Sampled groups: the doubt holds how well points that are left out are predicted, or what the cells of the "
+            "volume leave between their nodes and how far points lie outside them"
         )
     contributions.append(round_off(middle, balance, digits=_digits(flow, outcome.surface.face_count)))
     drawn = model.draw(draws, seed=seed, answer=(middle, slope)) if draws and found.inputs else None
@@ -157,14 +162,28 @@ def _held(flow: Flow, table: IntegralTable, balance: Balance, rows: NDArray[np.i
     return float(table.total("density_area", known)) / float(table.total("area", known))
 
 
-def _sharpened(outcome: Outcome, flat: bool, threads: int | None) -> IntegralTable:
+def _finer(case: Case | None, outcome: Outcome) -> tuple[Flow, list[str]]:
+    """The flow with what is sampled from a volume taken to one order more than its cells have, and what that leaves."""
+    flow, told = outcome.flow, outcome.flow.sampling or {}
+    if case is None or outcome.shape is None or told.get("share_exact") is None:
+        return flow, []
+    try:
+        finer, share = lay_sharpened(named_fluid(case)[0], outcome.shape)
+    except InputError as error:
+        # the values in between may be no flow, where those of the file are
+        return flow, [f"The doubt is without that of interpolation in the cells of the volume: {error.found}"]
+    if share is not None and share < 1.0:
+        left = f"{1.0 - share:.2%} of the quadrature points lie in quadratic cells of the volume"
+        return finer, [f"{left}: of the interpolation within these the doubt knows nothing"]
+    return finer, []
+
+
+def _sharpened(outcome: Outcome, flow: Flow, flat: bool, threads: int | None) -> IntegralTable:
     """The sharpened table of the groups of the balance, on the facets or on the surface that they stand for."""
     from fluxmesh.field.patches import sharpened_table
 
     surface, balance = outcome.surface, outcome.balance
-    table = sharpened_table(
-        surface, outcome.flow, facets_are_geometry=flat, origin=near_origin(surface), threads=threads
-    )
+    table = sharpened_table(surface, flow, facets_are_geometry=flat, origin=near_origin(surface), threads=threads)
     if len(balance.setting.groups) == len(surface.groups):
         return table
     from fluxmesh.balance.mirror import whole_model

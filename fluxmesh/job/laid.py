@@ -25,7 +25,7 @@ from fluxmesh.job.shape import Shape
 from fluxmesh.job.supplied import shaped_groups, supply_flow, supply_values
 from fluxmesh.job.tractions import traction_of
 
-__all__ = ["frame_of", "lay_case", "lay_with_scalars"]
+__all__ = ["frame_of", "lay_case", "lay_sharpened", "lay_with_scalars"]
 
 
 def frame_of(case: Case) -> Frame | None:
@@ -96,6 +96,33 @@ def lay_with_scalars(case: Case, shape: Shape) -> tuple[Flow, Scalars]:
         return flow, scalars_of(case, shape, flow, sampled)
 
 
+def lay_sharpened(case: Case, shape: Shape) -> tuple[Flow, float | None]:
+    """Lay the flow data of a case that samples a volume, to one order more than the volume's cells have.
+
+    Parameters
+    ----------
+    case : Case
+        The case.
+    shape : Shape
+        Its surface and arrays.
+
+    Returns
+    -------
+    flow : Flow
+        As `lay_case`, of values from `fluxmesh.field.volume_sharp`.
+    share : float or None
+        Share of the quadrature points at which values on nodes are sharpened; None without a volume.
+
+    Raises
+    ------
+    InputError
+        Data that cannot be used; the message names them.
+    """
+    with _named(case):
+        flow, sampled = _lay(case, shape, sharpen=True)
+        return flow, None if sampled is None else sampled.sharpened
+
+
 @contextmanager
 def _named(case: Case) -> Iterator[None]:
     """Name the case in the errors of a piece of work."""
@@ -108,10 +135,10 @@ def _named(case: Case) -> Iterator[None]:
         raise type(error)(error.found, f"{name}: {error.where}" if error.where else name, error.remedy) from error
 
 
-def _lay(case: Case, shape: Shape) -> tuple[Flow, Sampled | None]:
+def _lay(case: Case, shape: Shape, *, sharpen: bool = False) -> tuple[Flow, Sampled | None]:
     surface = shape.surface
     samples = _samples(case, shape)
-    sampled = None if samples is None else sample_source(case, shape, samples)
+    sampled = None if samples is None else sample_source(case, shape, samples, sharpen=sharpen)
     flow = _fields(case, shape, samples, sampled)
     if sampled is not None:
         flow = replace(flow, notes=sampled.notes, sampling=sampled.data())

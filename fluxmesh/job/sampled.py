@@ -46,6 +46,9 @@ class Sampled:
         others, over the range of the quantity; empty for a volume.
     ending : tuple of str
         That the file may be cut short, where it may be.
+    sharpened : float or None
+        Share of the points at which values on nodes are sharpened; None where that was not asked for, or nothing
+        can be.
     """
 
     source: str
@@ -54,6 +57,7 @@ class Sampled:
     farthest: float
     leave_out: dict[str, float] = field(default_factory=dict)
     ending: tuple[str, ...] = ()
+    sharpened: float | None = None
 
     def data(self) -> dict[str, object]:
         """Return the same as plain data, for the result file."""
@@ -71,7 +75,8 @@ class Sampled:
             outside = (
                 "" if self.share_exact == 1.0 else f"; the others lie up to {length_text(self.farthest)} outside it"
             )
-            return (f"{self.share_exact:.2%} of the quadrature points lie inside the cells of {self.source}{outside}",)
+            inside = f"{self.share_exact:.2%} of the quadrature points lie inside the cells of {self.source}{outside}"
+            return (inside, *self.ending)
         told = ", ".join(f"{quantity} {error:.2%}" for quantity, error in self.leave_out.items())
         said = f"Interpolated from {self.source}; points left out are predicted to (of the range): {told}"
         return (said, *self.ending)
@@ -105,7 +110,7 @@ def carried_key(name: str) -> str:
     return f"carried {name}"
 
 
-def sample_source(case: Case, shape: Shape, samples: Samples) -> Sampled | None:
+def sample_source(case: Case, shape: Shape, samples: Samples, *, sharpen: bool = False) -> Sampled | None:
     """Sample the fields of a case, if they come from a volume or from points.
 
     Parameters
@@ -116,6 +121,8 @@ def sample_source(case: Case, shape: Shape, samples: Samples) -> Sampled | None:
         Its surface.
     samples : Samples
         Quadrature points of all groups.
+    sharpen : bool, optional
+        Whether to take the values of a volume to one order more than its cells have.
 
     Returns
     -------
@@ -136,7 +143,7 @@ def sample_source(case: Case, shape: Shape, samples: Samples) -> Sampled | None:
     reach = None if source.reach is None else float(source.reach)
     try:
         if isinstance(source, VolumeSource):
-            return _from_volume(source, places, names, samples, reach)
+            return _from_volume(source, places, names, samples, reach, sharpen)
         return _from_points(source, names, samples, reach)
     except InputError as error:
         key = "flow.volume" if isinstance(source, VolumeSource) else "flow.points"
@@ -152,19 +159,22 @@ def _from_volume(
     names: Mapping[str, tuple[str, ...]],
     samples: Samples,
     reach: float | None,
+    sharpen: bool,
 ) -> Sampled:
     from fluxmesh.field.volume import sample_volume
     from fluxmesh.surface.readers.volume_grid import read_volume
 
     at = {quantity: "cells" if place == "faces" else place for quantity, place in places.items()}
+    volume = read_volume(source.file)
     found = sample_volume(
-        read_volume(source.file),
+        volume,
         names,
         samples.places,
         scale=source.unit.factor,
         reach=reach,
         at=at,
         components={quantity: _COMPONENTS.get(quantity, (1,)) for quantity in names},
+        sharpen=sharpen,
     )
     inside = found.exact
     return Sampled(
@@ -172,6 +182,8 @@ def _from_volume(
         found.values,
         float(np.count_nonzero(inside)) / max(inside.size, 1),
         float(found.distance.max(initial=0.0)),
+        ending=volume.notes,
+        sharpened=found.sharpened,
     )
 
 
@@ -212,7 +224,7 @@ def _from_points(
         None,
         float(found.distance.max(initial=0.0)),
         {quantity: error.relative for quantity, error in found.leave_out.items()},
-        ending_notes(source.file) if source.file.suffix.lower() in _TEXT_TABLES else (),
+        ending_notes(source.file) if source.file.suffix.lower() in _TEXT_TABLES else cloud.notes,
     )
 
 
