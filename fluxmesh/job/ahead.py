@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import contextlib
 import sys
+import threading
+from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
 from typing import TYPE_CHECKING, Final
 
@@ -14,6 +17,7 @@ __all__ = ["load_ahead", "load_kernels"]
 
 # formats that VTK reads: no other package is imported on the way
 _LEAN: Final = {".vtp", ".vtu", ".vtk"}
+_PATIENCE: Final = 5.0  # s; kernels that are kept on disk load in less
 
 
 def load_kernels() -> None:
@@ -45,6 +49,22 @@ def _load_without_blas() -> None:
             del sys.modules["scipy.linalg"]
 
 
+@contextlib.contextmanager
+def _told_if_slow() -> Iterator[None]:
+    """Say on a terminal why a first run takes long."""
+    if sys.stderr is None or not sys.stderr.isatty():
+        yield
+        return
+    words = "fluxmesh: compiling its kernels, on the first run only: a minute or two ..."
+    timer = threading.Timer(_PATIENCE, print, [words], {"file": sys.stderr, "flush": True})
+    timer.daemon = True
+    timer.start()
+    try:
+        yield
+    finally:
+        timer.cancel()
+
+
 def load_ahead(case: Case) -> Loaded:
     """Read the mesh of a case, and load the kernels in the meantime.
 
@@ -68,7 +88,7 @@ def load_ahead(case: Case) -> Loaded:
     from fluxmesh.job.mesh import load_mesh
 
     files = [case.surface.file, *(case.surface.files or {}).values()]
-    with ThreadPoolExecutor(1) as pool:
+    with _told_if_slow(), ThreadPoolExecutor(1) as pool:
         reading = pool.submit(load_mesh, case)
         if all(file is None or file.suffix.lower() in _LEAN for file in files):
             _load_without_blas()
