@@ -27,8 +27,8 @@ def causes_data(found: CausesFound, *, title: str = "") -> dict[str, Any]:
     Returns
     -------
     dict
-        ``causes`` holds one entry each, best first: ``id`` (two ids joined by a plus sign for a pair, which also
-        stand in ``ids``), ``group``, ``residual_before``, ``residual_after``, ``statement``, ``fix``, ``score`` (minus
+        ``causes`` holds one entry each, best first: ``id`` (two or three at once joined by plus signs; each stands in
+        ``ids``), ``group``, ``residual_before``, ``residual_after``, ``statement``, ``fix``, ``score`` (minus
         the logarithm of how likely it is, of which only differences mean anything) and ``equally`` (what
         explains the residuals as well).
     """
@@ -54,6 +54,7 @@ def causes_data(found: CausesFound, *, title: str = "") -> dict[str, Any]:
         "tried": list(found.tried),
         "untried": list(found.untried),
         "pairs": found.pairs,
+        "threes": found.threes,
         "note": found.note,
     }
 
@@ -84,7 +85,12 @@ def print_causes(console: Console, found: CausesFound, *, title: str = "") -> No
         _print_cause(console, number, cause)
     if found.tried:
         console.print()
-        console.print(Text(f"Tried, alone and in {found.pairs} pairs: {', '.join(found.tried)}."))
+        together = (
+            f"alone, in {found.pairs} pairs and {found.threes} threes"
+            if found.threes
+            else (f"alone and in {found.pairs} pairs")
+        )
+        console.print(Text(f"Tried, {together}: {', '.join(found.tried)}."))
         if found.untried:
             console.print(Text(f"Cannot be told from these data: {', '.join(found.untried)}."))
     if found.causes:

@@ -161,7 +161,7 @@ def stacked(changes: Sequence[Change], groups: int) -> Knobs:
     )
 
 
-def paired(knobs: Knobs, first: NDArray[np.int64], second: NDArray[np.int64]) -> Knobs:
+def paired(knobs: Knobs, first: NDArray[np.int64], second: NDArray[np.int64], others: Knobs | None = None) -> Knobs:
     """Return pairs of changes that do not clash.
 
     Parameters
@@ -170,8 +170,10 @@ def paired(knobs: Knobs, first: NDArray[np.int64], second: NDArray[np.int64]) ->
         Single changes.
     first, second : ndarray, shape (m,), int64
         Which go together.
+    others : Knobs, optional
+        What `second` is taken from, where that is not `knobs`.
     """
-    one, two = knobs.rows(first), knobs.rows(second)
+    one, two = knobs.rows(first), (knobs if others is None else others).rows(second)
     return Knobs(
         one.scalars * two.scalars,
         one.powers + two.powers,

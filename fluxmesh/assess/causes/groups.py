@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from fluxmesh.assess.causes.change import Change, GroupFactor
 from fluxmesh.assess.causes.entries import HEAD, OWN, UNIT, Entries
+from fluxmesh.assess.causes.evidence import flux_odds, flux_over_velocity, speed_odds
 from fluxmesh.assess.causes.facts import Source
 from fluxmesh.assess.causes.residuals import Residuals
 from fluxmesh.assess.causes.suspect import COST, Suspect
@@ -56,6 +57,7 @@ def flipped_group(entries: Entries, now: Residuals) -> Iterator[Suspect]:
     del now
     names, setting = entries.names(), entries.balance.setting
     several = int(np.count_nonzero(np.abs(entries.viscous).sum(axis=1))) > 1
+    ratios = flux_over_velocity(entries)
     for k, source in enumerate(entries.facts.flow):
         name = names[k]
         if entries.mass[k] != 0.0 and source is not Source.CONTINUITY:
@@ -67,7 +69,7 @@ def flipped_group(entries: Entries, now: Residuals) -> Iterator[Suspect]:
                     Change(groups=(GroupFactor(k, mass=-1.0, flux=-1.0),)),
                     f"the mass flux of {name} counts the other way than the normal out of the fluid",
                     _turn_mass_flux(entries, name),
-                    COST["common"] + odds,
+                    COST["common"] + odds + flux_odds(ratios, k, -1.0),
                     group=k,
                 )
             else:
@@ -169,6 +171,15 @@ def _half_or_double(entries: Entries, k: int, source: Source, kind: str, factor:
     twice = factor < 1
     how = "counts twice" if twice else "counts by half"
     fix = f"check the flow of {name}"
+    cost = COST["uncommon"]
+    if source is Source.ARRAY:
+        cost = COST["rare"] + speed_odds(entries, k, factor)
+    elif source is Source.MASS_FLUX:
+        cost += flux_odds(flux_over_velocity(entries), k, factor)
+    elif entries.facts.exported().any() and not entries.open:
+        # a supplied flow does not depend on how often faces are counted, which beside would leave a surface open;
+        # where others are exported, what was supplied belongs more likely to another share of the model
+        cost = COST["rare"]
     if source is Source.MASS_FLUX:
         flux = factor
         reason = "its faces are in the export twice" if twice else "its faces lack half their flow"
@@ -182,7 +193,7 @@ def _half_or_double(entries: Entries, k: int, source: Source, kind: str, factor:
         Change(groups=(GroupFactor(k, mass=factor, flux=flux),)),
         f"the flow through {name} {how}",
         fix,
-        COST["uncommon" if source is not Source.ARRAY else "rare"] + _choice(entries),
+        cost + _choice(entries),
         group=k,
     )
 

@@ -10,13 +10,13 @@ from numpy.typing import NDArray
 
 from fluxmesh.assess.causes.change import Change
 from fluxmesh.assess.causes.entries import Entries
+from fluxmesh.assess.causes.evidence import STANDARD, gravity_odds
 from fluxmesh.assess.causes.residuals import Residuals
 from fluxmesh.assess.causes.suspect import COST, Suspect, lines
 from fluxmesh.field.pressure import Head
 
 __all__ = ["gravity_direction", "head_counted_twice", "head_removed"]
 
-_STANDARD: Final = 9.80665  # m/s², standard acceleration of free fall (ISO 80000-3)
 _SAME: Final = 0.03  # a fitted gravity must have the size of the one given
 _TILT: Final = 0.97  # cosine: a tilt of less than some 14 degrees is no slip
 _UNITS: Final = (("cm/s^2", 0.01), ("mm/s^2", 0.001), ("ft/s^2", 0.3048), ("in/s^2", 0.0254))
@@ -99,7 +99,7 @@ def gravity_direction(entries: Entries, now: Residuals) -> Iterator[Suspect]:
     if entries.held <= 0:
         return
     if size == 0.0:
-        for text, value in _axes(_STANDARD, np.zeros(3)):
+        for text, value in _axes(STANDARD, np.zeros(3)):
             yield _gravity(value, f"the fluid is pulled along {text}, and the case has no gravity", COST["uncommon"])
         return
     turned = (-gravity[0], -gravity[1], -gravity[2])
@@ -111,7 +111,9 @@ def gravity_direction(entries: Entries, now: Residuals) -> Iterator[Suspect]:
     for unit, factor in _UNITS:
         value = (factor * gravity[0], factor * gravity[1], factor * gravity[2])
         if 0.01 < factor * size < 100:
-            yield _gravity(value, f"gravity was given in {unit}, and read in m/s²", COST["uncommon"])
+            # a length unit may leave the very same: what gravity would be, and what it is, tells which is likelier
+            odds = gravity_odds(factor * size) - gravity_odds(size)
+            yield _gravity(value, f"gravity was given in {unit}, and read in m/s²", COST["uncommon"] + odds)
 
 
 def _turned(entries: Entries, gravity: NDArray[np.float64], size: float) -> Suspect:

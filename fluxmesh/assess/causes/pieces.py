@@ -1,4 +1,4 @@
-"""A surface whose area vectors do not add up to nothing: the flat piece that would close it."""
+"""A surface whose area vectors do not add up to nothing: the piece that would close it."""
 
 from __future__ import annotations
 
@@ -71,7 +71,8 @@ def missing_piece(entries: Entries, now: Residuals) -> Iterator[Suspect]:
     Yields
     ------
     Suspect
-        None where the area vectors add up to nothing, or no flat piece would close the surface.
+        None where the area vectors add up to nothing. Where no flat piece would close the surface, only the sum of
+        the missing area vectors is said.
     """
     del now
     if not entries.open or entries.balance.setting.frame is not None:
@@ -79,6 +80,7 @@ def missing_piece(entries: Entries, now: Residuals) -> Iterator[Suspect]:
     table = entries.balance.table
     found = closing_piece(table)
     if found is None:
+        yield from _bent_piece(entries)
         return
     vector, middle = found
     size = float(np.linalg.norm(vector))
@@ -132,6 +134,36 @@ def missing_piece(entries: Entries, now: Residuals) -> Iterator[Suspect]:
                 directions=directions,
                 entries=whole,
                 expected=expected,
+                alone=True,
+            )
+
+
+def _bent_piece(entries: Entries) -> Iterator[Suspect]:
+    """What is missing is not plane, or not one piece: only the sum of its area vectors is known."""
+    vector = -entries.area_vector.sum(axis=0)
+    whole = _with_piece(entries, vector, np.zeros(3))
+    about = entries.balance.table.origin - np.asarray(entries.balance.setting.anchor)
+    wrench = np.zeros((6, 10))
+    for k, axis in enumerate(np.eye(3)):
+        wrench[k, 1:] = np.concatenate([axis, np.cross(about, axis), np.zeros(3)])
+        wrench[3 + k, 4:] = np.concatenate([axis, axis])
+    mass = np.zeros((1, 10))
+    mass[0, 0] = 1.0
+    where = f"faces that are not one plane piece; their area vectors add up to ({_three(vector)}) m²"
+    for directions, said, cost in (
+        (np.concatenate([mass, wrench]), "through which the lacking mass passes", COST["common"]),
+        (wrench, "that nothing passes", COST["uncommon"]),
+    ):
+        if entries.laws.mass or not directions[0, 0]:
+            yield Suspect(
+                "missing-group",
+                Change(),
+                f"a group is missing {said}: {where}",
+                "export the faces that are missing, or name them in [groups.NAME] with a role and their data",
+                cost,
+                directions=directions,
+                entries=whole,
+                expected=_SEEN,
                 alone=True,
             )
 

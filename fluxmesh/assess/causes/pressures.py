@@ -3,20 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from typing import Final
 
 import numpy as np
 
 from fluxmesh.assess.causes.change import Change
 from fluxmesh.assess.causes.entries import Entries
+from fluxmesh.assess.causes.evidence import ATMOSPHERE
 from fluxmesh.assess.causes.residuals import Residuals
 from fluxmesh.assess.causes.suspect import COST, Suspect, lines
 from fluxmesh.assess.review.doubt import Setting
 from fluxmesh.field.pressure import PressureKind
 
 __all__ = ["absolute_pressure", "kinematic_pressure", "total_pressure"]
-
-_ATMOSPHERE: Final = 101325.0  # Pa; standard atmosphere (ISO 2533), where a case gives none
 
 
 def kinematic_pressure(entries: Entries, now: Residuals) -> Iterator[Suspect]:
@@ -87,7 +85,7 @@ def absolute_pressure(entries: Entries, now: Residuals) -> Iterator[Suspect]:
     """
     del now
     facts, setting = entries.facts, entries.balance.setting
-    ambient = _ATMOSPHERE if facts.ambient is None else facts.ambient
+    ambient = ATMOSPHERE if facts.ambient is None else facts.ambient
     exported = np.flatnonzero(facts.pressure_array & setting.data.pressure)
     if exported.size == entries.count:
         return  # a level cancels over the whole surface

@@ -14,30 +14,31 @@ from math import inf, log, sqrt
 from typing import Final
 
 import numpy as np
+from numpy.typing import NDArray
 
 from fluxmesh.assess.causes.change import Change, stacked
 from fluxmesh.assess.causes.entries import entries_of
+from fluxmesh.assess.causes.evidence import ATMOSPHERE
 from fluxmesh.assess.causes.facts import Facts, plain_facts
 from fluxmesh.assess.causes.registry import CAUSES, IDS
 from fluxmesh.assess.causes.residuals import Residuals, evaluate
 from fluxmesh.assess.causes.suspect import Cause, Suspect
+from fluxmesh.assess.causes.threes import three_at_once
 from fluxmesh.assess.causes.trial import Trial, measures, rms_of, trials
 from fluxmesh.balance.balance import Balance
 
 __all__ = ["CausesFound", "FoundCause", "find_causes"]
 
-_DECISIVE: Final = (
-    0.1,
-    0.02,
-)  # what is left of what there was, at most, under one cause and under two
+_DECISIVE: Final = (0.1, 0.02, 0.02)  # what is left of what there was, at most, under one cause, two and three
 _SHARE: Final = 0.5  # a cause that only halves what there was explains nothing, tolerance or not
 _BESIDE: Final = 0.3  # what is left, over the entry that a change of scale made to match, at most
-_NOISE: Final = 2e-4  # of the tolerance: below, residuals count as equal
+_NOISE: Final = 1e-3  # of the tolerance: below, residuals count as equal
 _TUNED: Final = 0.05  # of the tolerance: what fitted numbers, and pairs chosen among thousands, leave counts no less
 _EQUAL: Final = 1.5  # ratio of what is left, of causes that explain equally
 _FAR: Final = 15.0  # less likely than the best by this power of e: not worth saying
 _MOST: Final = 10
-_BOTH: Final = 2.0  # two slips at once, beyond what each assumes
+_BOTH: Final = 4.0  # two slips at once, beyond what each assumes: seldom made, and chosen among thousands of pairs
+_VACUUM: Final = 4.5  # that a pressure is below vacuum: the level of a gauge pressure may be any, but seldom is
 
 
 @dataclass(frozen=True)
@@ -47,7 +48,7 @@ class FoundCause:
     Attributes
     ----------
     ids : tuple of str
-        One, or two that go together.
+        One, or two or three that go together.
     groups : tuple of str
         Groups concerned, if any.
     residual_before, residual_after : float
@@ -98,8 +99,8 @@ class CausesFound:
         Ids of the causes that were tried.
     untried : tuple of str
         Ids of those that the data cannot tell.
-    pairs : int
-        Number of pairs that were tried.
+    pairs, threes : int
+        Number of pairs that were tried, and of threes, where no pair explained anything.
     note : str
         Why there is nothing to explain, or that nothing explains it; empty otherwise.
     """
@@ -110,6 +111,7 @@ class CausesFound:
     tried: tuple[str, ...] = ()
     untried: tuple[str, ...] = ()
     pairs: int = 0
+    threes: int = 0
     note: str = ""
 
     def residual_closes(self) -> bool:
@@ -122,6 +124,7 @@ class _Now:
     """How things stand, and by what a trial is judged."""
 
     left: Residuals
+    relative: tuple[float, float, float]
     measure: float
     strict: float
     rms: float
@@ -130,6 +133,7 @@ class _Now:
     floor: float
     tuned: float
     open: bool
+    vacuum: float
 
 
 def find_causes(
@@ -154,7 +158,7 @@ def find_causes(
     encloses_hardware : bool, optional
         For a surface without walls: whether a body may be inside.
     noise : float, optional
-        Relative residual that the data may leave at best; 2e-4 of the tolerance by default.
+        Relative residual that the data may leave at best; 1e-3 of the tolerance by default.
     causes : iterable of Cause, optional
         Which to try; all by default.
 
@@ -174,6 +178,7 @@ def find_causes(
         return CausesFound((), measure, tolerance, note="The balance closes: there is nothing to explain")
     now = _Now(
         left,
+        _three(left.relative(strict=True)[0]),
         measure,
         float(measures(left, laws, strict=True)[0]),
         float(rms_of(left, laws)[0]),
@@ -182,10 +187,15 @@ def find_causes(
         _NOISE * tolerance if noise is None else noise,
         _TUNED * tolerance if noise is None else max(noise, _TUNED * tolerance),
         entries.open,
+        -(ATMOSPHERE if known.ambient is None else known.ambient),
     )
     suspects = [suspect for cause in causes for suspect in cause(entries, left)]
     singles, pairs, count = trials(entries, suspects, keep=max(tolerance, _DECISIVE[1] * now.strict))
-    ranked = _ranked(singles, pairs, now, entries.names())
+    ranked, threes = _ranked(singles, pairs, now, entries.names()), 0
+    if not ranked and measure > tolerance:
+        # what is left must close, and be a small part of what there was: so many are tried
+        found, threes = three_at_once(entries, suspects, singles, keep=min(tolerance, _DECISIVE[2] * now.strict))
+        ranked = _ranked(singles, found, now, entries.names())
     tried = {suspect.id for suspect in suspects}
     note = "" if ranked else "None of the causes that were tried explains it"
     return CausesFound(
@@ -195,8 +205,13 @@ def find_causes(
         tuple(sorted(tried)),
         tuple(sorted(set(IDS) - tried)),
         count,
+        threes,
         note,
     )
+
+
+def _three(values: NDArray[np.float64]) -> tuple[float, float, float]:
+    return float(values[0]), float(values[1]), float(values[2])
 
 
 def _score(trial: Trial, now: _Now) -> float:
@@ -206,6 +221,8 @@ def _score(trial: Trial, now: _Now) -> float:
     count = trial.laws.count()
     # laws that it leaves unjudged are taken to close just so
     cost += (now.count - count) * log(now.tolerance)
+    if float(trial.left.lowest[0]) < now.vacuum <= float(now.left.lowest[0]):
+        cost += _VACUUM
     if expected:
         return count * log(max(trial.unfitted_rms, now.floor)) - expected + cost
     free = count - sum(suspect.fitted for suspect in trial.suspects)
@@ -240,23 +257,22 @@ def _matched(trial: Trial, suspect: Suspect, now: _Now) -> bool:
     ):
         return True
     entry = sum((after.nets[name][0] for name in suspect.balances), np.zeros(9))
-    relative = before.relative(strict=True)[0]
     judged = (trial.laws.linear, trial.laws.angular, trial.laws.angular)
     for k, block in enumerate((slice(0, 3), slice(3, 6), slice(6, 9))):
-        if judged[k] and relative[k] > now.tolerance / 2:
+        if judged[k] and now.relative[k] > now.tolerance / 2:
             size = float(np.linalg.norm(entry[block]))
             if float(np.linalg.norm(after.wrench[0, block])) < _BESIDE * size:
                 return True
     return False
 
 
-def _ranked(singles: list[Trial], pairs: list[Trial], now: _Now, names: tuple[str, ...]) -> list[FoundCause]:
+def _ranked(singles: list[Trial], together: list[Trial], now: _Now, names: tuple[str, ...]) -> list[FoundCause]:
     alone = {
         id(trial.suspects[0]): trial.unfitted_rms if trial.suspects[0].expected else trial.rms for trial in singles
     }
     nothing = now.count * log(max(now.rms, now.floor))
     found: list[tuple[float, Trial, FoundCause]] = []
-    for trial in [*singles, *pairs]:
+    for trial in [*singles, *together]:
         if not _explains(trial, now):
             continue
         if len(trial.suspects) > 1 and not _both_needed(trial, alone, now):
@@ -296,7 +312,7 @@ def _ranked(singles: list[Trial], pairs: list[Trial], now: _Now, names: tuple[st
 
 
 def _both_needed(trial: Trial, alone: dict[int, float], now: _Now) -> bool:
-    """Whether each of a pair is needed: what is left is well below what either leaves alone."""
+    """Whether each of a few is needed: what is left is well below what any leaves alone."""
     least = min(alone[id(suspect)] for suspect in trial.suspects if not suspect.expected)
     if any(suspect.expected for suspect in trial.suspects):
         # what is expected explains what the other leaves, where that does not close by itself

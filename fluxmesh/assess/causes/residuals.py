@@ -19,8 +19,6 @@ Array = NDArray[np.float64]
 
 _SMALLEST_SHARE: Final = 1e-4  # as the verdict has it: forces count against this share of pressure times area at least
 _ROUNDING: Final = 1e-9  # of pressure times area: what sums of a high level may lose in single precision, cancelled
-_LINEAR, _ANCHOR, _ORIGIN = slice(0, 3), slice(3, 6), slice(6, 9)
-_BLOCKS: Final = (_LINEAR, _ANCHOR, _ORIGIN)
 
 
 @dataclass(frozen=True, eq=False)
@@ -39,11 +37,14 @@ class Residuals:
         What the three parts of `wrench` are measured by: as the verdict does, and with the mean
         pressure taken off, which a high level of pressure cannot make large.
     nets : dict of str to ndarray, shape (n, 9)
-        Flux, pressure, viscous force, and weight with the head that was put back, summed over the surface.
+        Flux, pressure, viscous force, and weight with the head that was put back, summed over the surface. A dynamic
+        pressure that was taken off or added counts with the flux: it goes as the flux does.
     gap : ndarray, shape (n,), float64
         Length of the sum of area vectors over the area.
     dynamic : ndarray, shape (n,), float64
         Dynamic pressure integrated over the area, N.
+    lowest : ndarray, shape (n,), float64
+        Least mean pressure of a group that has one, Pa; zero without any.
     """
 
     mass: Array
@@ -54,6 +55,7 @@ class Residuals:
     nets: dict[str, Array]
     gap: Array
     dynamic: Array
+    lowest: Array
 
     def mass_relative(self) -> Array:
         """Return the mass residual over the flows, shape (n,)."""
@@ -61,8 +63,7 @@ class Residuals:
 
     def relative(self, *, strict: bool = False) -> Array:
         """Return the length of each momentum residual over its size, shape (n, 3)."""
-        lengths = np.stack([np.linalg.norm(self.wrench[:, block], axis=1) for block in _BLOCKS], axis=1)
-        return np.asarray(lengths / (self.strict if strict else self.sizes))
+        return np.asarray(_lengths(self.wrench[:, None]) / (self.strict if strict else self.sizes))
 
     def plus(self, mass: Array, wrench: Array) -> Residuals:
         """Return the residuals with something added to them; sizes stay.
@@ -137,8 +138,11 @@ def evaluate(entries: Entries, knobs: Knobs) -> Residuals:
     flux = (flux_factor[:, :, None] * entries.flux + mass_factor[:, :, None] * entries.swept) * arm[:, None]
     drift = mass_factor[:, :, None] * entries.drift * arm[:, None]
     pressure, restored, unit, swift = _pressure(entries, knobs, velocity, areal)
+    dynamic = np.einsum("ng,gc->nc", _dynamic(entries, knobs, velocity) * areal * factors[:, 2],
+                        entries.pressure[:, DYNAMIC, :9]) * arm  # fmt: skip
     spread_pressure, spread_unit = pressure[:, :, 9], unit[:, :, 9]
-    acting = np.abs(spread_pressure + restored[:, :, 9]).sum(axis=1) + swift
+    whole_pressure = spread_pressure + restored[:, :, 9]
+    acting = np.abs(whole_pressure).sum(axis=1) + swift
     # the strict size counts neither a level nor a restored head, which the weight takes up whatever it is
     mean = spread_pressure.sum(axis=1) / np.maximum(np.abs(spread_unit).sum(axis=1), 1e-300)
     uneven = (pressure - mean[:, None, None] * unit)[:, :, :9] * arm[:, None]
@@ -165,6 +169,7 @@ def evaluate(entries: Entries, knobs: Knobs) -> Residuals:
     least_strict = _SMALLEST_SHARE * (swings + swift) + _ROUNDING * acting
     radius = np.sqrt(whole / (4 * np.pi))
     vectors = np.einsum("ng,gk->nk", factors[:, 4], entries.area_vector)
+    known = entries.balance.setting.data.pressure & (spread_unit > 0)
     return Residuals(
         mass=mass.sum(axis=1) + stored_mass,
         wrench=wrench,
@@ -172,13 +177,14 @@ def evaluate(entries: Entries, knobs: Knobs) -> Residuals:
         sizes=_floored(ordinary, least, radius),
         strict=_floored(strict, least_strict, radius),
         nets={
-            "flux": (flux + drift).sum(axis=1) + stored,
-            "pressure": pressure.sum(axis=1),
+            "flux": (flux + drift).sum(axis=1) + stored + dynamic,
+            "pressure": pressure.sum(axis=1) - dynamic,
             "viscous": viscous.sum(axis=1),
             "weight": body,
         },
         gap=np.linalg.norm(vectors, axis=1) / max(float(entries.area.sum()), 1e-300),
         dynamic=swift / 2,
+        lowest=np.min(np.where(known, whole_pressure, 0.0) / np.where(known, spread_unit, 1.0), axis=1, initial=0.0),
     )
 
 
@@ -218,7 +224,7 @@ def _pressure(entries: Entries, knobs: Knobs, velocity: Array, areal: Array) -> 
     weights = np.zeros((len(knobs), entries.count, 6))
     weights[:, :, OWN] = np.where(exported, own, 1.0)
     weights[:, :, UNIT] = knobs.levels
-    weights[:, :, DYNAMIC] = np.where(exported, knobs.powers[:, 2:3], 0.0) * density[:, None] * velocity**2
+    weights[:, :, DYNAMIC] = _dynamic(entries, knobs, velocity)
     restored = np.zeros((len(knobs), entries.count, 6))
     restored[:, :, UNIT] = np.where(exported, np.einsum("nk,nk->n", slope, offset)[:, None], 0.0)
     restored[:, :, HEAD : HEAD + 3] = np.where(exported[:, None], (slope * length[:, None])[:, None], 0.0)
@@ -231,9 +237,17 @@ def _pressure(entries: Entries, knobs: Knobs, velocity: Array, areal: Array) -> 
     return made, head, unit, 2 * np.abs(swift).sum(axis=1)
 
 
+def _dynamic(entries: Entries, knobs: Knobs, velocity: Array) -> Array:
+    """Factors on the dynamic pressure of each group that is added to the exported one, shape (n, n_groups)."""
+    exported = entries.facts.pressure_array
+    added = np.where(exported, knobs.powers[:, 2:3], 0.0) * knobs.scalars[:, :1]
+    return np.asarray(added * velocity**2)
+
+
 def _lengths(rows: Array) -> Array:
     """Sum over groups of the lengths of the three parts, shape (n, 3)."""
-    return np.stack([np.linalg.norm(rows[:, :, block], axis=2).sum(axis=1) for block in _BLOCKS], axis=1)
+    blocks = rows.reshape(*rows.shape[:2], 3, 3)
+    return np.asarray(np.sqrt(np.einsum("ngbk,ngbk->ngb", blocks, blocks)).sum(axis=1))
 
 
 def _floored(sizes: Array, least: Array, radius: Array) -> Array:

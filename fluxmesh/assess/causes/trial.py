@@ -1,4 +1,4 @@
-"""What is left under suspects, alone and in pairs: changes applied, free numbers fitted, all at once."""
+"""What is left under suspects, alone or together: changes applied, free numbers fitted, all at once."""
 
 from __future__ import annotations
 
@@ -14,7 +14,7 @@ from fluxmesh.assess.causes.entries import Entries, Laws
 from fluxmesh.assess.causes.residuals import Residuals, evaluate
 from fluxmesh.assess.causes.suspect import Suspect
 
-__all__ = ["Trial", "measures", "rms_of", "trials"]
+__all__ = ["Trial", "attempt", "measures", "rms_of", "trials"]
 
 Array = NDArray[np.float64]
 
@@ -25,12 +25,12 @@ _CHUNK: Final = 4096
 
 @dataclass(frozen=True, eq=False)
 class Trial:
-    """What is left under one suspect, or two together.
+    """What is left under one suspect, or a few together.
 
     Attributes
     ----------
     suspects : tuple of Suspect
-        One or two.
+        One, two or three.
     laws : Laws
         Which are judged.
     rms : float
@@ -166,11 +166,24 @@ def _row(left: Residuals, k: int) -> Residuals:
         {name: net[one] for name, net in left.nets.items()},
         left.gap[one],
         left.dynamic[one],
+        left.lowest[one],
     )
 
 
-def _try(entries: Entries, members: Sequence[tuple[Suspect, ...]], knobs: Knobs, keep: float) -> list[Trial]:
-    """Try hypotheses that fit the same things; those that leave more than `keep` are dropped."""
+def attempt(entries: Entries, members: Sequence[tuple[Suspect, ...]], knobs: Knobs, keep: float) -> list[Trial]:
+    """Try hypotheses that fit the same things, side by side.
+
+    Parameters
+    ----------
+    entries : Entries
+        The laws.
+    members : sequence of tuple of Suspect
+        What is suspected together.
+    knobs : Knobs
+        What undoes each.
+    keep : float
+        Those that leave a larger relative residual are dropped.
+    """
     laws = _laws(entries.laws, members[0])
     factors = np.zeros((len(members), 0))
     if any(suspect.fits_density for suspect in members[0]):
@@ -250,13 +263,13 @@ def trials(entries: Entries, suspects: Sequence[Suspect], *, keep: float) -> tup
         for start in range(0, rows.size, _CHUNK):
             some = rows[start : start + _CHUNK]
             members = [(suspects[plain[i]], suspects[plain[j]]) for i, j in zip(first[some], second[some])]
-            pairs += _try(entries, members, paired(knobs, first[some], second[some]), keep)
+            pairs += attempt(entries, members, paired(knobs, first[some], second[some]), keep)
     for other in suspects:
         if other.entries is not None and not other.alone:
             members = [(other, suspects[k]) for i, k in enumerate(plain) if not free[i] and ids[i] != other.id]
             some = np.array([i for i, k in enumerate(plain) if not free[i] and ids[i] != other.id], dtype=np.int64)
             count += len(members)
-            pairs += _try(other.entries, members, knobs.rows(some), keep)
+            pairs += attempt(other.entries, members, knobs.rows(some), keep)
     return singles, pairs, count
 
 
@@ -273,5 +286,5 @@ def _singles(entries: Entries, suspects: Sequence[Suspect]) -> list[Trial]:
     for batch in [*(batch for batch in batches if batch), *([suspect] for suspect in alone)]:
         there = entries if batch[0].entries is None else batch[0].entries
         changes = stacked([suspect.change for suspect in batch], there.count)
-        made += _try(there, [(suspect,) for suspect in batch], changes, np.inf)
+        made += attempt(there, [(suspect,) for suspect in batch], changes, np.inf)
     return made
