@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import json
+from pathlib import Path
+
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
@@ -10,10 +13,13 @@ from fluxmesh import Outcome
 from fluxmesh.assess.causes import facts_of
 from fluxmesh.assess.causes.entries import Entries, entries_of
 from fluxmesh.assess.causes.evidence import flux_odds, flux_over_velocity, gravity_odds, speed_odds
+from fluxmesh.case.read import read_case
 from fluxmesh.integral.table import BASIS
+from fluxmesh.job.causes import causes_of_case
 from tests.cause_flows import sounds
 from tests.cause_plants import TWIN_FLOWS, TWIN_OF, twins
 from tests.cause_slips import PLANTS, mass_flux
+from tests.planting import ROOT
 
 
 def _entries(done: Outcome) -> Entries:
@@ -115,3 +121,28 @@ def test_a_total_pressure_that_is_even_does_not_bear_out_another_density() -> No
     found = PLANTS["density by half"][1](sounds()["beltrami"]).causes()
     assert found.causes[0].id == "density"
     assert {"total-as-static", "density"} not in [set(cause.ids) for cause in found.causes]
+
+
+def test_an_open_piece_without_ports_has_no_cause(tmp_path: Path) -> None:
+    case = tmp_path / "wall.toml"
+    case.write_text(
+        f"""
+[surface]
+file = {json.dumps(str(ROOT / "meshes" / "cylinder" / "wall.vtp"))}
+closed = false
+[fluid]
+density = 1.0
+gravity = [0, 0, -9.80665]
+[flow]
+pressure = {{ array = "pressure" }}
+traction = {{ array = "wall_traction", acts_on = "wall" }}
+[groups.skin]
+role = "wall"
+rest = true
+""",
+        encoding="utf-8",
+    )
+    found = causes_of_case(read_case(case))
+    assert found.causes == ()
+    assert found.residual is None
+    assert "without ports" in found.note

@@ -172,6 +172,8 @@ def find_causes(
     laws = entries.laws
     if laws.count() == 0:
         return CausesFound((), None, tolerance, note="No law can be judged, so there is nothing to explain")
+    if not balance.setting.closed and not balance.setting.ports().any():
+        return CausesFound((), None, tolerance, note="An open piece without ports: there is nothing to balance")
     left = evaluate(entries, stacked([Change()], entries.count))
     measure = float(measures(left, laws)[0])
     if measure <= tolerance and not entries.open:
