@@ -5,6 +5,7 @@ from __future__ import annotations
 import contextlib
 import gc
 import io
+import logging
 import os
 import signal
 import sys
@@ -33,9 +34,11 @@ CaseFile = Annotated[Path, typer.Argument(metavar="CASE", help="Case file (TOML)
 def _console(stderr: bool = False) -> Any:
     from rich.console import Console
 
+    from fluxmesh.report.plain import Plain
+
     stream = sys.stderr if stderr else sys.stdout
     # a pipe has no width: use one that holds the tables
-    return Console(file=stream, width=None if stream.isatty() else 120, highlight=False, soft_wrap=False)
+    return Console(file=Plain(stream), width=None if stream.isatty() else 120, highlight=False, soft_wrap=False)
 
 
 @app.command(epilog="Example: fluxmesh balance meshes/manifold/manifold_fine.toml --out results/manifold")
@@ -70,8 +73,8 @@ def balance(
     loaded = load_ahead(read)
 
     from fluxmesh.job.run import REVIEWED_FACES, run_case
-    from fluxmesh.report.result import write_json
-    from fluxmesh.report.whole import require_writable
+    from fluxmesh.report.result import json_bytes
+    from fluxmesh.report.whole import require_writable, write_together
 
     folder = out or Path("results") / read.name
     require_writable(folder)
@@ -85,11 +88,10 @@ def balance(
         from fluxmesh.job.doubted import with_budget
 
         done = with_budget(read, done, draws=draws, seed=seed)
-    data = done.data()
-    for old in ("vectors.png", "pressure.png", "report.html"):
-        # pictures of an earlier run would not belong to the figures beside them
-        (folder / old).unlink(missing_ok=True)
-    write_json(data, folder / "balance.json")
+    # pictures of an earlier run would not belong to the figures beside them
+    earlier = [folder / name for name in ("vectors.png", "pressure.png", "report.html")]
+    path = folder / "balance.json"
+    write_together({path: json_bytes(done.data(), str(path))}, earlier)
     _print(done)
     typer.echo(f"\nWritten: {folder / 'balance.json'}")
     if pictures:
@@ -105,19 +107,18 @@ def _balance_series(case: Any, folder: Path, pictures: bool, units: str) -> int:
     from fluxmesh.job.run import REVIEWED_FACES
     from fluxmesh.job.series import run_series
     from fluxmesh.report.picture_series import draw_series
-    from fluxmesh.report.result import write_json
+    from fluxmesh.report.result import json_bytes
     from fluxmesh.report.series import print_series
-    from fluxmesh.report.whole import require_writable
+    from fluxmesh.report.whole import require_writable, write_together
 
     require_writable(folder)
     done = run_series(case, progress=_instants_done if sys.stderr.isatty() else None)
     at, largest = governing_instant(case, done)
     if largest.surface.face_count <= REVIEWED_FACES:
         largest = with_budget(at, with_doubts(at, largest))
-    for old in ("vectors.png", "pressure.png", "series.png", "report.html"):
-        (folder / old).unlink(missing_ok=True)
-    write_json(done.data(), folder / "series.json")
-    write_json(largest.data(), folder / "balance.json")
+    earlier = [folder / name for name in ("vectors.png", "pressure.png", "series.png", "report.html")]
+    results = {"series.json": done.data(), "balance.json": largest.data()}
+    write_together({folder / name: json_bytes(data, name) for name, data in results.items()}, earlier)
     _print(largest)
     typer.echo("")
     print_series(
@@ -368,6 +369,8 @@ def main() -> None:
     # what libraries warn of (an overflow in damaged input, say) comes back as an error of ours where it matters
     warnings.simplefilter("ignore")
     warnings.simplefilter("once", FluxmeshWarning)
+    # and what they log, some with a traceback, is not for the terminal
+    logging.getLogger().addHandler(logging.NullHandler())
     warnings.formatwarning = lambda message, *_args, **_options: f"fluxmesh: {message}\n"
     if sys.stdout is None:  # closed by whoever called us
         sys.stdout = open(os.devnull, "w", encoding="utf-8")  # noqa: SIM115

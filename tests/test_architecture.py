@@ -25,6 +25,7 @@ LAYERS = {
     "errors": 0,
     "units": 1,
     "compiling": 1,
+    "guarded": 1,
     "integral": 2,
     "surface": 2,
     "field": 3,

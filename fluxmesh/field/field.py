@@ -12,6 +12,7 @@ from numpy.typing import ArrayLike, NDArray
 from fluxmesh.errors import FieldError
 from fluxmesh.integral.layout import ABSENT, AT_FACE, AT_NODE, PER_GROUP, FieldArrays
 from fluxmesh.surface.surface import ControlSurface
+from fluxmesh.units import LARGEST
 
 __all__ = [
     "Field",
@@ -241,7 +242,7 @@ def _faces_at(surface: ControlSurface, index: int, at: int) -> int:
 
 
 def require_finite(surface: ControlSurface, field: Field) -> None:
-    """Raise if a value that is used is not finite.
+    """Raise if a value that is used is not finite, or larger than any flow has.
 
     Parameters
     ----------
@@ -256,12 +257,16 @@ def require_finite(surface: ControlSurface, field: Field) -> None:
         Says how many values, and where the first is.
     """
     bad: dict[int, NDArray[np.bool_]] = {}
+    large: dict[int, NDArray[np.bool_]] = {}
+    most = LARGEST / abs(field.scale) if field.scale else LARGEST
     for at, values in ((AT_NODE, field.node), (AT_FACE, field.face)):
-        # A finite sum means that every term is finite; only then is the slow look needed.
-        if values.size and (field.where == at).any() and not np.isfinite(values.sum()):
-            finite = np.isfinite(values)
+        # NaN comes out of both: only where they are not within bounds is the slow look needed
+        if values.size and (field.where == at).any() and not (values.max() <= most and values.min() >= -most):
+            finite, small = np.isfinite(values), np.abs(values) <= most
             bad[at] = np.logical_not(finite if finite.ndim == 1 else finite.all(axis=1))
+            large[at] = np.logical_not(small if small.ndim == 1 else small.all(axis=1))
     _complain(surface, field, bad, "are not finite", "Export the field again, without NaN or infinity")
+    _complain(surface, field, large, f"are beyond {LARGEST:g} in SI", "Check the unit; or the file is damaged")
 
 
 def require_positive(surface: ControlSurface, field: Field) -> None:

@@ -27,6 +27,7 @@ from fluxmesh.integral.samples import sample_places
 from fluxmesh.integral.table import IntegralTable
 from fluxmesh.surface.extent import used_box
 from fluxmesh.surface.surface import ControlSurface, Role
+from fluxmesh.units import LARGEST
 
 __all__ = [
     "Flow",
@@ -282,6 +283,9 @@ def _require_samples(surface: ControlSurface, flow: Flow, each: Field, *, positi
     values = each.sample.reshape(used.size, -1)
     bad = used & ~np.isfinite(values).all(axis=1)
     what = "are not finite"
+    if not bad.any() and values.size and (np.abs(values * each.scale) > LARGEST).any():
+        bad = used & ~(np.abs(values * each.scale) <= LARGEST).all(axis=1)
+        what = f"are beyond {LARGEST:g} in SI"
     if positive and not bad.any():
         bad = used & ~(values * each.scale > 0).all(axis=1)
         what = "are zero or negative"

@@ -50,6 +50,8 @@ class PointCloud:
         Names of the coordinates in the file.
     faults : dict of str to str
         Why each other column cannot be used.
+    notes : tuple of str
+        What to say of the file: that it may be cut within its last number.
     """
 
     source: str
@@ -58,6 +60,7 @@ class PointCloud:
     units: dict[str, str] = field(default_factory=dict)
     coordinates: tuple[str, str, str] = _AXES
     faults: dict[str, str] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
 
     def column(self, name: str) -> NDArray[np.float64]:
         """Return one column.
@@ -236,7 +239,7 @@ def _from_arrays(found: PointArrays, where: str) -> PointCloud:
         raise FieldError(
             "its points carry no arrays", where, f"Note that {found.hint}" if found.hint else "Export some"
         )
-    return PointCloud(where, found.places, columns, faults=faults)
+    return PointCloud(where, found.places, columns, faults=faults, notes=found.notes)
 
 
 def _require_space(places: NDArray[np.float64], where: str) -> None:

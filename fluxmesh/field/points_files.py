@@ -10,12 +10,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fluxmesh.errors import FileError
+from fluxmesh.guarded import reading
 from fluxmesh.surface.readers.ply import _header as ply_header
 from fluxmesh.surface.readers.ply import _read_element as read_ply_element
 from fluxmesh.surface.readers.vtk_dataset import plain_text
-from fluxmesh.surface.readers.vtk_legacy import check_vtk_legacy
+from fluxmesh.surface.readers.vtk_guard import try_reader
+from fluxmesh.surface.readers.vtk_legacy import check_vtk_legacy, legacy_holds_polyhedra
 from fluxmesh.surface.readers.vtk_messages import captured_messages
-from fluxmesh.surface.readers.vtk_xml import check_vtk_xml
+from fluxmesh.surface.readers.vtk_xml import check_vtk_xml, holds_polyhedra
 
 __all__ = ["PointArrays", "read_ply_points", "read_vtk_points"]
 
@@ -34,11 +36,14 @@ class PointArrays:
         In the file's units, of any type.
     hint : str
         What else the file holds that may have been meant; "" for nothing.
+    notes : tuple of str
+        What to say of the file: that it may be cut within its last number.
     """
 
     places: NDArray[np.float64]
     arrays: dict[str, NDArray[Any]]
     hint: str = ""
+    notes: tuple[str, ...] = ()
 
 
 def read_vtk_points(path: Path) -> PointArrays:
@@ -61,8 +66,15 @@ def read_vtk_points(path: Path) -> PointArrays:
     FieldError
         An array has the wrong length.
     """
-    reader = _legacy_reader(path) if path.suffix.lower() == ".vtk" else _xml_reader(path)
-    with captured_messages() as log:
+    notes: tuple[str, ...] = ()
+    if path.suffix.lower() == ".vtk":
+        notes = check_vtk_legacy(path)
+        reader, doubtful = _legacy_reader(), legacy_holds_polyhedra(path)
+    else:
+        reader, doubtful = _xml_reader(path), holds_polyhedra(path)
+    if doubtful:
+        try_reader(reader, path)
+    with reading(path), captured_messages() as log:
         reader.SetFileName(str(path))
         reader.Update()
         output = reader.GetOutputDataObject(0)
@@ -90,7 +102,7 @@ def read_vtk_points(path: Path) -> PointArrays:
     cells = output.GetCellData()
     on_cells = [plain_text(cells.GetArrayName(index) or "") for index in range(cells.GetNumberOfArrays())]
     hint = f"its cells carry {', '.join(on_cells)}: read it as a volume instead" if on_cells else ""
-    return PointArrays(places, arrays, hint)
+    return PointArrays(places, arrays, hint, notes)
 
 
 def _xml_reader(path: Path) -> Any:
@@ -103,8 +115,7 @@ def _xml_reader(path: Path) -> Any:
     return readers[kind]()
 
 
-def _legacy_reader(path: Path) -> Any:
-    check_vtk_legacy(path)
+def _legacy_reader() -> Any:
     from vtkmodules.vtkIOLegacy import vtkGenericDataObjectReader
 
     reader = vtkGenericDataObjectReader()

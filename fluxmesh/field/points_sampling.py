@@ -19,6 +19,7 @@ _FEWEST, _MOST = 100, 5000
 _SEED = 20_117
 _FEWEST_SPACINGS, _SPECK = 3.0, 10.0
 # single precision, in which most exports are written
+_ONE_PLACE = 2.0**-50  # of the extent
 _SAME = 1e-6
 
 
@@ -256,8 +257,11 @@ def distinct_points(
         Points at one place differ by more than 1e-6 of the range of a
         quantity: how many, where, and by what.
     """
-    order = np.lexsort(places.T)
-    ordered = places[order]
+    # what differs by rounding of the whole extent is one place: the square of its distance may be zero
+    step = _ONE_PLACE * float(np.ptp(places, axis=0).max(initial=0.0)) if places.size else 0.0
+    marks = np.rint((places - places.min(axis=0)) / step) if step > 0.0 else places
+    order = np.lexsort(marks.T)
+    ordered = marks[order]
     opens = np.ones(order.size, np.bool_)
     opens[1:] = (ordered[1:] != ordered[:-1]).any(axis=1)
     if opens.all():

@@ -144,7 +144,9 @@ def recover(
     if columns.node.size:
         position = np.ascontiguousarray(surface.points[halves.place[first]])
         normal = np.ascontiguousarray(shape.normal[shape.sector[first]])
-        wanted = chosen[halves.face[first]] & (columns.where == AT_NODE).any(axis=1)[group[first]]
+        # of any face of a sector: its first may be one that stays as it is
+        wanted = np.zeros(count, np.bool_)
+        wanted[sector[chosen[halves.face] & (columns.where == AT_NODE).any(axis=1)[group]]] = True
         values = _sector_values(columns.node, halves.point, halves.place, sector, first)
         node = _fitted(fit_sectors, (*mesh, position, normal, wanted, values, spatial), threads)
     if columns.face.size:

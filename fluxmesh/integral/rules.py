@@ -55,12 +55,13 @@ def collapsed_triangle(count: int) -> tuple[NDArray[np.float64], NDArray[np.floa
     Notes
     -----
     Stroud 1971, Approximate Calculation of Multiple Integrals, conical product
-    (formula from memory), with Gauss-Legendre points in both directions.
+    (formula from memory), with Gauss-Legendre points in both directions. It is collapsed to
+    the first corner: a face that is turned keeps that, and so its points.
     """
     nodes, weights = np.polynomial.legendre.leggauss(count)
     s, w = (nodes + 1) / 2, weights / 2
     u, v = np.meshgrid(s, s, indexing="ij")
-    points = np.column_stack([u.ravel(), (v * (1 - u)).ravel()])
+    points = np.column_stack([((1 - v) * (1 - u)).ravel(), (v * (1 - u)).ravel()])
     return points, 2 * (np.outer(w * (1 - s), w)).ravel()
 
 

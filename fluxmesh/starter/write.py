@@ -7,6 +7,7 @@ from typing import Final
 
 from fluxmesh.assess.review.toml import toml_key, toml_value
 from fluxmesh.errors import OutputError
+from fluxmesh.report.whole import write_whole
 from fluxmesh.starter.draft import Draft, Entry, Section
 
 __all__ = ["FILL_IN", "comment", "draft_text", "write_case"]
@@ -83,12 +84,10 @@ def write_case(text: str, path: Path) -> None:
     OutputError
         The file exists, or cannot be written.
     """
+    if not path.parent.is_dir():
+        raise OutputError("cannot be written (there is no such folder)", where=str(path))
     try:
-        with path.open("x", encoding="utf-8") as stream:
-            stream.write(text)
-    except FileExistsError as error:
-        raise OutputError("exists already", where=str(path), remedy="Choose another name with --to") from error
-    except (OSError, ValueError) as error:
-        # ValueError: a path or a text that no file can have
-        reason = getattr(error, "strerror", None) or str(error)
-        raise OutputError(f"cannot be written ({reason})", where=str(path)) from error
+        content = text.encode("utf-8")
+    except UnicodeEncodeError as error:
+        raise OutputError(f"cannot be written ({error.reason})", where=str(path)) from error
+    write_whole(content, path, replace=False)

@@ -7,6 +7,7 @@ from collections.abc import Callable, Mapping
 from pathlib import Path
 
 from fluxmesh.errors import FileError, GroupError
+from fluxmesh.guarded import reading
 from fluxmesh.surface.rawmesh import RawMesh
 from fluxmesh.surface.readers.cgns import read_cgns
 from fluxmesh.surface.readers.exodus import read_exodus
@@ -26,12 +27,12 @@ _Reader = Callable[[Path, bool | None], RawMesh]
 def _faces_only(reader: Callable[[Path], RawMesh]) -> _Reader:
     """Wrap the reader of a format that has no volume cells."""
 
-    def reading(path: Path, skin: bool | None) -> RawMesh:
+    def faces(path: Path, skin: bool | None) -> RawMesh:
         if skin:
             raise FileError(f"a {path.suffix} file has no volume cells", str(path), "Leave out skin = true")
         return reader(path)
 
-    return reading
+    return faces
 
 
 # A new reader is one line here; every other suffix goes to meshio's own table.
@@ -104,7 +105,8 @@ def read_mesh(path: Path, *, skin: bool | None = None) -> RawMesh:
             empty = not stream.read(1)
         if empty:
             raise FileError("is empty", str(path), "Export it again")
-        return reader(path, skin)
+        with reading(path):
+            return reader(path, skin)
     except OSError as error:
         raise FileError(
             f"cannot be read ({error.strerror or error})", str(path), "Check that you may read it"
@@ -144,6 +146,7 @@ def read_meshes(files: Mapping[str, Path], *, skin: bool | None = None) -> Joine
         if other != name:
             raise GroupError(
                 f"groups {other!r} and {name!r} are the same file {path.name}",
+                where="surface.files",
                 remedy="Give each group a file of its own",
             )
     return join_meshes({name: read_mesh(path, skin=skin) for name, path in files.items()})

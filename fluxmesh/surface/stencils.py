@@ -149,11 +149,11 @@ def _fit(
     m = values.shape[1]
     slopes[s, :, :] = 0.0
     # spread of the neighbours: principal axes of their second moments
-    uu, uv, vv = 0.0, 0.0, 0.0
+    uu, uv, vv, ww = 0.0, 0.0, 0.0, 0.0
     for i in range(count):
-        u, v = places[i, 0], places[i, 1]
-        uu, uv, vv = uu + u * u, uv + u * v, vv + v * v
-    if not uu + vv > 0.0:
+        u, v, w = places[i, 0], places[i, 1], places[i, 2]
+        uu, uv, vv, ww = uu + u * u, uv + u * v, vv + v * v, ww + w * w
+    if not uu + vv > _THINNEST * _THINNEST * ww:
         return
     half, apart = 0.5 * (uu - vv), sqrt(0.25 * (uu - vv) ** 2 + uv * uv)
     # the axis of the greater spread: from the better conditioned of two forms
@@ -161,11 +161,14 @@ def _fit(
     size = sqrt(cx * cx + cy * cy)
     cx, cy = (cx / size, cy / size) if size > 0.0 else (1.0, 0.0)
     large = sqrt((0.5 * (uu + vv) + apart) / count)
-    small = max(sqrt(max(0.5 * (uu + vv) - apart, 0.0) / count), _THINNEST * large)
+    small = sqrt(max(0.5 * (uu + vv) - apart, 0.0) / count)
+    # how far neighbours lie off a line is rounding there, and must not tell a slope
+    line = small <= _THINNEST * large
+    small = large if line else small
     total = 0.0
     for i in range(count):
         u = (places[i, 0] * cx + places[i, 1] * cy) / large
-        v = (places[i, 1] * cx - places[i, 0] * cy) / small
+        v = 0.0 if line else (places[i, 1] * cx - places[i, 0] * cy) / small
         places[i, 0], places[i, 1], places[i, 2], places[i, 3] = u, v, places[i, 2] / large, _weight(u * u + v * v)
         total += places[i, 3]
     linear[:, :] = 0.0

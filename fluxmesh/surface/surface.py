@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 
 import fluxmesh
 from fluxmesh.errors import GroupError, SurfaceError
+from fluxmesh.units import LARGEST
 
 __all__ = ["ControlSurface", "FaceKind", "Group", "Role"]
 
@@ -144,8 +145,8 @@ def _require_points(points: NDArray[Any]) -> None:
             f"points have shape {points.shape} and type {points.dtype}",
             remedy="An array of shape (n, 3), float64, is needed",
         )
-    # A finite sum means that every term is finite; only then is the slow look needed.
-    if points.size and not np.isfinite(points.sum()):
+    # NaN comes out of both: only where they are not within bounds is the slow look needed
+    if points.size and not (points.max() <= LARGEST and points.min() >= -LARGEST):
         bad = np.flatnonzero(~np.isfinite(points).all(axis=1))
         if bad.size:
             raise SurfaceError(
@@ -153,6 +154,11 @@ def _require_points(points: NDArray[Any]) -> None:
                 f"the first is point {bad[0]}",
                 remedy="Export the mesh again",
             )
+        far = np.flatnonzero((np.abs(points) > LARGEST).any(axis=1))
+        raise SurfaceError(
+            f"{far.size} of {points.shape[0]} points lie beyond {LARGEST:g} m, the first is point {far[0]}",
+            remedy="Check the length unit; or the file is damaged: export it again",
+        )
 
 
 def _require_faces(surface: ControlSurface) -> None:

@@ -19,15 +19,17 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import FieldError, FileError
 from fluxmesh.surface.rawmesh import RawMesh
+from fluxmesh.surface.readers.announced import require_possible
 from fluxmesh.surface.readers.cell_shapes import SHAPES
 from fluxmesh.surface.readers.content import FileContent, surface_of
 from fluxmesh.surface.readers.ending import ending_notes
 from fluxmesh.surface.readers.faces import Faces, join_blocks
 from fluxmesh.surface.readers.gmsh_counts import require_gmsh_counts
+from fluxmesh.surface.readers.gmsh_numbers import place_by_number
 from fluxmesh.surface.readers.volume import CellBlock, Volume
 from fluxmesh.surface.surface import FaceKind
 
-__all__ = ["meshio_suffixes", "read_meshio"]
+__all__ = ["meshio_notes", "meshio_suffixes", "read_meshio"]
 
 _KINDS = {
     "triangle": FaceKind.POLYGON,
@@ -115,8 +117,23 @@ def read_meshio(path: Path, skin: bool | None = None) -> RawMesh:
         An array has the wrong length.
     """
     content = _content(_read(path), path.name, str(path))
-    notes = ending_notes(path) if path.suffix.lower() in _TEXT else ()
-    return surface_of(replace(content, notes=(*content.notes, *notes)), str(path), skin)
+    return surface_of(replace(content, notes=(*content.notes, *meshio_notes(path))), str(path), skin)
+
+
+def meshio_notes(path: Path) -> tuple[str, ...]:
+    """Note a text file that may be cut within its last number.
+
+    Parameters
+    ----------
+    path : Path
+        An existing file.
+
+    Returns
+    -------
+    tuple of str
+        One note, or none.
+    """
+    return ending_notes(path) if path.suffix.lower() in _TEXT else ()
 
 
 def _content(mesh: Any, source: str, where: str) -> FileContent:
@@ -194,6 +211,7 @@ def _read(path: Path) -> Any:
 
     reasons = []
     for name in _formats(path):
+        require_possible(path, name)
         said = io.StringIO()
         try:
             with _opened(path, name) as source, redirect_stdout(said), redirect_stderr(said), catch_warnings():
@@ -222,6 +240,7 @@ def _read(path: Path) -> Any:
         if name == "gmsh":
             cells = [np.shape(block.data) for block in mesh.cells]
             require_gmsh_counts(path, len(mesh.points), [shape[:2] for shape in cells if len(shape) == 2])
+            place_by_number(path, mesh)
         return mesh
     raise FileError(
         f"cannot be read as a {path.suffix} file ({'; '.join(reasons)})",

@@ -148,7 +148,7 @@ def _faces(
         raise FileError(f"face {small[0]} is 'f {faces[small[0]]}', fewer than three points", str(path), _CUT_SHORT)
     try:
         connectivity = np.array(joined.split(), dtype=np.int64)
-    except ValueError as error:
+    except (ValueError, OverflowError) as error:
         raise FileError(f"has a face whose points are no whole numbers ({error})", str(path), _CUT_SHORT) from error
     starts = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int64)
     if (connectivity == 0).any():

@@ -81,7 +81,7 @@ class _Source:
         if self.binary:
             values = self.slots[at[:, None] + np.arange(kind.itemsize)].reshape(-1).view(kind)
         else:
-            values = self.slots[at].astype(kind)
+            values = self._cast(self.slots[at], kind)
         return values
 
     def strided(self, first: int, stride: int, rows: int, columns: int, kind: np.dtype[Any]) -> NDArray[Any]:
@@ -91,9 +91,31 @@ class _Source:
             table = np.lib.stride_tricks.as_strided(
                 table, (rows, columns), (stride * table.itemsize, table.itemsize), writeable=False
             )
-            return table.astype(kind)
+            return self._cast(table, kind)
         view = np.ndarray((rows, columns), kind, self.slots.data, first, (stride, kind.itemsize))
         return view.astype(kind.newbyteorder("="))
+
+    def holds(self, number: int, first: int, stride: int, rows: int, kind: np.dtype[Any]) -> bool:
+        """Return whether a number stands at one place of each row."""
+        if self.binary:
+            return bool((self.strided(first, stride, rows, 1, kind) == number).all())
+        return bool((self.slots[first : first + stride * rows : stride] == number).all())
+
+    def _cast(self, numbers: NDArray[Any], kind: np.dtype[Any]) -> NDArray[Any]:
+        """Return numbers of a text as the type that the header announces, which they must fit."""
+        if kind.kind == "f":
+            with np.errstate(over="ignore"):  # beyond the range is infinite, and refused where it is used
+                return numbers.astype(kind)
+        bounds = np.iinfo(kind)
+        # NaN fits nowhere; the float above the largest of 64 bits is one too many
+        fits = (numbers >= float(bounds.min)) & (numbers < float(bounds.max) + 1.0) & (numbers == np.rint(numbers))
+        if not fits.all():
+            raise FileError(
+                f"has the number {numbers[~fits][0]:g} where its header announces whole numbers of type {kind.name}",
+                self.where,
+                _CUT_SHORT,
+            )
+        return numbers.astype(kind)
 
 
 def read_ply(path: Path) -> RawMesh:
@@ -171,6 +193,8 @@ def _header(text: bytes, where: str) -> tuple[list[_Element], _Source]:
             if words[:1] == ["format"]:
                 order = {"ascii": "=", "binary_little_endian": "<", "binary_big_endian": ">"}[words[1]]
             elif words[:1] == ["element"]:
+                if int(words[2]) < 0:
+                    raise ValueError("a count below zero")
                 elements.append(_Element(words[1], int(words[2]), []))
             elif words[:2] == ["property", "list"]:
                 kinds = [np.dtype(order + _TYPES[word]) for word in words[2:4]]
@@ -207,10 +231,10 @@ def _first_row(element: _Element, source: _Source, at: int) -> tuple[list[int], 
         length = 1
         if prop.count is not None:
             _require(source, here + source.width(prop.count), element)
-            length = int(source.values(np.array([here]), prop.count)[0])
+            length = _length(source.values(np.array([here]), prop.count).item(), 0, source, element)
             here += source.width(prop.count)
         lengths.append(length)
-        here += max(length, 0) * source.width(prop.value)
+        here += length * source.width(prop.value)
     return lengths, here - at
 
 
@@ -224,17 +248,28 @@ def _require(source: _Source, needed: int, element: _Element) -> None:
         )
 
 
+def _length(number: float, row: int, source: _Source, element: _Element) -> int:
+    if not (number >= 0 and number % 1 == 0):  # NaN is neither; the rest of infinity is NaN
+        raise FileError(f"row {row} of '{element.name}' has a list of length {number:g}", source.where, _CUT_SHORT)
+    return int(number)
+
+
 def _equal_rows(
     element: _Element, source: _Source, at: int, lengths: list[int], stride: int
 ) -> dict[str, _Column] | None:
     """Read rows that are all as long as the first; None when they are not."""
+    here = at
+    # all lengths first: where they differ, no value is where it seems to be
+    for prop, length in zip(element.properties, lengths):
+        if prop.count is not None:
+            if not source.holds(length, here, stride, element.rows, prop.count):
+                return None
+            here += source.width(prop.count)
+        here += length * source.width(prop.value)
     columns, here = {}, at
     for prop, length in zip(element.properties, lengths):
         starts = None
         if prop.count is not None:
-            counts = source.strided(here, stride, element.rows, 1, prop.count)
-            if not (counts == length).all():
-                return None
             here += source.width(prop.count)
             starts = np.arange(element.rows + 1, dtype=np.int64) * length
         values = source.strided(here, stride, element.rows, length, prop.value)
@@ -264,12 +299,12 @@ def _ragged_rows(element: _Element, source: _Source, at: int) -> tuple[dict[str,
             length = 1
             if count_type is not None:
                 _require(source, at + head, element)
-                length = int.from_bytes(body[at : at + head], order) if source.binary else int(body[at])
+                length = _length(
+                    int.from_bytes(body[at : at + head], order) if source.binary else body[at], row, source, element
+                )
                 at += head
-                if length < 0:
-                    raise FileError(
-                        f"row {row} of '{element.name}' has a list of length {length}", source.where, _CUT_SHORT
-                    )
+                # at once: what is too long for the file can be too large for an array
+                _require(source, at + length * width, element)
                 counts[index, row] = length
             begins[index, row] = at
             at += length * width

@@ -8,6 +8,7 @@ here, and trimesh gets one at a time.
 from __future__ import annotations
 
 import io
+import logging
 import re
 import warnings
 from pathlib import Path
@@ -49,6 +50,8 @@ def read_stl(path: Path) -> RawMesh:
     """
     from trimesh.exchange.stl import HeaderError, load_stl_binary
 
+    # what it has to say of normals that cannot be read, with a traceback, would go to the terminal: they are not used
+    logging.getLogger("trimesh").addHandler(logging.NullHandler())
     with path.open("rb") as stream:
         try:
             loaded = load_stl_binary(stream)

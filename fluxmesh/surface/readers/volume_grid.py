@@ -3,30 +3,31 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any, Final
-from xml.etree import ElementTree
 
 import numpy as np
 from numpy.typing import NDArray
 
 from fluxmesh.errors import FieldError, FileError
+from fluxmesh.guarded import reading
 from fluxmesh.surface.readers.meshio_formats import _read as read_by_meshio
-from fluxmesh.surface.readers.meshio_formats import meshio_suffixes
-from fluxmesh.surface.readers.vtk_cells import cell_arrays, cell_type_name, cell_types
+from fluxmesh.surface.readers.meshio_formats import meshio_notes, meshio_suffixes
+from fluxmesh.surface.readers.vtk_cells import cell_arrays, cell_type_name, cell_types, hidden_cells
 from fluxmesh.surface.readers.vtk_dataset import plain_text
-from fluxmesh.surface.readers.vtk_legacy import check_vtk_legacy
+from fluxmesh.surface.readers.vtk_guard import try_reader
+from fluxmesh.surface.readers.vtk_legacy import check_vtk_legacy, legacy_holds_polyhedra
 from fluxmesh.surface.readers.vtk_messages import captured_messages
-from fluxmesh.surface.readers.vtk_xml import check_vtk_xml
+from fluxmesh.surface.readers.vtk_xml import check_vtk_xml, holds_polyhedra
+from fluxmesh.surface.readers.xml_index import file_beside, read_xml_index
+from fluxmesh.units import LARGEST
 
 __all__ = ["VolumeMesh", "read_volume", "volume_mesh", "volume_suffixes"]
 
 _DAMAGED: Final = "The file is damaged or cut short; export it again"
 _EXPORT: Final = "Export the volume mesh of the flow: tetrahedra, hexahedra, wedges, pyramids or polyhedra"
-# Bits of the open "vtkGhostType" cell array: a copy of another piece's cell, a cell to be left out.
 _GHOST_ARRAY: Final = "vtkGhostType"
-_GHOST_BITS: Final = 1 | 32
 _KEPT: Final = "fluxmesh kept"
 # Points of the volume cells of fixed size, by the numbers of the open VTK file format.
 _SIZES: Final = {
@@ -51,6 +52,8 @@ class VolumeMesh:
         Numbers on cells.
     partial : tuple of str
         Arrays that only some of its blocks have, left out of the above.
+    notes : tuple of str
+        What to say of the file: that it may be cut within its last number.
     """
 
     source: str
@@ -58,6 +61,7 @@ class VolumeMesh:
     node_arrays: dict[str, NDArray[Any]] = field(default_factory=dict)
     cell_arrays: dict[str, NDArray[Any]] = field(default_factory=dict)
     partial: tuple[str, ...] = ()
+    notes: tuple[str, ...] = ()
 
 
 def volume_suffixes() -> tuple[str, ...]:
@@ -101,12 +105,14 @@ def read_volume(path: Path) -> VolumeMesh:
     try:
         if path.stat().st_size == 0:
             raise FileError("is empty", where, "Export it again")
-        if suffix == ".vtm":
-            return _read_blocks(path)
-        if suffix in (".vtu", ".pvtu", ".vtk"):
-            return volume_mesh(_read_vtk(path), path.name, where)
-        if {suffix, "".join(path.suffixes[-2:]).lower()} & meshio_suffixes():
-            return volume_mesh(_from_meshio(path), path.name, where)
+        with reading(path):
+            if suffix == ".vtm":
+                return _read_blocks(path)
+            if suffix in (".vtu", ".pvtu", ".vtk"):
+                grid, notes = _read_vtk(path)
+                return replace(volume_mesh(grid, path.name, where), notes=notes)
+            if {suffix, "".join(path.suffixes[-2:]).lower()} & meshio_suffixes():
+                return replace(volume_mesh(_from_meshio(path), path.name, where), notes=meshio_notes(path))
     except OSError as error:
         found = f"cannot be read ({error.strerror or error})"
         raise FileError(found, where, "Check that you may read it") from error
@@ -183,6 +189,8 @@ def _require_sound(grid: Any, where: str) -> None:
     if not finite.all():
         bad = int(np.flatnonzero(~finite.all(axis=1))[0])
         raise FileError(f"the coordinates of point {bad} are not finite", where, "Export it again")
+    if count and float(np.abs(vtk_to_numpy(grid.GetPoints().GetData())).max()) > LARGEST:
+        raise FileError(f"has a point farther than {LARGEST:g} from the origin", where, "Export it again")
 
 
 def _volume_cells(grid: Any, where: str) -> Any:
@@ -200,7 +208,7 @@ def _volume_cells(grid: Any, where: str) -> Any:
         raise FileError(f"has no volume cells (its cells: {listed or 'none'})", where, _EXPORT)
     ghosts = grid.GetCellData().GetArray(_GHOST_ARRAY)
     if ghosts is not None and ghosts.GetNumberOfTuples() == kept.size:
-        kept &= (vtk_to_numpy(ghosts) & _GHOST_BITS) == 0
+        kept &= ~hidden_cells(vtk_to_numpy(ghosts), where)
         if not kept.any():
             raise FileError("has no volume cells but ghosts", where, _EXPORT)
     if kept.all():
@@ -240,11 +248,13 @@ def _arrays(attributes: Any, count: int, on: str, where: str) -> Iterator[tuple[
         yield plain_text(array.GetName()), vtk_to_numpy(array)
 
 
-def _read_vtk(path: Path) -> Any:
-    """Run the VTK reader that fits the suffix."""
-    suffix = path.suffix.lower()
+def _read_vtk(path: Path) -> tuple[Any, tuple[str, ...]]:
+    """Run the VTK reader that fits the suffix; return its grid, and notes."""
+    suffix, doubtful = path.suffix.lower(), False
+    notes: tuple[str, ...] = ()
     if suffix == ".vtk":
-        check_vtk_legacy(path)
+        notes = check_vtk_legacy(path)
+        doubtful = legacy_holds_polyhedra(path)
         from vtkmodules.vtkIOLegacy import vtkGenericDataObjectReader
 
         reader = vtkGenericDataObjectReader()
@@ -253,6 +263,7 @@ def _read_vtk(path: Path) -> Any:
     elif suffix == ".pvtu":
         for piece in _named_files(path, "Piece", "Source"):
             check_vtk_xml(piece)
+            doubtful = doubtful or holds_polyhedra(piece)
         from vtkmodules.vtkIOXML import vtkXMLPUnstructuredGridReader
 
         reader = vtkXMLPUnstructuredGridReader()
@@ -263,22 +274,23 @@ def _read_vtk(path: Path) -> Any:
         from vtkmodules.vtkIOXML import vtkXMLUnstructuredGridReader
 
         reader = vtkXMLUnstructuredGridReader()
+        doubtful = holds_polyhedra(path)
+    if doubtful:
+        try_reader(reader, path)
     with captured_messages() as log:
         reader.SetFileName(str(path))
         reader.Update()
         output = reader.GetOutputDataObject(0)
     if log.failure:
         raise FileError(f"cannot be read ({log.failure})", str(path), "It is damaged or cut short; export it again")
-    return output
+    return output, notes
 
 
 def _named_files(path: Path, tag: str, attribute: str) -> list[Path]:
     """Return the files that an index of pieces or blocks names; each must be there."""
-    try:
-        root = ElementTree.parse(path).getroot()
-    except ElementTree.ParseError as error:
-        raise FileError(f"its XML is damaged ({error})", str(path), _DAMAGED) from error
-    files = [path.parent / element.attrib[attribute] for element in root.iter(tag) if attribute in element.attrib]
+    root = read_xml_index(path)
+    names = [element.attrib[attribute] for element in root.iter(tag) if attribute in element.attrib]
+    files = [path.parent / name for name in names]
     if not files:
         raise FileError("names no files of pieces", str(path), "Export it again, with its pieces")
     gone = [file for file in files if not file.is_file()]
@@ -288,7 +300,7 @@ def _named_files(path: Path, tag: str, attribute: str) -> list[Path]:
             str(path),
             f"Put the pieces where the file names them: {gone[0]}",
         )
-    return files
+    return [file_beside(path, name, str(path)) for name in names]
 
 
 def _read_blocks(path: Path) -> VolumeMesh:
@@ -301,13 +313,15 @@ def _read_blocks(path: Path) -> VolumeMesh:
             raise FileError(
                 f"its block {file.name} is of no kind that can be read", str(path), "Export blocks as .vtu files"
             )
-        blocks.append(volume_mesh(_read_vtk(file), file.name, str(file)))
+        grid, notes = _read_vtk(file)
+        blocks.append(replace(volume_mesh(grid, file.name, str(file)), notes=notes))
     if not blocks:
         raise FileError("has no blocks with volume cells", str(path), _EXPORT)
     names = [{*block.node_arrays, *block.cell_arrays} for block in blocks]
     partial = tuple(name for name in sorted(set().union(*names)) if not all(name in each for each in names))
+    notes = tuple(note for block in blocks for note in block.notes)
     joined = volume_mesh(_appended([block.grid for block in blocks]), path.name, str(path))
-    return VolumeMesh(joined.source, joined.grid, joined.node_arrays, joined.cell_arrays, partial)
+    return VolumeMesh(joined.source, joined.grid, joined.node_arrays, joined.cell_arrays, partial, notes)
 
 
 def _appended(grids: list[Any]) -> Any:
@@ -316,6 +330,9 @@ def _appended(grids: list[Any]) -> Any:
 
     append = vtkAppendFilter()
     append.MergePointsOff()
+    # grids whose points follow from their axes would have them rounded to single precision
+    if not all(grid.IsA("vtkPointSet") for grid in grids):
+        append.SetOutputPointsPrecision(append.DOUBLE_PRECISION)
     for grid in grids:
         append.AddInputData(grid)
     append.Update()
@@ -333,4 +350,12 @@ def _from_meshio(path: Path) -> Any:
         raise FileError(f"has no volume cells (its cells: {listed or 'none'})", str(path), _EXPORT)
     import pyvista
 
-    return pyvista.from_meshio(mesh)
+    try:
+        return pyvista.from_meshio(mesh)
+    except (LookupError, TypeError, ValueError) as error:
+        said = str(error).splitlines()
+        raise FileError(
+            f"its cells and arrays do not fit together ({said[0] if said else type(error).__name__})",
+            str(path),
+            _DAMAGED,
+        ) from error

@@ -54,7 +54,7 @@ def read_vtk_blocks(path: Path, skin: bool | None = None) -> RawMesh:
     FieldError
         An array has the wrong length, or differs between blocks.
     """
-    parts, notes = _contents(path, str(path), 0)
+    parts, notes = _contents(path, str(path), (path.resolve(),), set())
     return surface_of_parts(parts, str(path), skin, path.name, named=True, notes=notes)
 
 
@@ -81,17 +81,23 @@ def read_vtk_pieces(path: Path, skin: bool | None = None) -> RawMesh:
     FieldError
         As `read_vtk_blocks`.
     """
-    parts, notes = _contents(path, str(path), 0)
+    parts, notes = _contents(path, str(path), (path.resolve(),), set())
     return surface_of_parts(parts, str(path), skin, path.name, named=False, notes=notes)
 
 
-def _contents(path: Path, where: str, depth: int) -> tuple[list[tuple[str, FileContent]], tuple[str, ...]]:
-    """Return the blocks of a file with their names, and what was passed over."""
-    if depth > _DEEPEST:
+def _contents(
+    path: Path, where: str, above: tuple[Path, ...], seen: set[Path]
+) -> tuple[list[tuple[str, FileContent]], tuple[str, ...]]:
+    """Return the blocks of a file with their names, and what was passed over.
+
+    Each file is read once: sets that list one another, ten at a time, would make a list without end.
+    """
+    if len(above) > _DEEPEST + 1:
         raise FileError(f"lists files that list files, more than {_DEEPEST} deep", where, "Export it again")
     root = read_xml_index(path)
     kind = root.get("type", "nothing")
-    body = root.find(kind)
+    # not by root.find, to which the kind would be a path: it is any text here
+    body = next((element for element in root if element.tag == kind), None)
     if kind not in (*_SETS, *_PIECED) or body is None:
         raise FileError(
             f"holds a data set of kind {kind}", where, f"Kinds that list files are {', '.join((*_SETS, *_PIECED))}"
@@ -102,8 +108,14 @@ def _contents(path: Path, where: str, depth: int) -> tuple[list[tuple[str, FileC
     for leaf in _pieces(body, where) if pieced else _leaves(body, "", where, 0):
         here = f"{where}: {'piece' if pieced else 'block'} {leaf.name!r}"
         file = file_beside(path, leaf.reference, here)
+        whole = file.resolve()
+        if whole in seen and whole not in above:
+            raise FileError(
+                f"lists {file.name} a second time", here, "Each file can be one part of the surface; export it again"
+            )
+        seen.add(whole)
         try:
-            inner, more = _leaf_contents(file, here, depth)
+            inner, more = _leaf_contents(file, here, (*above, whole), seen)
         except InputError as error:
             if error.where.startswith(where):
                 raise
@@ -117,10 +129,12 @@ def _below(name: str, inner: str) -> str:
     return "/".join(part for part in (name, inner) if part)
 
 
-def _leaf_contents(file: Path, where: str, depth: int) -> tuple[list[tuple[str, FileContent]], tuple[str, ...]]:
+def _leaf_contents(
+    file: Path, where: str, above: tuple[Path, ...], seen: set[Path]
+) -> tuple[list[tuple[str, FileContent]], tuple[str, ...]]:
     kind = vtk_xml_kind(file)
     if kind in _PIECED or kind in _SETS:
-        inner, notes = _contents(file, where, depth + 1)
+        inner, notes = _contents(file, where, above, seen)
         # pieces are parts of one block, blocks have names of their own
         return [("" if kind in _PIECED else name, part) for name, part in inner], notes
     if kind in VTK_XML_KINDS:

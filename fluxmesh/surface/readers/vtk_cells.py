@@ -8,12 +8,14 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from fluxmesh.errors import FileError
+from fluxmesh.errors import FieldError, FileError
 from fluxmesh.surface.readers.faces import Faces, gather, strip_triangles
 from fluxmesh.surface.surface import FaceKind
 
-__all__ = ["cell_arrays", "cell_type_name", "cell_types", "faces_of_grid", "faces_of_polydata"]
+__all__ = ["cell_arrays", "cell_type_name", "cell_types", "faces_of_grid", "faces_of_polydata", "hidden_cells"]
 
+# Bits of the open "vtkGhostType" cell array: a copy of another piece's cell, a cell to be left out.
+_GHOST_BITS = 1 | 32
 _TRIANGLE, _STRIP, _POLYGON, _PIXEL = 5, 6, 7, 8
 # Cell type -> number of points (0: three or more) -> kind of face.
 # An arbitrary-order (Lagrange) cell of order 1 or 2 has the points of the plain one in the same order.
@@ -278,3 +280,30 @@ def _unsupported(name: str, count: int, where: str) -> FileError:
         where,
         "Export triangles, quads, polygons, or quadratic triangles and quads",
     )
+
+
+def hidden_cells(ghosts: NDArray[Any], where: str) -> NDArray[np.bool_]:
+    """Return which cells are marked as copies of another piece's, or as left out.
+
+    Parameters
+    ----------
+    ghosts : ndarray
+        The array of marks.
+    where : str
+        File and block, for messages.
+
+    Returns
+    -------
+    ndarray of bool, shape (n_cells,)
+        One a cell.
+
+    Raises
+    ------
+    FieldError
+        The array holds no such marks.
+    """
+    if ghosts.ndim != 1 or ghosts.dtype.kind not in "iu":
+        raise FieldError(
+            "array 'vtkGhostType' holds no whole number a cell", where, "It marks cells to be left out; rename it"
+        )
+    return (ghosts & _GHOST_BITS) != 0

@@ -11,14 +11,12 @@ from numpy.typing import NDArray
 from fluxmesh.errors import FieldError, FileError
 from fluxmesh.surface.readers.content import FileContent
 from fluxmesh.surface.readers.faces import Faces, gather
-from fluxmesh.surface.readers.vtk_cells import faces_of_grid, faces_of_polydata
+from fluxmesh.surface.readers.vtk_cells import faces_of_grid, faces_of_polydata, hidden_cells
 from fluxmesh.surface.readers.vtk_volume import volume_cell_count, volume_of_grid
 
 __all__ = ["content_of_dataset", "plain_text"]
 
-# Bits of the open "vtkGhostType" cell array: a copy of another piece's cell, a cell to be left out.
 _GHOST_ARRAY = "vtkGhostType"
-_GHOST_BITS = 1 | 32
 _LONGEST_WORD = 4096
 
 
@@ -59,7 +57,9 @@ def content_of_dataset(data: Any, source: str, where: str) -> FileContent:
     cell_count = int(data.GetNumberOfCells())
     cells = dict(_arrays(data.GetCellData(), cell_count, "cells", where))
     ghosts = cells.pop(_GHOST_ARRAY, None)
-    hidden = None if ghosts is None or not ghosts.any() else (ghosts & _GHOST_BITS) != 0
+    hidden = None if ghosts is None else hidden_cells(ghosts, where)
+    if hidden is not None and not hidden.any():
+        hidden = None
     faces, dropped = _without_ghosts(faces, hidden, cell_count)
     points = data.GetPoints()
     nodes = dict(_arrays(data.GetPointData(), int(data.GetNumberOfPoints()), "points", where))

@@ -11,6 +11,7 @@ import sys
 from pathlib import Path
 
 from fluxmesh.errors import FileError
+from fluxmesh.guarded import is_guarded
 
 __all__ = ["try_reader"]
 
@@ -28,7 +29,7 @@ _BYTES_A_SECOND = 5e6
 
 
 def try_reader(reader: object, path: Path) -> None:
-    """Let a VTK reader read a file in a process of its own.
+    """Let a VTK reader read a file in a process of its own, unless this one is guarded already.
 
     Parameters
     ----------
@@ -43,6 +44,8 @@ def try_reader(reader: object, path: Path) -> None:
         The process was ended by a signal, or did not end within half a minute
         and a second for each 5 million bytes.
     """
+    if is_guarded():
+        return
     kind = type(reader)
     command = [sys.executable, "-c", _CODE, kind.__module__, kind.__name__, str(path)]
     seconds = _SECONDS + path.stat().st_size / _BYTES_A_SECOND

@@ -11,7 +11,7 @@ import numpy as np
 
 from fluxmesh.errors import FileError
 from fluxmesh.surface.readers.ending import ending_notes
-from fluxmesh.surface.readers.vtk_legacy_blocks import KEYWORD, require_room
+from fluxmesh.surface.readers.vtk_legacy_blocks import KEYWORD, require_room, without_notes
 
 __all__ = ["check_vtk_legacy", "legacy_holds_polyhedra"]
 
@@ -58,11 +58,13 @@ def check_vtk_legacy(path: Path) -> tuple[str, ...]:
 
 def _require_last_block(data: Any, blocks: list[re.Match[bytes]], where: str) -> None:
     """Raise if the last block of an ASCII file holds fewer values than it announces."""
-    lines = [block[0].split() for block in blocks]
-    needed = _values_needed(lines)
+    kept = without_notes(data, blocks)
+    lines = [block[0].split() for block, _ in kept]
+    needed = _values_needed(lines) if lines else None
     if needed is None:
         return
-    held = len(data[blocks[-1].end() :].split())
+    last, end = kept[-1]
+    held = len(data[last.end() : end].split())
     if held < needed:
         raise FileError(
             f"its last block '{b' '.join(lines[-1]).decode('utf-8', 'replace')}' holds {held} values of {needed}",

@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from fluxmesh.errors import FileError
 
-__all__ = ["KEYWORD", "require_room"]
+__all__ = ["KEYWORD", "require_room", "without_notes"]
 
 KEYWORD = re.compile(rb"\n[ \t]*(?!(?:nan|inf)\b)[A-Za-z_][^\r\n]*", re.IGNORECASE)
 """A line that starts with a letter opens a block, unless it is a value that is not finite; with the newline before."""
@@ -156,6 +156,34 @@ def _adds_up(values: list[int], count: int) -> bool:
     return at == len(values)
 
 
+def without_notes(data: Any, blocks: Sequence[re.Match[bytes]]) -> list[tuple[re.Match[bytes], int]]:
+    """Return the blocks of an ASCII file without VTK's notes on arrays, which can look like arrays themselves.
+
+    Parameters
+    ----------
+    data : bytes or mmap
+        The file.
+    blocks : sequence of re.Match
+        Every `KEYWORD` of it.
+
+    Returns
+    -------
+    list of (re.Match, int)
+        Those outside of METADATA, and where the values after each end.
+    """
+    kept: list[tuple[re.Match[bytes], int]] = []
+    skipped = 0
+    for number, match in enumerate(blocks):
+        if match.start() < skipped:
+            continue
+        if match[0].split()[0].upper() == b"METADATA":
+            blank = _BLANK_LINE.search(data, match.start())
+            skipped = blank.end() if blank else len(data)
+        else:
+            kept.append((match, blocks[number + 1].start() if number + 1 < len(blocks) else len(data)))
+    return kept
+
+
 def require_room(data: Any, body: int, blocks: Sequence[re.Match[bytes]] | None, where: str) -> None:
     """Check counts and lists of cells of a legacy VTK file before its reader trusts them.
 
@@ -191,16 +219,12 @@ def require_room(data: Any, body: int, blocks: Sequence[re.Match[bytes]] | None,
 
 
 def _text(data: Any, blocks: Sequence[re.Match[bytes]], reading: _Reading) -> None:
-    strings, skipped = False, 0
-    for number, match in enumerate(blocks):
+    strings = False
+    for match, end in without_notes(data, blocks):
         words = match[0].split()
         word = words[0].upper()
-        if match.start() < skipped or (strings and word not in _OPENING and not reading.is_array(words)):
-            continue  # VTK's notes on an array, or the words of one of text
-        if word == b"METADATA":
-            blank = _BLANK_LINE.search(data, match.start())
-            skipped = blank.end() if blank else len(data)
-            continue
+        if strings and word not in _OPENING and not reading.is_array(words):
+            continue  # the words of an array of text
         room = len(data) - match.end()
         found = reading.block(words, room)
         if found is None:
@@ -209,7 +233,6 @@ def _text(data: Any, blocks: Sequence[re.Match[bytes]], reading: _Reading) -> No
         # each value takes a digit and, but for the last, a blank
         reading.require(words, found[0] if strings else max(0, 2 * found[0] - 1), room)
         if (word in _CELLS or word == b"OFFSETS") and found[0]:
-            end = blocks[number + 1].start() if number + 1 < len(blocks) else len(data)
             values = _whole(data[match.end() : end], reading)
             if values.size >= found[0]:
                 reading.require_cells(word, values[: found[0]])

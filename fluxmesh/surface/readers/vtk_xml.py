@@ -12,6 +12,7 @@ import binascii
 import html
 import mmap
 import re
+import zlib
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
@@ -22,7 +23,7 @@ from fluxmesh.errors import FieldError, FileError
 
 __all__ = ["check_vtk_xml", "holds_polyhedra", "vtk_xml_kind"]
 
-_TAG = re.compile(rb"<(/?)(Piece|PointData|CellData|Points|Polys|Cells|DataArray)\b([^>]*)>")
+_TAG = re.compile(rb"<(/?)(Piece|PointData|CellData|Points|Polys|Cells|DataArray|Array)\b([^>]*)>")
 _ATTRIBUTE = re.compile(r"""(\w+)\s*=\s*(?:"([^"]*)"|'([^']*)')""")
 _POLYHEDRA = re.compile(
     rb"""<DataArray\b[^>]*Name\s*=\s*["'](?:faces|faceoffsets|face_offsets|polyhedron_offsets)["']"""
@@ -32,6 +33,8 @@ _BYTES = {
     "Float32": 4,
     "Float64": 8,
 }
+# No compressor makes a mesh smaller by more: a larger length is damage, or meant to fill the memory.
+_MOST_PACKED = 10_000
 _CUT_SHORT = "It was cut short or is still being written; export or copy it again"
 
 
@@ -41,10 +44,14 @@ class _Layout:
 
     order: str  # numpy byte order
     word: int  # bytes of a length
-    compressed: bool
+    compressor: str  # "" for none
     encoding: str  # of the appended data: raw or base64
     appended_at: int  # first byte of the appended data
     appended_end: int  # first byte after them
+
+    @property
+    def compressed(self) -> bool:
+        return bool(self.compressor)
 
 
 @dataclass(frozen=True)
@@ -95,7 +102,7 @@ def check_vtk_xml(path: Path) -> str:
             layout = _layout(data, head)
             for declared in _arrays(data, layout):
                 _check_length(declared, data, layout, str(path))
-        except (ValueError, KeyError, IndexError, OverflowError) as error:
+        except (ValueError, KeyError, IndexError, OverflowError, zlib.error) as error:
             if isinstance(error, FieldError | FileError):
                 raise
             raise FileError(f"its XML is damaged ({error})", str(path), "Export it again") from error
@@ -172,7 +179,7 @@ def _layout(data: mmap.mmap, head: dict[str, str]) -> _Layout:
     return _Layout(
         order=">" if head.get("byte_order") == "BigEndian" else "<",
         word=8 if head.get("header_type") == "UInt64" else 4,
-        compressed=bool(head.get("compressor")),
+        compressor=head.get("compressor", ""),
         encoding=encoding,
         appended_at=appended_at,
         appended_end=appended_end,
@@ -185,12 +192,12 @@ def _arrays(data: mmap.mmap, layout: _Layout) -> Iterator[_Declared]:
     for tag in _TAG.finditer(data, 0, layout.appended_at):
         closing, name = tag[1], tag[2].decode()
         if closing:
-            place = place if name in ("DataArray", "Piece") else ""
+            place = place if name in ("DataArray", "Array", "Piece") else ""
             continue
         attributes = _attributes(tag[3].decode("utf-8", "replace"))
         if name == "Piece":
             piece = attributes
-        elif name != "DataArray":
+        elif name not in ("DataArray", "Array"):
             # <PointData/> with nothing in it has no closing tag
             place = "" if tag[3].endswith(b"/") else name
         elif place:
@@ -211,8 +218,15 @@ def _needed(piece: dict[str, str], place: str, attributes: dict[str, str]) -> in
 
 
 def _check_length(declared: _Declared, data: mmap.mmap, layout: _Layout, where: str) -> None:
+    if declared.attributes.get("type") == "String":
+        _check_words(declared, data, layout, where)
+        return
     size = _BYTES.get(declared.attributes.get("type", ""))
-    if declared.values is None or size is None:
+    if size is None:
+        return
+    if declared.values is None:
+        if declared.attributes.get("format", "ascii") != "ascii":
+            _declared_bytes(declared, data, layout, where)
         return
     needed = declared.values * declared.components
     if declared.attributes.get("format", "ascii") == "ascii":
@@ -235,41 +249,116 @@ def _check_length(declared: _Declared, data: mmap.mmap, layout: _Layout, where: 
     )
 
 
+def _check_words(declared: _Declared, data: mmap.mmap, layout: _Layout, where: str) -> None:
+    """Raise if an array of text has more words than places: VTK writes the others beyond its memory."""
+    if declared.attributes.get("format", "ascii") == "ascii":
+        tokens = data[declared.inline_at : _find(data, b"<", declared.inline_at)].split()
+        held = sum(1 for token in tokens if not token.strip(b"0"))
+    else:
+        count = _declared_bytes(declared, data, layout, where)
+        start, base64 = _start_of(declared, data, layout)
+        if layout.compressed:
+            if layout.compressor != "vtkZLibDataCompressor":
+                return
+            text = _unpacked(data, start, layout, base64, count)
+        elif base64:
+            stored = data[start : start + -(-(layout.word + count) // 3) * 4]
+            text = binascii.a2b_base64(stored)[layout.word :]
+        else:
+            text = data[start + layout.word : start + layout.word + count]
+        held = text.count(b"\0")
+    if declared.values is not None and held != declared.values * declared.components:
+        raise FieldError(
+            f"array {declared.name!r} holds {held} words, but there are {declared.values} places for them",
+            where,
+            "Export it again",
+        )
+
+
+def _unpacked(data: mmap.mmap, start: int, layout: _Layout, base64: bool, count: int) -> bytes:
+    """Return an array in one piece; its lengths have been checked."""
+    head = _words(data, start, 3, layout, base64)
+    if len(head) < 3 or not head[0]:
+        return b""
+    table = (3 + head[0]) * layout.word
+    sizes = _words(data, start, 3 + head[0], layout, base64)[3:]
+    at = start + (-(-table // 3) * 4 if base64 else table)
+    stored = data[at : at + (-(-sum(sizes) // 3) * 4 if base64 else sum(sizes))]
+    packed = binascii.a2b_base64(stored) if base64 else stored
+    parts, first = [], 0
+    for size in sizes:
+        parts.append(zlib.decompressobj().decompress(packed[first : first + size], count + 1))
+        first += size
+    return b"".join(parts)
+
+
 def _count_tokens(data: mmap.mmap, start: int) -> int:
     text = np.frombuffer(data[start : _find(data, b"<", start)], dtype=np.uint8)
     dark = text > ord(" ")
     return int(np.count_nonzero(dark[1:] & ~dark[:-1])) + int(dark[:1].sum())
 
 
-def _declared_bytes(declared: _Declared, data: mmap.mmap, layout: _Layout, where: str) -> int:
-    """Return how many bytes an array has once unpacked, as its length words say."""
-    appended = declared.attributes["format"] == "appended"
-    base64 = layout.encoding == "base64" if appended else True
+def _start_of(declared: _Declared, data: mmap.mmap, layout: _Layout) -> tuple[int, bool]:
+    """Return the first byte of an array that is not in ASCII, and whether it is in base64."""
+    if declared.attributes["format"] == "appended":
+        return layout.appended_at + int(declared.attributes["offset"]), layout.encoding == "base64"
     start = declared.inline_at
-    if appended:
-        start = layout.appended_at + int(declared.attributes["offset"])
-    else:
-        while data[start : start + 1].isspace():
-            start += 1
-    length = (3 if layout.compressed else 1) * layout.word
-    # 4 characters carry 3 bytes; a single length word is encoded together with its data
-    stored = data[start : start + (-(-length // 3) * 4 if base64 else length)]
-    head = binascii.a2b_base64(stored) if base64 else stored
-    words = np.frombuffer(head[: len(head) // layout.word * layout.word], f"{layout.order}u{layout.word}")
+    while data[start : start + 1].isspace():
+        start += 1
+    return start, True
+
+
+def _declared_bytes(declared: _Declared, data: mmap.mmap, layout: _Layout, where: str) -> int:
+    """Return how many bytes an array has once unpacked, as its length words say, which the file must hold."""
+    start, base64 = _start_of(declared, data, layout)
+    end = layout.appended_end if declared.attributes["format"] == "appended" else _find(data, b"<", start)
+    words = _words(data, start, 3 if layout.compressed else 1, layout, base64)
     if not layout.compressed:
-        count = int(words[0]) if words.size else 0
-        stop = start + length + (count if words.size and not base64 else 0)
-    elif words.size == 3 and words[0] > 0:
-        blocks, full, last = (int(word) for word in words)
+        # the length is encoded together with its data
+        count = words[0] if words else 0
+        stop = start + _stored(layout.word + count, base64)
+    elif len(words) == 3 and words[0] > 0:
+        blocks, full, last = words
+        if full == 0 or last > full:  # VTK would divide by it
+            raise FileError(
+                f"array {declared.name!r} is packed in blocks of {full} bytes, with {last} in the last",
+                where,
+                "The file is damaged; export it again",
+            )
         count = blocks * full if last == 0 else (blocks - 1) * full + last
-        stop = start + length
+        table = (3 + blocks) * layout.word
+        stop = start + _stored(table, base64)
+        if stop <= end:
+            packed = sum(_words(data, start, 3 + blocks, layout, base64)[3:])
+            stop += _stored(packed, base64)
+            if count > _MOST_PACKED * packed:
+                raise FileError(
+                    f"array {declared.name!r} announces {count} bytes, but {packed} are stored", where, _CUT_SHORT
+                )
     else:  # no block at all: one zero word and nothing else
         count, stop = 0, start
-    if appended and stop > layout.appended_end:
+    if stop > end:
+        what = "the appended data end" if end == layout.appended_end else "its text ends"
+        begin = layout.appended_at if end == layout.appended_end else start
         raise FileError(
-            f"the appended data end before array {declared.name!r} does: "
-            f"{stop - layout.appended_at} bytes are needed, {layout.appended_end - layout.appended_at} are there",
+            f"{what} before array {declared.name!r} does: {stop - begin} bytes are needed, {end - begin} are there",
             where,
             _CUT_SHORT,
         )
     return count
+
+
+def _stored(count: int, base64: bool) -> int:
+    # 4 characters carry 3 bytes; what fills the last four may be missing
+    return -(-count * 4 // 3) if base64 else count
+
+
+def _words(data: mmap.mmap, start: int, count: int, layout: _Layout, base64: bool) -> list[int]:
+    """Return the length words at the head of an array, as many as are there."""
+    length = count * layout.word
+    stored = data[start : start + (-(-length // 3) * 4 if base64 else length)]
+    head = binascii.a2b_base64(stored) if base64 else stored
+    found: list[int] = np.frombuffer(
+        head[: min(length, len(head)) // layout.word * layout.word], f"{layout.order}u{layout.word}"
+    ).tolist()
+    return found
