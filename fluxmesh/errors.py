@@ -17,6 +17,8 @@
 
 from __future__ import annotations
 
+import re
+
 __all__ = [
     "CaseError",
     "FieldError",
@@ -30,6 +32,20 @@ __all__ = [
     "SurfaceError",
     "UnitError",
 ]
+
+
+_LONGEST_WORD = 300
+_UNFIT_LINE = re.compile(r"\n(?!  )")
+_LONG_WORD = re.compile(rf"(\S{{{_LONGEST_WORD}}})\S+")
+
+
+def _readable(message: str) -> str:
+    """Escape what could upset a terminal and shorten endless words: messages hold names from files."""
+    if not message.isprintable():
+        # a list of several problems has lines, each set in by two blanks; any other line end is one of a name
+        message = _UNFIT_LINE.sub(r"\\u000a", message)
+        message = "".join(c if c.isprintable() or c == "\n" else f"\\u{ord(c):04x}" for c in message)
+    return _LONG_WORD.sub(r"\1...", message) if len(message) > _LONGEST_WORD else message
 
 
 class FluxmeshError(Exception):
@@ -57,7 +73,7 @@ class FluxmeshError(Exception):
         head = f"{where}: {found}" if where else found
         # positional arguments, so that pickling rebuilds the same error
         super().__init__(found, where, remedy)
-        self._message = f"{head}. {remedy}" if remedy else head
+        self._message = _readable(f"{head}. {remedy}" if remedy else head)
 
     def __str__(self) -> str:
         """Return the message in one piece."""

@@ -119,6 +119,15 @@ def _profile(name: str, group: GroupSection, flows: bool) -> Iterator[Problem]:
             'missing, and profile is "table"' if group.profile_table is None else 'profile is not "table"',
             'Give both profile = "table" and profile_table = { radius = [..], speed = [..] }',
         )
+    table = group.profile_table
+    if table is not None and (table.radius is None) == (table.wall_distance is None):
+        yield Problem(
+            dotted("groups", name, "profile_table"),
+            "neither radius nor wall_distance is given"
+            if table.radius is None
+            else "radius and wall_distance are given",
+            "Give one of them: the distance from the middle of the port, or from its wall",
+        )
     if "profile" in group.model_fields_set and not flows:
         yield Problem(
             dotted("groups", name, "profile"),

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
+from functools import partial
 from typing import Any, get_args, get_origin
 
 from pydantic import BaseModel, ValidationError
@@ -13,6 +14,7 @@ from fluxmesh.units.wording import described, either, nearest, quoted
 
 __all__ = ["case_error"]
 
+_Told = Callable[[], tuple[Problem, type[InputError]]]
 _MOST_SHOWN = 10
 
 
@@ -34,33 +36,38 @@ def case_error(error: ValidationError, model: type[BaseModel], file: str) -> Inp
         A `UnitError` when one quantity is at fault, else a `CaseError`; up to
         ten problems in one message, in the order of their keys.
     """
-    found: list[tuple[Problem, type[InputError]]] = []
+    found: list[tuple[str, _Told]] = []
     for entry in error.errors(include_url=False):
         found.extend(_problems(entry, model))
-    found.sort(key=lambda pair: pair[0].key)
+    found.sort(key=lambda pair: pair[0])
+    # words are sought for those alone that are shown: a case may have a hundred thousand unknown keys
+    shown = [told() for _, told in found[:_MOST_SHOWN]]
     if len(found) == 1:
-        problem, kind = found[0]
+        problem, kind = shown[0]
         return kind(problem.found, where=f"{file}: {problem.key}" if problem.key else file, remedy=problem.remedy)
-    lines = [f"  {problem}" for problem, _ in found[:_MOST_SHOWN]]
+    lines = [f"  {problem}" for problem, _ in shown]
     if len(found) > _MOST_SHOWN:
         lines.append(f"  and {len(found) - _MOST_SHOWN} more")
     return CaseError("\n".join([f"{len(found)} things are wrong", *lines]), where=file)
 
 
-def _problems(entry: Any, model: type[BaseModel]) -> Iterator[tuple[Problem, type[InputError]]]:
-    """Translate one entry of pydantic's list."""
+def _problems(entry: Any, model: type[BaseModel]) -> Iterator[tuple[str, _Told]]:
+    """Translate one entry of pydantic's list: key by key, what tells the problem."""
     location: tuple[str | int, ...] = entry["loc"]
     raised = entry.get("ctx", {}).get("error")
+    key = dotted(*location)
     if isinstance(raised, ProblemList):
         for problem in raised.problems:
-            yield problem, CaseError
+            yield problem.key, partial(_as_it_is, problem, CaseError)
     elif isinstance(raised, FluxmeshError):
-        yield (
-            Problem(dotted(*location), raised.found, raised.remedy),
-            UnitError if isinstance(raised, UnitError) else CaseError,
-        )
+        kind = UnitError if isinstance(raised, UnitError) else CaseError
+        yield key, partial(_as_it_is, Problem(key, raised.found, raised.remedy), kind)
     else:
-        yield _plain_problem(entry, location, model), CaseError
+        yield key, lambda: (_plain_problem(entry, location, model), CaseError)
+
+
+def _as_it_is(problem: Problem, kind: type[InputError]) -> tuple[Problem, type[InputError]]:
+    return problem, kind
 
 
 def _plain_problem(entry: Any, location: Sequence[str | int], model: type[BaseModel]) -> Problem:

@@ -35,7 +35,10 @@ def _named(groups: dict[str, GroupSection]) -> dict[str, GroupSection]:
         raise CaseError("there is no group", remedy="Write a table [groups.NAME] with a role for each face group")
     for name in groups:
         if not name.strip() or name != name.strip() or not name.isprintable():
-            raise CaseError(f"the group name {quoted(name)} is empty, starts or ends blank, or does not print")
+            raise CaseError(
+                f"the group name {quoted(name)} is empty, starts or ends blank, or does not print",
+                remedy="Give the group a plain name, and its faces by tag",
+            )
     return groups
 
 
@@ -122,8 +125,8 @@ class Case(CaseTables):
 
     @property
     def name(self) -> str:
-        """Name of the case: that of its file without the suffix."""
-        return self.path.stem
+        """Name of the case: that of its file without the suffix, never one that leads to another folder."""
+        return self.path.stem.strip(". ") or "case"
 
     @property
     def folder(self) -> Path:

@@ -10,7 +10,8 @@ from fluxmesh.units.wording import either, nearest, quoted
 
 __all__ = ["Problem", "ProblemList", "dotted", "meant"]
 
-_BARE_KEY = re.compile("[A-Za-z0-9_-]+")
+_BARE_KEY = re.compile("[A-Za-z0-9_-]{1,60}")
+_MOST_PARTS = 8
 
 
 @dataclass(frozen=True)
@@ -68,9 +69,11 @@ def dotted(*parts: str | int) -> str:
     Returns
     -------
     str
-        The parts joined by points, between quotes where TOML needs them.
+        The parts joined by points, between quotes where TOML needs them; shortened
+        where they are too long to be read.
     """
-    return ".".join(str(part) if _BARE_KEY.fullmatch(str(part)) else quoted(str(part)) for part in parts)
+    words = [str(part) if _BARE_KEY.fullmatch(str(part)) else quoted(str(part)) for part in parts]
+    return ".".join(words) if len(words) <= _MOST_PARTS else ".".join([*words[:_MOST_PARTS], "..."])
 
 
 def meant(name: str, candidates: Iterable[str]) -> str:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import re
 import tomllib
 from pathlib import Path
 from typing import Any
@@ -16,6 +17,9 @@ from fluxmesh.errors import FileError
 __all__ = ["parse_case", "read_case"]
 
 _LARGEST_FILE = 4_000_000  # bytes; a case is a page or two of text
+# A key of very many parts: the time that its parser takes grows with the square of them, to hours.
+_LONG_KEY = re.compile(r"""(?<![\w"'-])(?:(?:[\w-]++|"[^"\n]*+"|'[^'\n]*+')[ \t]*+\.[ \t]*+){40}""")
+_DEEP = "A case has tables within tables, three or four deep, and no deeper"
 
 
 def read_case(path: Path) -> Case:
@@ -55,7 +59,9 @@ def read_case(path: Path) -> Case:
     except (OSError, ValueError) as error:
         # ValueError: a path that no file can have
         reason = getattr(error, "strerror", None) or str(error)
-        raise FileError(f"it cannot be read: {reason}", where=str(path)) from error
+        raise FileError(
+            f"it cannot be read: {reason}", where=str(path), remedy="Give the path of a case file that may be read"
+        ) from error
     return parse_case(content, path)
 
 
@@ -111,12 +117,18 @@ def _toml(content: bytes, path: Path) -> dict[str, Any]:
         raise FileError(
             f"line {line} is not UTF-8 text", where=where, remedy="Give a case file in TOML, saved as UTF-8"
         ) from error
+    deep = _LONG_KEY.search(text)
+    if deep is not None:
+        line = text.count("\n", 0, deep.start()) + 1
+        raise FileError(f"line {line} has a key of very many parts", where=where, remedy=_DEEP)
     try:
         return tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
         raise FileError(f"it is not valid TOML: {error}", where=where, remedy="See toml.io for the format") from error
     except RecursionError as error:
-        raise FileError("its lists or tables are nested too deeply", where=where) from error
+        raise FileError("its lists or tables are nested too deeply", where=where, remedy=_DEEP) from error
     except ValueError as error:
         # such as an integer of thousands of digits
-        raise FileError(f"it is not valid TOML: {error}", where=where) from error
+        raise FileError(
+            f"it is not valid TOML: {error}", where=where, remedy="Write numbers as they are meant"
+        ) from error

@@ -12,7 +12,7 @@ from pydantic import BaseModel, ConfigDict, ValidationInfo
 from pydantic_core import CoreSchema, core_schema
 
 from fluxmesh.errors import CaseError, UnitError
-from fluxmesh.units import Measured, parse_quantity, parse_vector, unit_factor
+from fluxmesh.units import LARGEST, Measured, parse_quantity, parse_vector, unit_factor
 from fluxmesh.units.wording import described, quoted
 
 __all__ = [
@@ -63,6 +63,7 @@ __all__ = [
 ]
 
 Vector = tuple[float, float, float]
+_LONGEST_PATH = 1000
 
 
 class Table(BaseModel):
@@ -137,9 +138,9 @@ def _read_text(value: object) -> str:
     if not isinstance(value, str):
         raise CaseError(f"found {described(value)}, not a text", remedy="Write it between quotes")
     if not value.strip():
-        raise CaseError("found an empty text")
+        raise CaseError("found an empty text", remedy="Write it between the quotes, or leave the key out")
     if not value.isprintable():
-        raise CaseError(f"found {quoted(value)}, with characters that do not print")
+        raise CaseError(f"found {quoted(value)}, with characters that do not print", remedy="Leave them out")
     return value
 
 
@@ -200,9 +201,16 @@ def _read_numbers(value: object) -> tuple[float, ...]:
     if not isinstance(value, (list, tuple)) or len(value) < 2:
         raise CaseError(f"found {described(value)}, not a list of numbers", remedy="Write such as [0, 5, 10]")
     for entry in value:
-        if isinstance(entry, bool) or not isinstance(entry, (int, float)) or not math.isfinite(entry):
-            raise CaseError(f"found {described(entry)} in a list of numbers")
+        if isinstance(entry, bool) or not isinstance(entry, (int, float)) or not _finite(entry):
+            raise CaseError(f"found {described(entry)} in a list of numbers", remedy="Write such as [0, 5, 10]")
     return tuple(float(entry) for entry in value)
+
+
+def _finite(number: float) -> bool:
+    try:
+        return abs(float(number)) <= LARGEST
+    except OverflowError:
+        return False  # a whole number beyond the range of floats
 
 
 def _read_share(value: object) -> float:
@@ -216,7 +224,10 @@ def _read_path(value: object, info: ValidationInfo) -> Path:
     if isinstance(value, Path):
         return value
     folder = info.context["folder"] if isinstance(info.context, Mapping) else Path()
-    return Path(folder) / _read_text(value)
+    text = _read_text(value)
+    if len(text) > _LONGEST_PATH:
+        raise CaseError(f"found a path of {len(text)} characters", remedy="Give the path of a file")
+    return Path(folder) / text
 
 
 class _ReadPath:

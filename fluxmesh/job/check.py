@@ -23,7 +23,7 @@ from fluxmesh.job.inside import contents_in, storage_in
 from fluxmesh.job.laid import lay_case
 from fluxmesh.job.mesh import Loaded, load_mesh
 from fluxmesh.job.outcome import Outcome
-from fluxmesh.job.run import balance_of, hardware_of
+from fluxmesh.job.run import balance_of, hardware_of, run_case
 from fluxmesh.job.shape import Shape, read_shape
 from fluxmesh.surface.face_geometry import corners, face_geometry
 from fluxmesh.surface.rawmesh import RawMesh
@@ -59,7 +59,9 @@ def check_case(case: Case, *, loaded: Loaded | None = None) -> Review:
 
         at, outcome = governing_instant(case, run_series(case))
         return review_of(evidence_of(at, outcome=outcome))
-    return review_of(evidence_of(case, loaded=loaded))
+    # all that the balance would refuse is told here too
+    loaded = loaded or load_mesh(case)
+    return review_of(evidence_of(case, loaded=loaded, outcome=run_case(case, loaded=loaded)))
 
 
 def with_doubts(case: Case, outcome: Outcome, *, loaded: Loaded | None = None) -> Outcome:

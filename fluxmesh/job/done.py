@@ -8,13 +8,15 @@ from fluxmesh.job.outcome import Outcome
 __all__ = ["done_case"]
 
 
-def done_case(case: Case) -> Outcome:
+def done_case(case: Case, *, budget: bool = False) -> Outcome:
     """Do a case, with the doubts of `check` where the surface is small enough to be reviewed on the way.
 
     Parameters
     ----------
     case : Case
         A case that was read.
+    budget : bool, optional
+        Whether with the doubt of every figure too, as far as `balance` tells it.
 
     Returns
     -------
@@ -35,9 +37,20 @@ def done_case(case: Case) -> Outcome:
         from fluxmesh.job.series import run_series
 
         at, done = governing_instant(case, run_series(case))
-        return with_doubts(at, done) if done.surface.face_count <= REVIEWED_FACES else done
+        small = done.surface.face_count <= REVIEWED_FACES
+        return _told(at, with_doubts(at, done) if small else done, budget and small)
     loaded = load_ahead(case)
     from fluxmesh.job.run import REVIEWED_FACES, run_case
 
     done = run_case(case, loaded=loaded)
-    return with_doubts(case, done, loaded=loaded) if done.surface.face_count <= REVIEWED_FACES else done
+    small = done.surface.face_count <= REVIEWED_FACES
+    done = with_doubts(case, done, loaded=loaded) if small else done
+    return _told(case, done, budget and (small or case.flow.reconstruction == "quadratic"))
+
+
+def _told(case: Case, done: Outcome, budget: bool) -> Outcome:
+    if not budget:
+        return done
+    from fluxmesh.job.doubted import with_budget
+
+    return with_budget(case, done)

@@ -43,8 +43,17 @@ def export_case(path: Path, *, out: Path | None = None) -> list[Path]:
     from fluxmesh.job.done import done_case
     from fluxmesh.report.export import write_export
 
-    done = done_case(case)
-    return write_export(folder, done.surface, done.flow, done.balance, done.data(), export_scalars(case, done))
+    done = done_case(case, budget=True)
+    remarks = ["The ledgers are sharpened by quadratic patches; the arrays here are the plain ones"]
+    return write_export(
+        folder,
+        done.surface,
+        done.flow,
+        done.balance,
+        done.data(),
+        export_scalars(case, done),
+        remarks=remarks if done.sharpened_reported else (),
+    )
 
 
 def export_scalars(case: Case, done: Outcome) -> list[FaceScalar]:

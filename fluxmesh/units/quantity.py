@@ -13,11 +13,15 @@ from fluxmesh.units.expression import parse_unit
 from fluxmesh.units.table import DIMENSIONLESS, UNITS, Unit
 from fluxmesh.units.wording import described, dimension_example, dimension_name, nearest, quoted, with_article
 
-__all__ = ["Measured", "parse_quantity", "parse_vector", "unit_factor"]
+__all__ = ["LARGEST", "Measured", "parse_quantity", "parse_vector", "unit_factor"]
+
+LARGEST = 1e20
+"""Largest size of a number in SI that is taken: of products of several of them, squared, none overflows."""
 
 _LONGEST_TEXT = 160
 _NUMBER = r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
 _WITH_UNIT = re.compile(rf" *({_NUMBER}) *(.*?) *", re.DOTALL)
+_ABSURD = "No flow has that: check the number and its unit"
 _PLUS_MINUS = re.compile(r"\+/-|\+-|±")
 _BRACKETED = re.compile(r" *\(([^()]*)\)(.*)", re.DOTALL)
 
@@ -132,6 +136,8 @@ def parse_vector(value: object, dimension_unit: str, key: str) -> tuple[float, f
         x = y = z = math.inf
     if not (math.isfinite(x) and math.isfinite(y) and math.isfinite(z)):
         raise UnitError("a component is not finite", key, example)
+    if max(abs(x), abs(y), abs(z)) > LARGEST:
+        raise UnitError(f"a component is beyond {LARGEST:g} in SI", key, _ABSURD)
     return (x, y, z)
 
 
@@ -240,6 +246,8 @@ def _scaled(number: float, unit: Unit, text: str) -> float:
 def _finite(number: float, text: str) -> float:
     if not math.isfinite(number):
         raise UnitError(f"{quoted(text)} is not a finite number")
+    if abs(number) > LARGEST:
+        raise UnitError(f"{quoted(text)} is beyond {LARGEST:g} in SI", remedy=_ABSURD)
     return number
 
 
@@ -252,6 +260,8 @@ def _number(value: object) -> float:
         number = math.inf
     if not math.isfinite(number):
         raise UnitError(f"found {described(value)}, which is not finite")
+    if abs(number) > LARGEST:
+        raise UnitError(f"found {described(value)}, which is beyond {LARGEST:g}", remedy=_ABSURD)
     return number
 
 

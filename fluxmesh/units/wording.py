@@ -8,7 +8,16 @@ from numbers import Real
 
 from fluxmesh.units.table import Dimension
 
-__all__ = ["described", "dimension_example", "dimension_name", "either", "nearest", "quoted", "with_article"]
+__all__ = [
+    "described",
+    "dimension_example",
+    "dimension_name",
+    "either",
+    "nearest",
+    "printable",
+    "quoted",
+    "with_article",
+]
 
 _LONGEST_SHOWN = 60
 _SHORTEST_GUESSED = 3  # any two letters are similar to something
@@ -110,7 +119,25 @@ def quoted(text: str) -> str:
         The text in double quotes; characters that do not print are escaped.
     """
     cut = text[:_LONGEST_SHOWN] + ("..." if len(text) > _LONGEST_SHOWN else "")
-    return '"' + "".join(c if c.isprintable() else f"\\u{ord(c):04x}" for c in cut) + '"'
+    return f'"{printable(cut)}"'
+
+
+def printable(text: str) -> str:
+    """Escape what could upset a terminal: controls, signs that turn the direction of a text.
+
+    Parameters
+    ----------
+    text : str
+        Any text, such as a name from a file.
+
+    Returns
+    -------
+    str
+        The same where all of it prints.
+    """
+    if text.isprintable():
+        return text
+    return "".join(c if c.isprintable() else f"\\u{ord(c):04x}" for c in text)
 
 
 def described(value: object) -> str:

@@ -1,0 +1,116 @@
+"""What fuzzing found (`scripts/fuzz`): the inputs that were not ended well, brought down to their core."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+
+from tests.corpus.damage import damaged, mesh_case
+from tests.corpus.entry import Input, files
+from tests.corpus.shapes import CUBE, PICKED, TAGGED, TRIANGLES, legacy, ply, vtp, vtu
+from tests.corpus.vtk_files import _compressed as packed_vtp
+
+__all__ = ["inputs"]
+
+
+def inputs() -> Iterator[Input]:
+    """Yield the inputs."""
+    yield from _legacy()
+    yield from _ply()
+    yield from _ghosts()
+    yield from _sets()
+    yield from _packed()
+
+
+def _legacy() -> Iterator[Input]:
+    # VTK writes such notes after an array whose values are all of one size: they are no array of two times two values
+    notes = "METADATA\nINFORMATION 1\nNAME L2_NORM_RANGE LOCATION vtkDataArray\nDATA 2 2 2 \n\n"
+    yield Input(
+        "fuzzed/legacy vtk with notes at its end",
+        "the notes on the last array look like an array",
+        files({"case.toml": mesh_case("cube.vtk", TAGGED), "cube.vtk": legacy(notes)}),
+        end="answered",
+    )
+    yield Input(
+        "fuzzed/legacy vtk cut before its notes",
+        "the last array ends early, and notes follow",
+        files({"case.toml": mesh_case("cube.vtk", TAGGED), "cube.vtk": legacy().rsplit(" ", 2)[0] + "\n" + notes}),
+        says=("cube.vtk",),
+    )
+
+
+def _ply() -> Iterator[Input]:
+    yield from damaged(
+        "fuzzed/ply",
+        "cube.ply",
+        ply(),
+        [
+            ("an index that is NaN", "3 0 3 2", "3 0 nan 2"),
+            ("an index at infinity", "3 0 3 2", "3 0 inf 2"),
+            ("an index beyond its type", "3 0 3 2", "3 0 4294967296 2"),
+            ("an index between two points", "3 0 3 2", "3 0 2.5 2"),
+            ("a length that is NaN", "3 0 3 2", "nan 0 3 2"),
+            ("a length at infinity", "3 0 2 1", "inf 0 2 1"),
+            ("a length of 1e300", "3 0 2 1", "1e300 0 2 1"),
+            ("a length of 3.5", "3 0 2 1", "3.5 0 2 1"),
+            ("a length beyond its type", "3 0 3 2", "259 0 3 2"),
+        ],
+    )
+    small = ply().replace("double y", "float y").replace("1.0 1.0 0.0", "1.0 1e39 0.0")
+    yield Input(
+        "fuzzed/ply/a coordinate beyond its type",
+        "a coordinate is 1e39, of type float",
+        files({"case.toml": mesh_case("cube.ply"), "cube.ply": small}),
+        says=("cube.ply",),
+    )
+
+
+def _ghosts() -> Iterator[Input]:
+    # the name of an array that VTK gives a meaning to
+    for name, marks, end in (
+        ("floats", np.zeros(12), "refused"),
+        ("three a cell", np.zeros((12, 3), int), "refused"),
+        ("words", np.array(["no"] * 12), "refused"),
+        ("whole numbers of 64 bits", np.zeros(12, int), "answered"),
+    ):
+        mesh = vtp(CUBE, TRIANGLES, on_faces={"vtkGhostType": marks})
+        says = ("vtkGhostType",) if end == "refused" else ()
+        yield Input(
+            f"fuzzed/ghosts are {name}",
+            f"marks of ghost cells are {name}",
+            files({"case.toml": PICKED, "cube.vtp": mesh}),
+            end,
+            says=says,
+            alone=True,
+        )  # type: ignore[arg-type]
+
+
+def _sets() -> Iterator[Input]:
+    # kinds that are paths to a library that looks for the element
+    for kind in ("[", "*[", "..", "./", "*", "", "{*}", "feed[@a=]"):
+        index = f'<VTKFile type="{kind}" version="1.0"><Piece Source="part.vtu"/></VTKFile>'
+        yield Input(
+            f"fuzzed/a set of kind {kind!r}",
+            "the kind of a set is no word",
+            files({"case.toml": mesh_case("cube.pvtu"), "cube.pvtu": index, "part.vtu": vtu}),
+            says=("cube.pvtu",),
+        )
+
+
+def _packed() -> Iterator[Input]:
+    # an array is packed as: number of blocks, bytes of a block, bytes of the last one
+    for full, last in ((0, 192), (0, 0), (16, 192), (32768, 2**32 - 1)):
+
+        def made(full: int = full, last: int = last) -> bytes:
+            data = packed_vtp()
+            at = data.index(b"_", data.index(b"<AppendedData")) + 1
+            return data[: at + 4] + full.to_bytes(4, "little") + last.to_bytes(4, "little") + data[at + 12 :]
+
+        yield Input(
+            f"fuzzed/packed in blocks of {full} and {last}",
+            "the blocks of a packed array have odd sizes",
+            files({"case.toml": mesh_case("cube.vtp", TAGGED), "cube.vtp": made}),
+            says=("cube.vtp",),
+            alone=True,
+        )
