@@ -1,0 +1,1 @@
+"""Inputs that chance spoils, and what must hold of each."""
