@@ -9,8 +9,10 @@ from typing import Any
 
 import fluxmesh
 from fluxmesh.case.read import read_case
+from fluxmesh.job.check import with_doubts
+from fluxmesh.job.done import done_case
+from fluxmesh.job.doubted import with_budget
 from fluxmesh.job.governing import governing_instant
-from fluxmesh.job.run import run_case
 from fluxmesh.job.series import run_series
 from fluxmesh.report.scene import Scene
 from fluxmesh.report.sketch import scene_of
@@ -34,13 +36,14 @@ class Made:
 
 @cache
 def made(name: str) -> Made:
-    """Run a shipped case."""
+    """Run a shipped case as `balance` does it, with the doubt of every figure."""
     case, series = read_case(SHIPPED[name]), None
     if case.storage is not None and case.storage.is_series():
         whole = run_series(case, progress=None)
         series = whole.data()
-        _, done = governing_instant(case, whole)
+        at, done = governing_instant(case, whole)
+        done = with_budget(at, with_doubts(at, done))
     else:
-        done = run_case(case)
+        done = done_case(case, budget=True)
     scene = scene_of(done.title, done.surface, done.flow, done.balance, notes=done.picture_notes())
     return Made(done.data(), scene, series, SHIPPED[name].read_text("utf-8"))

@@ -8,6 +8,7 @@ import json
 import re
 from collections.abc import Callable
 from dataclasses import replace
+from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
@@ -404,6 +405,53 @@ def test_ledgers_hold_what_the_result_holds_to_the_last_digit(block: Block) -> N
     figures = data["ports"]["drain"]
     assert float(ports[1]["mean total pressure, by mass flow, Pa"]) == figures["mean_total_pressure"]["mass_flow"]
     assert "mean temperature, by area, K" not in ports[1]  # of no port
+
+
+def test_a_doubt_stands_beside_each_figure_that_has_one(block: Block) -> None:
+    block.change('density = "1000 kg/m^3"', 'density = "1000 +/- 4 kg/m^3"')
+    data = done_case(read_case(block.case), budget=True).data()
+    files = csv_files(data)
+    _, groups = rows_of(files["groups.csv"])
+    for row, entries in zip(groups, data["groups"].values()):
+        for key, head in (("area", "area, m^2"), ("mass_flow", "mass flow out, kg/s")):
+            assert float(row[f"doubt at 95 % of {head}"]) == entries[f"{key}_uncertainty"]
+        for axis, half in zip("xyz", entries["pressure_force_uncertainty"]):
+            assert float(row[f"doubt at 95 % of pressure force on fluid {axis}, N"]) == half
+    assert not [head for head in groups[0] if head.startswith("doubt") and "known" in head]
+    remarks, loads = rows_of(files["loads.csv"])
+    reaction, wrench = next(row for row in loads if row["who on whom"] == "anchor on hardware"), data["reaction"]
+    for axis, half in zip("xyz", wrench["force_uncertainty"]):
+        assert float(reaction[f"doubt at 95 % of force {axis}, N"]) == half
+    assert float(reaction["size of force, N"]) == wrench["force_size"] == np.linalg.norm(wrench["force"])
+    assert float(reaction["doubt at 95 % of size of force, N"]) == wrench["force_size_uncertainty"]
+    assert float(reaction["doubt at 95 % of size of moment, N m"]) == wrench["moment_size_uncertainty"]
+    _, rows = rows_of(files["momentum.csv"])
+    residual = next(row for row in rows if row["entry"] == "residual")
+    assert [float(residual[f"doubt at 95 % of force {axis}, N"]) for axis in "xyz"] == data["momentum"][
+        "residual_uncertainty"
+    ]
+    _, mass = rows_of(files["mass.csv"])
+    inflow = next(row for row in mass if row["entry"] == "inflow")
+    assert float(inflow["doubt at 95 % of mass rate, kg/s"]) == data["mass"]["inflow_uncertainty"]
+    _, ports = rows_of(files["ports.csv"])
+    first = next(iter(data["ports"].values()))
+    assert float(ports[0]["doubt at 95 % of mean pressure, by area, Pa"]) == first["mean_pressure"]["area_uncertainty"]
+    # in every file a doubt stands in the column after its figure
+    for text in files.values():
+        heads = next(csv.reader([line for line in text.split("\n") if not line.startswith("# ")]))
+        for before, head in pairwise(heads):
+            assert not head.startswith("doubt") or head == f"doubt at 95 % of {before}"
+    assert "half width of the 95 % interval" in "\n".join(remarks)
+
+
+def test_an_export_comes_with_its_doubts(block: Block, tmp_path: Path) -> None:
+    block.change("[flow]", '[flow]\nreconstruction = "quadratic"')
+    import pyvista
+
+    made = export_case(block.case, out=tmp_path / "out")
+    text = (tmp_path / "out" / "loads.csv").read_text("utf-8")
+    assert "doubt at 95 % of size of force, N" in text
+    assert "arrays here are the plain ones" in str(list(pyvista.read(made[0]).field_data["meaning"]))
 
 
 def test_every_file_has_assumptions_and_cautions_above_it(block: Block) -> None:

@@ -21,7 +21,7 @@ from fluxmesh.errors import OutputError
 from fluxmesh.job.page import write_report
 from fluxmesh.job.run import run_case
 from fluxmesh.report.page import page as page_module
-from fluxmesh.report.page.digits import digits_of, percent_of
+from fluxmesh.report.page.digits import digits_of, percent_of, plus_minus
 from fluxmesh.report.page.grid import Block, Column, Grid, Line, shown_cells
 from fluxmesh.report.page.page import MOST_BYTES, page_html, write_page
 from fluxmesh.report.page.scene3d import pack_scene, thinned
@@ -91,7 +91,7 @@ def test_every_number_is_printed_to_its_digits(name: str) -> None:
             # what is printed as nothing is round-off beside the largest of its kind
             assert abs(value) <= 1e-12 * max(sizes[unit], 1.0)
         else:
-            digits = 2e-2 if element.has("class", "pm") else 5.1e-5 if unit != "%" else 5.1e-3
+            digits = 5.1e-2 if element.has("class", "pm") else 5.1e-5 if unit != "%" else 5.1e-3
             assert printed(text) * FACTORS[unit] == pytest.approx(value, rel=digits)
 
 
@@ -152,6 +152,35 @@ def test_one_quantity_has_one_unit_on_the_page() -> None:
 )
 def test_engineering_digits(value: float, size: float, text: str) -> None:
     assert str(digits_of(value, size)) == text
+
+
+@pytest.mark.parametrize(
+    ("half", "power", "text"),
+    [(0.36125, 0, "0.36"), (1.8e-5, 0, "0.000018"), (1.8e-5, -6, "18×10^\u22126"), (2.5e3, 6, "0.0025×10^6")],
+)
+def test_a_doubt_has_the_power_of_ten_of_its_number(half: float, power: int, text: str) -> None:
+    assert str(plus_minus(half, power)) == text
+
+
+def test_the_size_of_the_reaction_has_its_doubt() -> None:
+    root, data = page("header", units="us"), made("header").data
+    big = by_class(root, "big")[0]
+    number, half = numbers(big)
+    assert float(number.attributes["data-value"]) == data["reaction"]["force_size"]
+    assert math.hypot(*data["reaction"]["force"]) == pytest.approx(data["reaction"]["force_size"], rel=1e-15)
+    assert half.attributes["data-key"] == "/reaction/force_size_uncertainty"
+    assert float(half.attributes["data-value"]) == data["reaction"]["force_size_uncertainty"]
+    # no more than all components together; where their errors cancel along the force, a tenth of it
+    parts = data["reaction"]["force_uncertainty"]
+    assert 0.099 * math.hypot(*parts) < data["reaction"]["force_size_uncertainty"] <= math.hypot(*parts)
+    assert big.text().count("±") == 2
+    sizes = {one.attributes.get("data-key") for one in numbers(root)}
+    assert {"/hardware_load/from_balance/force_size_uncertainty", "/reaction/moment_size_uncertainty"} <= sizes
+    # a result that does not have it yet still has its size
+    older = copy.deepcopy(data)
+    del older["reaction"]["force_size"], older["reaction"]["force_size_uncertainty"]
+    number = numbers(by_class(read_page(page_html(older, None)), "big")[0])[0]
+    assert number.text() == "894.84"
 
 
 def test_shares() -> None:

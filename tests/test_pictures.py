@@ -21,7 +21,14 @@ from fluxmesh.report.picture_legend import ROLE_TINTS, stack_rows
 from fluxmesh.report.picture_ports import find_ports
 from fluxmesh.report.picture_pressure import pressure_bands
 from fluxmesh.report.picture_sheet import Sheet
-from fluxmesh.report.picture_text import Ruler, clean_text, engineering, engineering_vector, nice_step
+from fluxmesh.report.picture_text import (
+    Ruler,
+    clean_text,
+    engineering,
+    engineering_vector,
+    nice_step,
+    true_signs,
+)
 from fluxmesh.report.picture_view import View, axes_for, choose_direction, fit
 from fluxmesh.report.pictures import draw_pressure, draw_vectors
 from fluxmesh.report.scene import ARROW_KINDS, Arrow, Marker, Scene, area_vectors, merge_points, thin
@@ -438,6 +445,24 @@ def test_every_force_has_a_row_under_its_bodies() -> None:
     assert only_ports.rows[0].heading == "surroundings on control volume: pressure at"
 
 
+def test_a_long_name_takes_a_second_line_where_there_is_room() -> None:
+    from fluxmesh.report.picture_legend import _draw_line
+
+    item = drawn(box_scene(), front_view())["L"]
+    long = replace(item, arrow=replace(item.arrow, label="load of the flow, weight of fluid included"))
+    sheet = Sheet((1600, 1200))
+    assert _draw_line(sheet, long, 1030.0, 1570.0, 600.0, 1.0, True)
+    first = [mark.get_text() for mark in sheet._axes.texts][-1]
+    assert first.startswith("load of")
+    assert "…" not in first
+    rest = _draw_line(sheet, long, 1030.0, 1570.0, 600.0, 1.0, True)
+    assert f"{first} {rest}" == long.arrow.label
+    # without room it is cut, and a short name needs none
+    assert not _draw_line(sheet, long, 1030.0, 1570.0, 600.0, 1.0, False)
+    assert "…" in [mark.get_text() for mark in sheet._axes.texts][-1]
+    assert not _draw_line(sheet, item, 1030.0, 1570.0, 600.0, 1.0, True)
+
+
 # ---- view
 
 
@@ -631,3 +656,10 @@ def test_text_is_cleaned_cut_and_wrapped() -> None:
     assert all(ruler.width(line, 18.0) <= 120.0 for line in lines)
     assert " ".join(lines).startswith("one two three four five w")
     assert ruler.wrap("", 18.0, 100.0) == []
+
+
+def test_notes_have_true_signs_and_powers_of_ten() -> None:
+    text = "a moment of (-15.98, 0, -8.327e-13) N m, gravity (0, 0, -9.8) m/s², port-2 at 1e5, 2.5e+07 Pa"
+    assert true_signs(text) == (
+        "a moment of (\u221215.98, 0, \u22128.327×10⁻¹³) N·m, gravity (0, 0, \u22129.8) m/s², port-2 at 1e5, 2.5×10⁷ Pa"
+    )

@@ -14,7 +14,7 @@ from fluxmesh.report.export_csv import csv_files
 from fluxmesh.report.export_faces import FaceScalar, face_fields
 from fluxmesh.report.export_vtp import Numbers, PolygonData, outlines, vtp_bytes
 from fluxmesh.report.sketch import arrows_of
-from fluxmesh.report.whole import require_writable, write_whole
+from fluxmesh.report.whole import require_writable, write_together
 from fluxmesh.surface.surface import ControlSurface, Role
 
 __all__ = ["EXPORTED", "surface_file", "vectors_file", "write_export"]
@@ -48,6 +48,7 @@ def surface_file(
     data: Mapping[str, Any],
     scalars: Sequence[FaceScalar] = (),
     *,
+    remarks: Sequence[str] = (),
     threads: int | None = None,
 ) -> bytes:
     """Return the surface with all derived fields of its faces as a VTK XML file.
@@ -64,6 +65,8 @@ def surface_file(
         What ``balance.json`` holds: title, assumptions, cautions, verdict.
     scalars : sequence of FaceScalar, optional
         What else the flow carries.
+    remarks : sequence of str, optional
+        What else must be known to read the arrays.
     threads : int, optional
         Threads; all cores by default. The result does not depend on it.
 
@@ -80,6 +83,7 @@ def surface_file(
         texts["meaning"].append(
             "The surface is a part that was cut at its symmetry groups; the ledgers are those of the whole"
         )
+    texts["meaning"] += remarks
     if surface.kinds is not None and surface.kinds.any():
         texts["meaning"].append("Curved faces are drawn as polygons through their mid-side points; figures are exact")
     texts |= {
@@ -160,6 +164,8 @@ def write_export(
     balance: Balance,
     data: Mapping[str, Any],
     scalars: Sequence[FaceScalar] = (),
+    *,
+    remarks: Sequence[str] = (),
 ) -> list[Path]:
     """Write all files of an export; each appears whole or not at all.
 
@@ -177,6 +183,8 @@ def write_export(
         What ``balance.json`` holds.
     scalars : sequence of FaceScalar, optional
         What else the flow carries.
+    remarks : sequence of str, optional
+        What else must be known to read the arrays of the surface.
 
     Returns
     -------
@@ -193,13 +201,9 @@ def write_export(
     """
     require_writable(folder)
     contents = {
-        "surface.vtp": surface_file(surface, flow, balance, data, scalars),
+        "surface.vtp": surface_file(surface, flow, balance, data, scalars, remarks=remarks),
         "vectors.vtp": vectors_file(balance, data),
         **{name: text.encode() for name, text in csv_files(data).items()},
     }
-    for name in EXPORTED:
-        if name not in contents:
-            (folder / name).unlink(missing_ok=True)
-    for name, content in contents.items():
-        write_whole(content, folder / name)
+    write_together({folder / name: content for name, content in contents.items()}, [folder / old for old in EXPORTED])
     return [folder / name for name in contents]

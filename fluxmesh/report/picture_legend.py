@@ -11,7 +11,7 @@ from fluxmesh.assess.assumptions import CAUTIONS
 from fluxmesh.report.picture_arrows import ARROW_STYLES, DrawnArrow, chained
 from fluxmesh.report.picture_pressure import Bands
 from fluxmesh.report.picture_sheet import Sheet
-from fluxmesh.report.picture_text import engineering, engineering_vector
+from fluxmesh.report.picture_text import engineering, engineering_vector, true_signs
 from fluxmesh.report.scene import ARROW_KINDS, Scene
 
 __all__ = ["ROLE_TINTS", "Listing", "Row", "draw_footer", "draw_legend", "stack_rows"]
@@ -33,6 +33,7 @@ _ONE_LINE = 27.0
 _SMALLEST_ROW = 0.8
 _SMALLEST_LINE = 0.7
 _NOTE_LINE = 21.0
+_NAME_LINE = 18.0  # the second line of a long name
 _MOST_NOTE_LINES = 9
 
 
@@ -148,8 +149,10 @@ def draw_legend(
     notes_height = _NOTE_LINE * len(notes) * u
     tints = _tints(scene, bands, window)
     tints_height = (34.0 * ((len(tints) + 1) // 2) + 8.0) * u
-    listing = stack_rows(arrows, (top - bottom - notes_height - tints_height) / u - 40.0)
+    room = (top - bottom - notes_height - tints_height) / u - 40.0
+    listing = stack_rows(arrows, room)
     shrink = listing.shrink
+    spare = room - shrink * sum(_HEADING if row.item is None else _ONE_LINE for row in listing.rows)
     y = top
     for row in listing.rows:
         if row.item is None:
@@ -159,7 +162,11 @@ def draw_legend(
             sheet.line([(left, y), (right, y)], 1.0 * u, colour="#999999")
         elif listing.one_line:
             y -= _ONE_LINE * shrink * u
-            _draw_line(sheet, row.item, left, right, y, shrink)
+            rest = _draw_line(sheet, row.item, left, right, y, shrink, spare >= _NAME_LINE)
+            if rest:
+                spare -= _NAME_LINE
+                y -= _NAME_LINE * shrink * u
+                sheet.text(left + 94 * u, y + 6 * shrink * u, rest, 15 * shrink * u)
         else:
             y -= _ROW * shrink * u
             _draw_row(sheet, row.item, left, right, y, shrink)
@@ -207,8 +214,11 @@ def _draw_row(sheet: Sheet, item: DrawnArrow, left: float, right: float, y: floa
     sheet.text(x + gap, y + 5 * f, parts, size)
 
 
-def _draw_line(sheet: Sheet, item: DrawnArrow, left: float, right: float, y: float, shrink: float) -> None:
-    """Draw one force in one line: a short sample of its arrow, its tag, its name and its numbers."""
+def _draw_line(sheet: Sheet, item: DrawnArrow, left: float, right: float, y: float, shrink: float, second: bool) -> str:
+    """Draw one force in one line: a short sample of its arrow, its tag, its name and its numbers.
+
+    Returns what of the name must stand in a second line, where there may be one.
+    """
     u = sheet.unit
     f = shrink * u
     size = 15 * f
@@ -227,7 +237,13 @@ def _draw_line(sheet: Sheet, item: DrawnArrow, left: float, right: float, y: flo
     room = right - wide - 18 * u - sheet.ruler.width(length, size, True) - x
     name = item.arrow.label if item.arrow.group is None else item.arrow.group
     name += (" ‡" if item.moved else "") + ("" if item.drawn else " (not drawn)")
-    sheet.text(x, y + 6 * f, sheet.ruler.shorten(name, size, room), size)
+    first, rest = name, ""
+    if second and sheet.ruler.width(name, size) > room:
+        first, *_ = sheet.ruler.wrap(name, size, room)
+        rest = sheet.ruler.shorten(name[len(first) :].lstrip(), size, right - x) if name.startswith(first) else ""
+        first = first if rest else name
+    sheet.text(x, y + 6 * f, sheet.ruler.shorten(first, size, room), size)
+    return rest
 
 
 def _remarks(arrows: Sequence[DrawnArrow]) -> list[str]:
@@ -302,7 +318,7 @@ def draw_footer(sheet: Sheet, notes: Sequence[str], margin: float) -> float:
     u = sheet.unit
     room = sheet.size[0] - 2 * margin
     # notes run on in one paragraph: there may be many short ones
-    said = " ".join(f"{text.rstrip(' .')}." for text in notes)
+    said = true_signs(" ".join(f"{text.rstrip(' .')}." for text in notes))
     lines = sheet.ruler.wrap(said, 16 * u, room)
     if len(lines) > _MOST_NOTE_LINES:
         lines = [*lines[: _MOST_NOTE_LINES - 1], "… More stands in the result file."]

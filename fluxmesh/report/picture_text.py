@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import re
 import unicodedata
 import warnings
 from collections.abc import Iterator, Sequence
@@ -16,6 +17,7 @@ __all__ = [
     "engineering",
     "engineering_vector",
     "nice_step",
+    "true_signs",
 ]
 
 _PREFIXES = ((1e9, "G"), (1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "µ"))
@@ -23,6 +25,7 @@ _PREFIXES = ((1e9, "G"), (1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, 
 _LEAST, _MOST = 1e-6, 1e12
 _LEFT_TO_RIGHT = "\u200e"
 _ELLIPSIS = "…"
+_RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
 
 def clean_text(text: str) -> str:
@@ -45,6 +48,22 @@ def clean_text(text: str) -> str:
     # the line as a whole runs from left to right, whatever its first letter
     mixed = any(unicodedata.bidirectional(char) in ("R", "AL") for char in line)
     return _LEFT_TO_RIGHT + line if mixed else line
+
+
+def true_signs(text: str) -> str:
+    """Return text whose numbers have the minus sign and the product of units that figures in print have.
+
+    Parameters
+    ----------
+    text : str
+        Sentences with components in parentheses, as the terminal shows them.
+    """
+    text = re.sub(r"(?<=[(, ])-(?=\d)", "\u2212", text).replace(" N m", " N·m")
+    return re.sub(r"(?<=\d)e([+-])0*(\d+)\b", _power_of_ten, text)
+
+
+def _power_of_ten(found: re.Match[str]) -> str:
+    return f"×10{(found[1] + found[2]).lstrip('+').translate(_RAISED)}"
 
 
 def _scale(value: float) -> tuple[float, str]:

@@ -24,7 +24,7 @@ from fluxmesh.report.laws import carried_data, energy_data
 from fluxmesh.report.ports import losses_data, ports_data
 from fluxmesh.report.whole import write_whole
 
-__all__ = ["SCHEMA", "result_data", "write_json"]
+__all__ = ["SCHEMA", "json_bytes", "result_data", "write_json"]
 
 if TYPE_CHECKING:
     from fluxmesh.assess.review import Doubt
@@ -60,7 +60,14 @@ def _ledger(ledger: Ledger, complete: bool) -> dict[str, Any]:
 
 
 def _load(wrench: Wrench | None) -> dict[str, Any] | None:
-    return None if wrench is None else {"force": wrench.force, "moment": _whole(wrench.moment)}
+    if wrench is None:
+        return None
+    return {
+        "force": wrench.force,
+        "moment": _whole(wrench.moment),
+        "force_size": np.linalg.norm(wrench.force),
+        "moment_size": np.linalg.norm(wrench.moment),
+    }
 
 
 def _whole(vector: Vector) -> Vector | None:
@@ -198,8 +205,7 @@ def result_data(
             "body": "anchor on hardware",
             "basis": balance.reaction.basis,
             "at": balance.reaction.wrench.at,
-            "force": balance.reaction.wrench.force,
-            "moment": _whole(balance.reaction.wrench.moment),
+            **(_load(balance.reaction.wrench) or {}),
             "line_of_action": None
             if isnan(axis.couple)
             else {"point": axis.point, "direction": axis.direction, "couple": axis.couple},
@@ -241,10 +247,40 @@ def _sharpened(balance: Balance) -> dict[str, Any]:
         if reaction is None
         else {
             "at": reaction.wrench.at,
-            "force": reaction.wrench.force,
-            "moment": _whole(reaction.wrench.moment),
+            **(_load(reaction.wrench) or {}),
         },
     }
+
+
+def json_bytes(data: dict[str, Any], where: str = "") -> bytes:
+    """Return plain data as JSON.
+
+    Parameters
+    ----------
+    data : dict
+        From `result_data`.
+    where : str, optional
+        File they are for, for messages.
+
+    Returns
+    -------
+    bytes
+        In UTF-8.
+
+    Raises
+    ------
+    FieldError
+        A figure that has overflowed.
+    """
+    try:
+        text = json.dumps(data, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+    except ValueError as error:
+        raise FieldError(
+            "a figure overflows",
+            where=where,
+            remedy="Check the numbers of the case and the fields for absurd sizes",
+        ) from error
+    return text.encode("utf-8")
 
 
 def write_json(data: dict[str, Any], path: Path) -> None:
@@ -264,10 +300,4 @@ def write_json(data: dict[str, Any], path: Path) -> None:
     FieldError
         A figure that has overflowed.
     """
-    try:
-        text = json.dumps(data, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
-    except ValueError as error:
-        raise FieldError(
-            "a figure overflows", remedy="Check the numbers of the case and the fields for absurd sizes"
-        ) from error
-    write_whole(text.encode("utf-8"), path)
+    write_whole(json_bytes(data, str(path)), path)

@@ -280,10 +280,15 @@ def _signed(kind: str, figures: Figures, error: Array) -> Contribution:
 
 
 def _lengths(figures: Figures, sizes: Array) -> Array:
-    """Length of each figure's vector, at each of its components; NaN stays with its own component."""
+    """Length of each figure's vector, at each of its components; NaN stays with its own component.
+
+    The size of a vector is one of its components, that along the vector.
+    """
     found = np.zeros(sizes.size)
+    spots = {spot.path: spot for spot in figures.spots}
     for spot in figures.spots:
-        found[spot.slice] = np.sqrt(np.nansum(sizes[spot.slice] ** 2)) if spot.count > 1 else 0.0
+        whole = spots.get((*spot.path[:-1], spot.path[-1].removesuffix("_size")), spot)
+        found[spot.slice] = np.sqrt(np.nansum(sizes[whole.slice] ** 2)) if whole.count > 1 else 0.0
     return np.where(np.isnan(sizes), np.nan, found)
 
 

@@ -289,6 +289,9 @@ def _wrench(path: Path, wrench: Wrench | None) -> Iterator[_Entry]:
     if wrench is not None:
         yield (*path, "force"), wrench.force, "N"
         yield (*path, "moment"), _known(wrench.moment), "N m"
+        yield (*path, "force_size"), np.linalg.norm(wrench.force), "N"
+        if np.isfinite(wrench.moment).all():
+            yield (*path, "moment_size"), np.linalg.norm(wrench.moment), "N m"
 
 
 def _known(vector: Array) -> Array | None:

@@ -91,14 +91,20 @@ def as_given(value: float) -> Digits:
     return Digits(f"{_MINUS if value < 0 else ''}{int(whole.lstrip('-')):,}{point}{part}")
 
 
-def plus_minus(half: float) -> Digits:
+def plus_minus(half: float, power: int = 0) -> Digits:
     """Write a half width to two significant digits.
 
     Parameters
     ----------
     half : float
         In any unit, 0 or more.
+    power : int, optional
+        Power of ten of the number that it stands beside, which it takes too.
     """
+    if power and isfinite(half):
+        front = digits_of(half / 10.0**power, significant=2, plain_least=1e-6)
+        if not front.power:
+            return Digits(front.text, power, 0)
     return digits_of(half, significant=2, plain_least=1e-6)
 
 

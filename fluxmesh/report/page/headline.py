@@ -60,13 +60,18 @@ def verdict_of(data: Mapping[str, Any]) -> Verdict:
     if isinstance(measure, int | float) and isinstance(tolerance, int | float):
         judged = ", as far as it was judged," if closes is None else ""
         sentence += (
-            f": the largest residual{judged} is {percent_of(measure)} of the entries, "
-            f"where up to {percent_of(tolerance)} is allowed"
+            f": the largest residual{judged} is {_percent(measure)} of the entries, "
+            f"where up to {_percent(tolerance)} is allowed"
         )
     if doubts:
         many = f"are {len(doubts)} doubts" if len(doubts) > 1 else "is one doubt"
         sentence += f"; there {many} about the case"
     return Verdict(state, word, sentence + ".", reasons)
+
+
+def _percent(share: float) -> str:
+    """A share that is not broken at the end of a line."""
+    return str(percent_of(share)).replace(" ", "\u00a0")
 
 
 def laws_grid(source: Source) -> Grid | None:

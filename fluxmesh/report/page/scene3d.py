@@ -247,6 +247,7 @@ def pack_scene(
                 "triangles": block.put(solid.triangles),
                 "tagAt": solid.outer.tolist(),
                 "middle": (0.5 * (solid.tail + solid.tip)).tolist(),
+                "tip": solid.tip.tolist(),
                 "enlarged": solid.enlarged,
                 "drawn": solid.drawn,
             }

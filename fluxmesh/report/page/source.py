@@ -132,7 +132,7 @@ class Figure:
         if self.half is None or self.value is None:
             return None
         scale = 100.0 if self.form == "percent" else 1.0
-        return plus_minus(units.si(self.quantity).width(self.half) * scale)
+        return plus_minus(units.si(self.quantity).width(self.half) * scale, self.written(units).power)
 
     def doubt_us(self, units: PageUnits) -> Digits | None:
         """Return the half width in the US customary unit of the page, or None.
@@ -145,7 +145,8 @@ class Figure:
         unit = units.us(self.quantity)
         if unit is None or self.half is None or self.value is None or self.form == "percent":
             return None
-        return plus_minus(unit.width(self.half))
+        beside = self.written_us(units)
+        return plus_minus(unit.width(self.half), 0 if beside is None else beside.power)
 
     def turned(self) -> Figure:
         """Return the figure with the other sign."""
@@ -268,7 +269,15 @@ class Source:
             Decides its unit.
         *path : str or int
             Where it stands.
+
+        Returns
+        -------
+        Figure
+            With its own half width, where the result has the length beside the vector.
         """
+        beside = (*path[:-1], f"{path[-1]}_size")
+        if self.get(*beside) is not None:
+            return self.figure(quantity, *beside)
         value = self.size(*path)
         if value is not None:
             self.units.note(quantity, value)

@@ -39,7 +39,22 @@ function makeMarks(stage, data) {
     return taken.every((t) => box[2] <= t[0] || box[0] >= t[2] || box[3] <= t[1] || box[1] >= t[3]);
   }
 
-  function place(at, wide, high, taken, size, away) {
+  // Small boxes along an arrow on the stage: what is written must not hide it.
+  function along(tail, tip) {
+    const count = Math.max(2, Math.ceil(Math.hypot(tip[0] - tail[0], tip[1] - tail[1]) / 7));
+    return Array.from({ length: count + 1 }, (_, n) => {
+      const x = tail[0] + (tip[0] - tail[0]) * n / count, y = tail[1] + (tip[1] - tail[1]) * n / count;
+      const half = n > 0.6 * count ? 6 : 3;
+      return [x - half, y - half, x + half, y + half];
+    });
+  }
+
+  // Where a box finds room: off the arrows, or on them where there is no other.
+  function place(at, wide, high, taken, arrows, size, away) {
+    return placed(at, wide, high, [...taken, ...arrows], size, away) || placed(at, wide, high, taken, size, away);
+  }
+
+  function placed(at, wide, high, taken, size, away) {
     const turns = [0, 0.6, -0.6, 1.2, -1.2, 1.8, -1.8, 2.5, -2.5, Math.PI];
     for (const reach of [0, 14, 26, 40, 58, 80]) {
       for (const turn of reach ? turns : [0]) {
@@ -64,10 +79,15 @@ function makeMarks(stage, data) {
       const from = p.map((v, k) => (v - middle[k]) * scale - center[k]);
       return [width / 2 + pixels * dot(from, right), height / 2 - pixels * dot(from, above)];
     };
-    const taken = [[0, height - 58, Math.min(width, 330), height]];
+    const taken = [[0, height - 34, Math.min(width, 330), height], [0, height - 86, 86, height]];
+    const seen = data.arrows.filter((arrow) => arrow.drawn && state.kinds[arrow.kind] !== false);
+    const arrows = seen.flatMap((arrow) => {
+      const tip = flat(arrow.tip), half = flat(arrow.middle);
+      return along([2 * half[0] - tip[0], 2 * half[1] - tip[1]], tip);
+    });
 
     // axes
-    const foot = [40, height - 22];
+    const foot = [44, height - 44];
     const ends = [right, above].map((axis) => [0, 1, 2].map((k) => axis[k]));
     [0, 1, 2].map((k) => ({ k, depth: out[k] })).sort((a, b) => a.depth - b.depth).forEach(({ k }) => {
       const tip = [foot[0] + 24 * ends[0][k], foot[1] - 24 * ends[1][k]];
@@ -89,11 +109,10 @@ function makeMarks(stage, data) {
 
     // tags of the arrows first, then names of ports where there is room
     ruler.font = "700 13px Arial, sans-serif";
-    data.arrows.forEach((arrow) => {
-      if (!arrow.drawn || state.kinds[arrow.kind] === false) return;
+    seen.forEach((arrow) => {
       const text = arrow.tag + (arrow.enlarged ? "†" : ""), wide = ruler.measureText(text).width + 8;
       const at = flat(arrow.tagAt), from = flat(arrow.middle);
-      const spot = place(at, wide, 18, taken, [width, height], Math.atan2(at[1] - from[1], at[0] - from[0]));
+      const spot = place(at, wide, 18, taken, arrows, [width, height], Math.atan2(at[1] - from[1], at[0] - from[0]));
       if (!spot) return;
       taken.push(spot.box);
       if (Math.hypot(spot.x - at[0], spot.y - at[1]) > 20) {
@@ -108,7 +127,7 @@ function makeMarks(stage, data) {
       if (!state.groups[port.group]) return;
       const text = shorter(`${port.number} ${data.groups[port.group].name}`, 22), wide = ruler.measureText(text).width + 10;
       const at = flat(port.at);
-      const spot = place(at, wide, 17, [...taken, [at[0] - 9, at[1] - 9, at[0] + 9, at[1] + 9]], [width, height],
+      const spot = place(at, wide, 17, [...taken, [at[0] - 9, at[1] - 9, at[0] + 9, at[1] + 9]], arrows, [width, height],
         Math.atan2(whole[1] - at[1], whole[0] - at[0]) + 0.9);
       if (!spot) return;
       taken.push(spot.box);

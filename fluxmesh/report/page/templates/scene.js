@@ -143,7 +143,20 @@
   const SETTINGS = { displayModeBar: false, responsive: true, scrollZoom: false, doubleClick: false };
   const marks = makeMarks(stage, data);
   const mark = (live) => marks(live || camera, home.fill * home.zoom, state);
-  const redraw = () => window.Plotly.react(view, traces(), layout(), SETTINGS).then(() => mark());
+  const redraw = () => busy(window.Plotly.react(view, traces(), layout(), SETTINGS).then(() => mark()));
+
+  // while something is still to be drawn, the stage says so
+  let pending = 0;
+  function busy(promise) {
+    pending += 1;
+    stage.setAttribute("aria-busy", "true");
+    const done = () => {
+      pending -= 1;
+      if (!pending) stage.removeAttribute("aria-busy");
+    };
+    promise.then(done, done);
+    return promise;
+  }
 
   // ---- turning, by buttons and keys ---------------------------------------------------------
 
@@ -191,7 +204,7 @@
   function look(next) {
     camera = next;
     mark();
-    window.Plotly.relayout(view, { "scene.aspectratio": layout().scene.aspectratio, "scene.camera": camera });
+    busy(window.Plotly.relayout(view, { "scene.aspectratio": layout().scene.aspectratio, "scene.camera": camera }));
   }
 
   function turn(right, up) {
