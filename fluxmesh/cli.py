@@ -32,13 +32,17 @@ CaseFile = Annotated[Path, typer.Argument(metavar="CASE", help="Case file (TOML)
 
 
 def _console(stderr: bool = False) -> Any:
+    from typing import IO, cast
+
     from rich.console import Console
 
     from fluxmesh.report.plain import Plain
 
     stream = sys.stderr if stderr else sys.stdout
     # a pipe has no width: use one that holds the tables
-    return Console(file=Plain(stream), width=None if stream.isatty() else 120, highlight=False, soft_wrap=False)
+    return Console(
+        file=cast(IO[str], Plain(stream)), width=None if stream.isatty() else 120, highlight=False, soft_wrap=False
+    )
 
 
 @app.command(epilog="Example: fluxmesh balance meshes/manifold/manifold_fine.toml --out results/manifold")

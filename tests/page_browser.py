@@ -105,8 +105,8 @@ class Opened:
         """How many pixels the page is wider than the window, or the reaction wider than its place."""
         self.page.set_viewport_size({"width": width, "height": 740})
         return self.page.evaluate(
-            "(() => { const root = document.documentElement, table = document.querySelector('.answer .scroll');"
-            "return Math.max(root.scrollWidth - root.clientWidth, table ? table.scrollWidth - table.clientWidth : 0); })()"
+            "Math.max(...[document.documentElement, ...document.querySelectorAll('.answer .scroll')]"
+            ".map((one) => one.scrollWidth - one.clientWidth))"
         )
 
     def serious(self, *, contrast: bool = True) -> str:

@@ -16,7 +16,7 @@ from fluxmesh.guarded import reading
 from tests.fuzzing.oracle import Judged, judge, run_batch, write
 from tests.fuzzing.targets import TARGETS, Target
 
-_FEW = settings(max_examples=60, deadline=None, derandomize=True, suppress_health_check=[HealthCheck.too_slow])
+_FEW = settings(max_examples=40, deadline=None, derandomize=True, suppress_health_check=[HealthCheck.too_slow])
 _NAMED = {target.name: target for target in TARGETS}
 _seeds = st.integers(0, 2**32 - 1)
 
@@ -31,7 +31,7 @@ def _fault(target: Target, seed: int, folder: Path) -> str:
 def test_good_inputs_are_answered(target: Target, tmp_path: Path) -> None:
     # fuzzing says nothing where it starts from inputs that are refused
     ends = []
-    for number, files in enumerate(target.good()[:3]):
+    for number, files in enumerate(target.good()[:1]):
         (tmp_path / str(number)).mkdir()
         for name, data in files.items():
             (tmp_path / str(number) / name).write_bytes(data)
@@ -45,7 +45,7 @@ def test_cases(tmp_path_factory: pytest.TempPathFactory, seed: int) -> None:
     assert not _fault(_NAMED["case"], seed, tmp_path_factory.mktemp("case"))
 
 
-@settings(_FEW, max_examples=150)
+@settings(_FEW, max_examples=80)
 @given(_seeds)
 def test_units(tmp_path_factory: pytest.TempPathFactory, seed: int) -> None:
     assert not _fault(_NAMED["units"], seed, tmp_path_factory.mktemp("units"))
@@ -54,7 +54,7 @@ def test_units(tmp_path_factory: pytest.TempPathFactory, seed: int) -> None:
 @pytest.mark.parametrize("target", TARGETS[2:], ids=lambda target: target.name)
 def test_files(target: Target) -> None:
     # in a fork: a reader in compiled code may end its process, which the guard of the command tells ("guarded")
-    ends = run_batch(target, [f"{target.name}/test/{number}" for number in range(15)])
+    ends = run_batch(target, [f"{target.name}/test/{number}" for number in range(8)])
     assert [judged for judged in ends if judged.end == "fault"] == []
     assert {"refused", "answered"} & {judged.end for judged in ends}
 
@@ -90,7 +90,7 @@ def test_what_should_be_is_none() -> None:
 
 def test_an_input_that_ends_the_process_is_a_fault_and_the_others_go_on() -> None:
     def run(folder: Path) -> None:
-        if (folder / "x").read_text() == str(Random("2").random()):
+        if (folder / "x").read_bytes() == target.make(Random("2"))["x"]:
             os.abort()
 
     target = Target("x", lambda: [{}], lambda rng, files: {"x": str(rng.random()).encode()}, run)

@@ -327,13 +327,3 @@ def _tilt(order: float, x: Array, f: Array) -> float:
     slope = float(about @ f) / float(about @ about)
     grown = (x * np.exp(order * x) - basis) / order if abs(order) > 1e-8 else x * x / 2
     return -slope * float((f - slope * about) @ grown)
-    for _ in range(3):
-        power = np.exp(order * x)
-        rows = np.column_stack([np.ones_like(x), power, x * power])
-        constant, factor = np.linalg.lstsq(rows[:, :2], f, rcond=None)[0]
-        change = np.linalg.lstsq(rows * [1, 1, factor], f - constant - factor * power, rcond=None)[0][2]
-        better = order + float(change)
-        if not abs(change) < 1e-3 or _misfit(better, x, f) >= _misfit(order, x, f):
-            break
-        order = better
-    return order

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from functools import partial
-from typing import Any, get_args, get_origin
+from typing import Annotated, Any, get_args, get_origin
 
 from pydantic import BaseModel, ValidationError
 
@@ -122,15 +122,18 @@ def _table_at(model: type[BaseModel], location: Sequence[str | int]) -> type[Bas
             field = table.model_fields.get(str(part))
             annotation = field.annotation if field else None
         else:
-            # a table with free names: what stands under each name
-            annotation = next((get_args(kind)[1] for kind in _parts(annotation) if get_origin(kind) is dict), None)
+            # a table with free names, or a list of tables: what stands under each name or number
+            inner = {dict: 1, tuple: 0}
+            kinds = [kind for kind in _parts(annotation) if get_origin(kind) in inner]
+            annotation = get_args(kinds[0])[inner[get_origin(kinds[0])]] if kinds else None
     return _table_in(annotation)
 
 
 def _parts(annotation: Any) -> tuple[Any, ...]:
-    """Split ``X | None`` into its parts."""
+    """Split ``X | None`` into its parts, without what is said of them."""
     arguments = get_args(annotation)
-    return arguments if type(None) in arguments else (annotation,)
+    parts = arguments if type(None) in arguments else (annotation,)
+    return tuple(get_args(part)[0] if get_origin(part) is Annotated else part for part in parts)
 
 
 def _table_in(annotation: Any) -> type[BaseModel] | None:

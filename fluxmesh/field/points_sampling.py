@@ -120,6 +120,12 @@ def sample_cloud(
         places are beyond reach, or all of them lie between a few points.
     """
     quantities = {quantity: _gathered(cloud, chosen) for quantity, chosen in names.items()}
+    for quantity, values in quantities.items():
+        largest = float(np.abs(values).max(initial=0.0))
+        if largest > LARGEST:
+            raise FieldError(
+                f"its {quantity} is {largest:.4g} at a point, beyond {LARGEST:g}", cloud.source, "Leave that point out"
+            )
     points, kept = distinct_points(cloud.places * scale, quantities, cloud.source)
     quantities = {quantity: values[kept] for quantity, values in quantities.items()}
     index = index_cloud(points)

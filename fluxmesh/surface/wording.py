@@ -43,7 +43,8 @@ def place_text(place: ArrayLike) -> str:
     largest = float(np.abs(xyz).max())
     if largest > 0:
         # adding 0.0 turns -0.0 into 0.0
-        xyz = np.round(xyz, 3 - int(np.floor(np.log10(largest)))) + 0.0
+        # more decimals than numbers have would give NaN
+        xyz = np.round(xyz, min(3 - int(np.floor(np.log10(largest))), 300)) + 0.0
     return "(" + ", ".join(f"{x:.4g}" for x in xyz) + ") m"
 
 

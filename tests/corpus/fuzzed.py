@@ -8,7 +8,7 @@ import numpy as np
 
 from tests.corpus.damage import damaged, mesh_case
 from tests.corpus.entry import Input, files
-from tests.corpus.shapes import CUBE, PICKED, TAGGED, TRIANGLES, legacy, ply, vtp, vtu
+from tests.corpus.shapes import ARRAYS, CUBE, PICKED, TAGGED, TRIANGLES, legacy, ply, vtp, vtu
 from tests.corpus.vtk_files import _compressed as packed_vtp
 
 __all__ = ["inputs"]
@@ -21,6 +21,9 @@ def inputs() -> Iterator[Input]:
     yield from _ghosts()
     yield from _sets()
     yield from _packed()
+    yield from _gmsh()
+    yield from _close()
+    yield from _nested()
 
 
 def _legacy() -> Iterator[Input]:
@@ -113,4 +116,57 @@ def _packed() -> Iterator[Input]:
             files({"case.toml": mesh_case("cube.vtp", TAGGED), "cube.vtp": made}),
             says=("cube.vtp",),
             alone=True,
+        )
+
+
+def _gmsh() -> Iterator[Input]:
+    corners = "\n".join(" ".join(map(str, corner)) for corner in CUBE.tolist())
+    rows = "\n".join(f"{k + 1} {a + 1} {b + 1} {c + 1}" for k, (a, b, c) in enumerate(TRIANGLES.tolist()))
+    text = (
+        "$MeshFormat\n4.1 0 8\n$EndMeshFormat\n$Nodes\n1 8 1 8\n2 1 0 8\n1\n2\n3\n4\n5\n6\n7\n8\n"
+        f"{corners}\n$EndNodes\n$Elements\n1 12 1 12\n2 1 2 12\n{rows}\n$EndElements\n"
+    )
+    yield Input(
+        "fuzzed/msh 4.1/whole", "nothing", files({"case.toml": mesh_case("cube.msh"), "cube.msh": text}), "answered"
+    )
+    yield from damaged(
+        "fuzzed/msh 4.1", "cube.msh", text, [("counts over two lines", "$Nodes\n1 8 1 8", "$Nodes\n1\n8 1 8")]
+    )
+
+
+def _close() -> Iterator[Input]:
+    # points so close that the square of their distance is zero, with different values
+    ticks = np.linspace(-0.1, 1.1, 5)
+    places = np.stack(np.meshgrid(ticks, ticks, ticks), axis=-1).reshape(-1, 3)
+    places = np.concatenate([places, 1e-185 * places[:40]])
+    rows = [",".join(map(str, (*place, 2.0, 0.0, 0.0, k))) for k, place in enumerate(places.tolist())]
+    case = ARRAYS.replace('traction = { array = "tau" }\n', "").replace('array = "U"', 'array = ["u", "v", "w"]')
+    yield Input(
+        "fuzzed/points all but at one place",
+        "many points are 1e-186 m apart",
+        files(
+            {
+                "case.toml": case.replace("[flow]\n", '[flow]\npoints = "cloud.csv"\n'),
+                "cube.vtp": vtp,
+                "cloud.csv": "\n".join(["x,y,z,u,v,w,p", *rows]) + "\n",
+            }
+        ),
+        says=("at the place of another",),
+    )
+
+
+def _nested() -> Iterator[Input]:
+    for name, more, says in (
+        (
+            "a snapshot's volume without a file",
+            "[storage]\nat = 0\nsnapshots = [{ time = 0, volume = {} }]\n",
+            "volume file",
+        ),
+        ("a volume without a file", "[flow]\nvolume = {}\n", "Give the name of a file"),
+        ("a scalar without a name", '[[carried]]\nunit = "kg"\n', "Give a name"),
+        ("a loss without ports", "[[loss]]\n", "Give two ports"),
+        ("a scalar with an unknown key", '[[carried]]\nname = "salt"\nnam = 1\n', "Did you mean"),
+    ):
+        yield Input(
+            f"fuzzed/{name}", f"the case has {name}", files({"case.toml": PICKED + more, "cube.vtp": vtp}), says=(says,)
         )

@@ -31,6 +31,7 @@ from tests.corpus.shapes import (
 from tests.corpus.vtk_sets import inputs as sets_of_corpus
 from tests.fuzzing.cases import base_cases, quantity, spoil_case, unit
 from tests.fuzzing.mutate import spoil_binary, spoil_text, spoil_xml
+from tests.fuzzing.words import LEGACY_WORDS, TEXT_WORDS, VTK_WORDS
 from tests.mesh_writing import cut, lattice, write_vtk_xml
 
 __all__ = ["TARGETS", "Target"]
@@ -83,7 +84,7 @@ def _read_quantity(folder: Path) -> None:
     kind, needed, text = (folder / "quantity.txt").read_bytes().decode("utf-8", "surrogatepass").split("\n", 2)
     if kind == "unit":
         factor = unit_factor(text, needed, "fluid.density")
-        assert np.isfinite(factor) and factor > 0.0, f"factor {factor}"
+        assert 0.0 < factor < np.inf, f"factor {factor}"
     elif kind == "vector":
         vector = parse_vector({"value": [1.0, -2.0, 1e15], "unit": text}, needed, "fluid.gravity")
         assert np.isfinite(vector).all(), f"vector {vector}"
@@ -121,9 +122,11 @@ def _read_cloud(folder: Path) -> None:
     (path,) = folder.glob("cloud.*")
     cloud = read_points(path)
     count = len(cloud.places)
-    assert cloud.places.shape == (count, 3) and np.isfinite(cloud.places).all(), "a place is not finite"
+    assert cloud.places.shape == (count, 3), "places are no points"
+    assert np.isfinite(cloud.places).all(), "a place is not finite"
     for name, column in cloud.columns.items():
-        assert column.shape in ((count,), (count, 3)) and np.isfinite(column).all(), f"column {name!r}"
+        assert column.shape in ((count,), (count, 3)), f"column {name!r} is no column"
+        assert np.isfinite(column).all(), f"column {name!r} is not finite"
     names: dict[str, Any] = {name: name for name in sorted(cloud.columns)[:3]}
     sampled = sample_cloud(cloud, names, CUBE)
     assert all(np.isfinite(values).all() for values in sampled.values.values()), "a sampled value is not finite"
@@ -253,180 +256,6 @@ def _sets() -> list[Files]:
 
 # ---- how they are spoilt --------------------------------------------------------------------
 
-_VTK_WORDS = (
-    "PolyData",
-    "UnstructuredGrid",
-    "ImageData",
-    "RectilinearGrid",
-    "StructuredGrid",
-    "Piece",
-    "PointData",
-    "CellData",
-    "Points",
-    "Polys",
-    "Cells",
-    "Verts",
-    "Lines",
-    "Strips",
-    "DataArray",
-    "Array",
-    "Int8",
-    "UInt8",
-    "Int32",
-    "UInt32",
-    "Int64",
-    "UInt64",
-    "Float32",
-    "Float64",
-    "String",
-    "ascii",
-    "binary",
-    "appended",
-    "raw",
-    "base64",
-    "LittleEndian",
-    "BigEndian",
-    "connectivity",
-    "offsets",
-    "types",
-    "faces",
-    "faceoffsets",
-    "vtkGhostType",
-    "region",
-    "U",
-    "p",
-    "vtkZLibDataCompressor",
-    "vtkLZ4DataCompressor",
-    "vtkLZMADataCompressor",
-    "3",
-    "10",
-    "12",
-    "13",
-    "14",
-    "22",
-    "24",
-    "25",
-    "42",
-    "68",
-    "69",
-    "72",
-    "feed.vtp",
-    "drain.vtp",
-    "cube.vtm",
-    "cube.pvtu",
-    "part.vtu",
-)
-_LEGACY_WORDS = (
-    "ASCII",
-    "BINARY",
-    "DATASET",
-    "POLYDATA",
-    "UNSTRUCTURED_GRID",
-    "STRUCTURED_POINTS",
-    "POINTS",
-    "POLYGONS",
-    "VERTICES",
-    "LINES",
-    "TRIANGLE_STRIPS",
-    "CELLS",
-    "CELL_TYPES",
-    "OFFSETS",
-    "CONNECTIVITY",
-    "vtktypeint64",
-    "CELL_DATA",
-    "POINT_DATA",
-    "SCALARS",
-    "VECTORS",
-    "NORMALS",
-    "TENSORS",
-    "LOOKUP_TABLE",
-    "default",
-    "FIELD",
-    "FieldData",
-    "METADATA",
-    "INFORMATION",
-    "NAME",
-    "DATA",
-    "COMPONENT_NAMES",
-    "double",
-    "float",
-    "int",
-    "char",
-    "unsigned_char",
-    "bit",
-    "long",
-    "vtkIdType",
-    "string",
-    "GLOBAL_IDS",
-    "COLOR_SCALARS",
-)
-_TEXT_WORDS = {
-    "stl": ("solid", "facet", "normal", "outer", "loop", "vertex", "endloop", "endfacet", "endsolid"),
-    "obj": (
-        "v",
-        "vn",
-        "vt",
-        "f",
-        "g",
-        "o",
-        "s",
-        "usemtl",
-        "mtllib",
-        "l",
-        "p",
-        "f 1 2 3",
-        "f -1 -2 -3",
-        "f 1/1/1 2//2 3/3",
-        "\\",
-    ),
-    "ply": (
-        "element",
-        "property",
-        "list",
-        "vertex",
-        "face",
-        "uchar",
-        "int",
-        "float",
-        "double",
-        "uint64",
-        "end_header",
-        "comment",
-        "format",
-        "ascii",
-        "binary_little_endian",
-        "binary_big_endian",
-        "1.0",
-        "x",
-        "vertex_indices",
-    ),
-    "off": ("OFF", "COFF", "NOFF", "4OFF"),
-    "msh": (
-        "$MeshFormat",
-        "$EndMeshFormat",
-        "$Nodes",
-        "$EndNodes",
-        "$Elements",
-        "$EndElements",
-        "$PhysicalNames",
-        "$Periodic",
-        "$NodeData",
-        "$EndNodeData",
-        "$ElementData",
-        "$Entities",
-        "$Comments",
-        "4.1 0 8",
-        "2.2 1 8",
-        "2",
-        "4",
-        "9",
-        "15",
-    ),
-    "mesh": ("Dimension", "Vertices", "Triangles", "Tetrahedra", "End", "MeshVersionFormatted", "Quadrilaterals"),
-    "su2": ("NDIME=", "NPOIN=", "NELEM=", "NMARK=", "MARKER_TAG=", "MARKER_ELEMS=", "5", "10"),
-    "inp": ("*NODE", "*ELEMENT", "TYPE=C3D4", "TYPE=S3", "*ELSET", "*NSET", "GENERATE", "*INCLUDE", "INPUT=", "ELSET="),
-}
-
 
 @cache
 def _texts() -> dict[str, list[bytes]]:
@@ -515,12 +344,12 @@ def _spoil_files(rng: Random, files: Files) -> Files:
     name = index[0] if index and rng.randrange(3) else rng.choice(chosen)
     data, suffix = files[name], name.rpartition(".")[2]
     if suffix in ("vtp", "vtu", "vtm", "pvtu", "pvtp", "pvd"):
-        data = spoil_xml(rng, data, _VTK_WORDS)
+        data = spoil_xml(rng, data, VTK_WORDS)
     elif suffix == "vtk":
         spoil: _Spoil = spoil_binary if b"BINARY" in data[:300] else spoil_text
-        data = spoil(rng, data, _LEGACY_WORDS)
+        data = spoil(rng, data, LEGACY_WORDS)
     else:
-        data = spoil_text(rng, data, _TEXT_WORDS.get(suffix, ()))
+        data = spoil_text(rng, data, TEXT_WORDS.get(suffix, ()))
     return {**files, name: data}
 
 
@@ -549,7 +378,7 @@ TARGETS = (
     Target("case", _cases, _spoil_case, _parse),
     Target("units", lambda: [{"quantity.txt": b"quantity\nkg/m^3\n1 g/cm^3 +/- 1 %"}], _spoil_quantity, _read_quantity),
     Target("job", _jobs, _spoil_case, _balance),
-    *(Target(suffix, partial(_mesh_texts, suffix), _spoil_files, _balance) for suffix in sorted(_TEXT_WORDS)),
+    *(Target(suffix, partial(_mesh_texts, suffix), _spoil_files, _balance) for suffix in sorted(TEXT_WORDS)),
     Target(
         "points",
         lambda: [{f"cloud.{suffix}": data} for suffix, data in _clouds()],

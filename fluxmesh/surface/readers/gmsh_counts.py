@@ -50,7 +50,10 @@ def require_gmsh_counts(path: Path, points: int, cells: list[tuple[int, int]]) -
             begin = data.find(b"\n", begin) + 1 if begin >= 0 else 0
             if begin == 0 or end < 0:
                 continue
-            blocks, announced = _announced(data, begin, numbers, text, size)
+            try:
+                blocks, announced = _announced(data, begin, numbers, text, size)
+            except (ValueError, IndexError, struct.error) as error:
+                raise FileError(f"its section ${section} does not start with its counts", where, _DAMAGED) from error
             if announced != count:
                 raise FileError(f"announces {announced} of its {section}, {count} were read", where, _DAMAGED)
             if numbers >= (4, 1):

@@ -306,4 +306,5 @@ def hidden_cells(ghosts: NDArray[Any], where: str) -> NDArray[np.bool_]:
         raise FieldError(
             "array 'vtkGhostType' holds no whole number a cell", where, "It marks cells to be left out; rename it"
         )
-    return (ghosts & _GHOST_BITS) != 0
+    hidden: NDArray[np.bool_] = (ghosts & _GHOST_BITS) != 0
+    return hidden
