@@ -15,7 +15,7 @@ from typing import Annotated, Any
 
 import typer
 
-from fluxmesh.errors import FluxmeshError, FluxmeshWarning, PictureError
+from fluxmesh.errors import FluxmeshError, FluxmeshWarning, InputError, PictureError
 
 __all__ = ["app", "balance", "causes", "check", "convergence", "export", "main", "picture", "start"]
 
@@ -334,7 +334,12 @@ def start(
     """Propose a commented case for a mesh: groups with roles, arrays with their meaning, what is left to fill in."""
     from fluxmesh.starter import propose_case, write_case
 
-    proposal = propose_case(mesh, unit=unit, density=density, gravity=gravity, beside=to)
+    try:
+        proposal = propose_case(mesh, unit=unit, density=density, gravity=gravity, beside=to)
+    except InputError as error:
+        if error.where:
+            raise
+        raise type(error)(error.found, str(mesh), error.remedy) from error
     if to is None:
         typer.echo(proposal.text, nl=False)
         return

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 LEFT_OUT = [
     "Identities without reference data (closure, gauge pressure, shift of the moment point, rotation, change of "
-    "observer, a uniform stream through a surface that moves): tested at random in `test_invariance.py`, "
+    "observer, a uniform stream through a surface that moves): tested at random in `test_property_*.py`, "
     "`test_geometry_exact.py` and `test_moving.py`; there is no figure to print.",
     "Friction factors of ducts, f·Re (Shah and London 1978), and the mean speed of annular flow: fluxmesh lays the "
     "shape of a profile, not its size for a given pressure drop. That wall friction is what the pressure gives is "

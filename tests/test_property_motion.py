@@ -17,7 +17,7 @@ from tests.balance_figures import assert_told_alike, figures_of
 from tests.invariants import ROUND, assert_alike, scales_of
 from tests.problems import FLOW, FORCE, MOMENT, POWER, Change, Problem
 from tests.solids import rigid_motion
-from tests.strategies import bounded, problems, seeds
+from tests.strategies import BODIES, bounded, problems, seeds
 
 FAR = 1e6
 """Sizes of the body that it is moved by. Coordinates there are known to 1e-10 of the body: so many digits are lost at
@@ -44,8 +44,12 @@ def test_a_translation_leaves_every_figure(problem: Problem, seed: int, far: flo
     assert abs(moved / volume - 1) < LEFT_FAR
 
 
+# of quadratic triangles more: their rule is not alike in all corners
+rounded = problems({"quadratic ball": BODIES["quadratic ball"]})
+
+
 @bounded
-@given(problem=problems(), seed=seeds, flat=st.booleans())
+@given(problem=st.one_of(problems(), rounded), seed=seeds, flat=st.booleans())
 def test_a_mirror_turns_axial_figures_the_other_way(problem: Problem, seed: int, flat: bool) -> None:
     turn, shift = rigid_motion(np.random.default_rng(seed))
     mirror = np.diag([-1.0, 1.0, 1.0])

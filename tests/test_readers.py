@@ -8,7 +8,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from fluxmesh.surface.files import known_suffixes, read_mesh
@@ -326,6 +326,7 @@ def test_ply_of_another_writer_with_list_properties(tmp_path: Path, read: Read) 
     assert_arrays(mesh.face_arrays, {"region": REGION})
 
 
+@settings(deadline=None)
 @given(
     st.lists(st.lists(st.integers(0, 7), min_size=3, max_size=7), min_size=1, max_size=12), st.sampled_from(PLY_MODES)
 )

@@ -633,7 +633,7 @@ def test_partitioned_sets_and_a_missing_or_damaged_piece(tmp_path: Path) -> None
     with pytest.raises(FileError, match=r"flow\.pvtu: 1 of its 2 pieces are missing, the first is flow_1\.vtu"):
         read_volume(path)
     path.write_text(path.read_text()[:-30])
-    with pytest.raises(FileError, match=r"flow\.pvtu: its XML is damaged"):
+    with pytest.raises(FileError, match=r"flow\.pvtu: its XML cannot be read"):
         read_volume(path)
 
 

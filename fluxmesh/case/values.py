@@ -64,6 +64,7 @@ __all__ = [
 
 Vector = tuple[float, float, float]
 _LONGEST_PATH = 1000
+_ABSURD = "No flow has that: check the number and its unit"
 
 
 class Table(BaseModel):
@@ -112,6 +113,8 @@ class _Quantity:
 
     def _read(self, value: object) -> Measured:
         measured = parse_quantity(value, self.unit, "")
+        if max(abs(measured.value), measured.half_width) > LARGEST:
+            raise CaseError(f"found {described(value)}, which is beyond {LARGEST:g} in SI", remedy=_ABSURD)
         if measured.value < self.least:
             raise CaseError(f"found {described(value)}", remedy=f"It cannot be below {self.least:g} {self.unit}")
         if measured.value <= self.above:
@@ -119,8 +122,15 @@ class _Quantity:
         return measured
 
 
+def _bounded_vector(value: object, unit: str) -> Vector:
+    vector = parse_vector(value, unit, "")
+    if max(map(abs, vector)) > LARGEST:
+        raise CaseError(f"a component is beyond {LARGEST:g} in SI", remedy=_ABSURD)
+    return vector
+
+
 def _vector(unit: str) -> _Read:
-    return _Read(lambda value: parse_vector(value, unit, ""))
+    return _Read(lambda value: _bounded_vector(value, unit))
 
 
 def _scale(unit: str) -> _Read:
@@ -179,7 +189,7 @@ def _read_tags(value: object) -> tuple[int | str, ...]:
 
 
 def _read_direction(value: object) -> Vector:
-    direction = parse_vector(value, "", "")
+    direction = _bounded_vector(value, "")
     length = math.hypot(*direction)
     if not 0.0 < length < math.inf:
         raise CaseError("the direction has no length", remedy="Write such as [0, 0, 1]")

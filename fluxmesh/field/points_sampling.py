@@ -12,6 +12,7 @@ from fluxmesh.errors import FieldError
 from fluxmesh.field.points import PointCloud
 from fluxmesh.field.points_interpolation import NEIGHBOURS, CloudIndex, Interpolated, index_cloud, interpolate_cloud
 from fluxmesh.surface.wording import length_text, place_text
+from fluxmesh.units import LARGEST
 
 __all__ = ["LeaveOut", "SampledCloud", "distinct_points", "leave_out_error", "sample_cloud"]
 
@@ -120,8 +121,8 @@ def sample_cloud(
         places are beyond reach, or all of them lie between a few points.
     """
     quantities = {quantity: _gathered(cloud, chosen) for quantity, chosen in names.items()}
-    for quantity, values in quantities.items():
-        largest = float(np.abs(values).max(initial=0.0))
+    for quantity, taken_from in quantities.items():
+        largest = float(np.abs(taken_from).max(initial=0.0))
         if largest > LARGEST:
             raise FieldError(
                 f"its {quantity} is {largest:.4g} at a point, beyond {LARGEST:g}", cloud.source, "Leave that point out"

@@ -85,9 +85,13 @@ def write_case(text: str, path: Path) -> None:
         The file exists, or cannot be written.
     """
     if not path.parent.is_dir():
-        raise OutputError("cannot be written (there is no such folder)", where=str(path))
+        raise OutputError(
+            "cannot be written (there is no such folder)", where=str(path), remedy="Make the folder first"
+        )
     try:
         content = text.encode("utf-8")
     except UnicodeEncodeError as error:
-        raise OutputError(f"cannot be written ({error.reason})", where=str(path)) from error
+        raise OutputError(
+            f"cannot be written ({error.reason})", where=str(path), remedy="Give the mesh a name in plain signs"
+        ) from error
     write_whole(content, path, replace=False)

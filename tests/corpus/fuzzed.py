@@ -23,6 +23,7 @@ def inputs() -> Iterator[Input]:
     yield from _packed()
     yield from _gmsh()
     yield from _close()
+    yield from _large()
     yield from _nested()
 
 
@@ -152,6 +153,25 @@ def _close() -> Iterator[Input]:
             }
         ),
         says=("at the place of another",),
+    )
+
+
+def _large() -> Iterator[Input]:
+    # a value whose square is beyond numbers, at a point that no sampled place is near
+    rows = [f"{x},{y},{z},2,0,0,5" for x in (-1, 0.3, 0.8, 2) for y in (-1, 0.2, 0.9, 2) for z in (-1, 0.4, 0.7, 2)]
+    rows[-1] = "2,2,2,-1e308,0,0,5"
+    case = ARRAYS.replace('traction = { array = "tau" }\n', "").replace('array = "U"', 'array = ["u", "v", "w"]')
+    yield Input(
+        "fuzzed/points with a speed of 1e308",
+        "a point that is far off has a speed of 1e308",
+        files(
+            {
+                "case.toml": case.replace("[flow]\n", '[flow]\npoints = "cloud.csv"\n'),
+                "cube.vtp": vtp,
+                "cloud.csv": "\n".join(["x,y,z,u,v,w,p", *rows]) + "\n",
+            }
+        ),
+        says=("cloud.csv", "1e+308"),
     )
 
 

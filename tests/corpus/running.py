@@ -83,6 +83,8 @@ def lay_out(one: Input, root: Path) -> Place:
         folder.mkdir(parents=True)
     (place.outside / "cube.vtp").write_text(vtp(), "utf-8")
     (place.outside / "secret.txt").write_text(f"{SECRET}\n", "utf-8")
+    if one.command[0] == "start":
+        place.out.mkdir()  # which it does not make
     one.make(place.case)
     return place
 

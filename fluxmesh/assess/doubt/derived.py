@@ -57,6 +57,10 @@ def derived_figures(middle: Figures, balance: Balance, rows: _Rows, columns: _Co
                 found[law, "relative"] = _relative(balance, rows, law)
     if ("reaction", "line_of_action", "couple") in known:
         found.update(_line(balance, rows))
+    for path in known:
+        if path[-1] in ("force_size", "moment_size"):
+            vector = rows((*path[:-1], path[-1].removesuffix("_size")))
+            found[path] = np.asarray(np.linalg.norm(vector, axis=0))[None]
     found.update(_ports(balance, columns, flows))
     found.update(_short_form(balance, rows, columns))
     return {path: samples for path, samples in found.items() if path in known}
