@@ -44,12 +44,6 @@ def test_each_sixth_ends_as_it_should() -> None:
     assert " 0 others" in _run("--every", "6")
 
 
-@pytest.mark.long
-@pytest.mark.skipif(sys.platform != "linux", reason="the run is bounded and watched by means of Linux")
-def test_all_end_as_they_should() -> None:
-    assert " 0 others" in _run()
-
-
 @pytest.fixture
 def place(tmp_path: Path) -> Place:
     return lay_out(GOOD, tmp_path)

@@ -214,7 +214,11 @@ def _sorted(sizes: ArrayLike, values: ArrayLike) -> tuple[Array, Array]:
     h, f = h[order], f[order]
     # closer sizes than that leave nothing to tell an order from
     if (h[1:] / h[:-1] < 1 + 1e-6).any():
-        raise FieldError("two meshes have the same size", remedy="Refine the whole mesh, by 1.3 or more each time")
+        raise FieldError(
+            "two meshes have the same size",
+            where="mesh sizes",
+            remedy="Refine the whole mesh, by 1.3 or more each time",
+        )
     return h, f
 
 

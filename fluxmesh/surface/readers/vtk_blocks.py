@@ -100,7 +100,9 @@ def _contents(
     body = next((element for element in root if element.tag == kind), None)
     if kind not in (*_SETS, *_PIECED) or body is None:
         raise FileError(
-            f"holds a data set of kind {kind}", where, f"Kinds that list files are {', '.join((*_SETS, *_PIECED))}"
+            f"holds a data set of kind {kind or '(none)'}",
+            where,
+            f"Kinds that list files are {', '.join((*_SETS, *_PIECED))}",
         )
     pieced = kind in _PIECED
     parts: list[tuple[str, FileContent]] = []
